@@ -1,0 +1,28 @@
+"""fluteprobe: which notes does this flute play, with which fingering, how far from tuned, how surely?
+
+Two calls do the work of the command line from a notebook:
+
+>>> fluteprobe.hear("take.wav")        # the tones in one recording  # doctest: +SKIP
+>>> fluteprobe.measure("my-flute")     # a session folder -> Survey  # doctest: +SKIP
+
+Conventions everywhere: frequencies in Hz, pitch differences in cents (1/1200 octave), levels in dB with
+the reference named, times in seconds from the start of the recording, temperatures in °C. `None` means
+"not known", never zero.
+"""
+
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from fluteprobe.survey import hear, measure
+
+__all__ = ["__version__", "hear", "measure"]
+__version__ = "0.1.0"
+
+
+def __getattr__(name: str) -> Any:
+    """Load the measuring code on first use, so that `import fluteprobe` costs nothing."""
+    if name in {"hear", "measure"}:
+        from fluteprobe import survey
+
+        return getattr(survey, name)
+    raise AttributeError(f"module 'fluteprobe' has no attribute {name!r}")

@@ -1,0 +1,1 @@
+"""The instrument: fingerings, notes, the tube, registers. Knows no audio."""

@@ -1,0 +1,1 @@
+"""What is drawn, from values already computed. matplotlib is imported here alone."""

@@ -1,0 +1,1 @@
+"""The signal: recordings, spans, pitch, partials, breath noise. Knows no flute."""
