@@ -1,0 +1,250 @@
+"""What stands on the chart, in words and in order: chosen from a survey before anything is drawn.
+
+Conventions: registers from the highest down; within one, notes from low to high; alternatives for one note
+together, best first. All text is cleaned for printing. Deviations in cents, positive is sharp; a number that
+is not known is written as a question mark.
+"""
+
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
+from itertools import groupby
+from math import isfinite
+
+from fluteprobe.flute.register import Register
+from fluteprobe.flute.tuning import nearest_note
+from fluteprobe.pages.paper import clean
+from fluteprobe.survey import Entry, Reading, Survey
+
+SPEAKS_WELL = 0.75  # share of takes from which a fingering counts as one to rely on
+MINUS = "−"
+
+_REGISTER_NAMES: dict[Register, str] = {1: "First register", 2: "Second register", 3: "Third register"}
+_SOUNDS = {"edge tone": "edge tone", "multiphonic": "several notes at once"}
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class NoteGroup:
+    """One note of a register and the fingerings that give it, best first."""
+
+    note: str
+    entries: tuple[Entry, ...]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Section:
+    """One register: its title, its notes from low to high, or in words why there are none."""
+
+    register: Register
+    title: str
+    groups: tuple[NoteGroup, ...]
+    remark: str
+
+    @property
+    def entries(self) -> tuple[Entry, ...]:
+        """All fingerings of the register in the order they are drawn."""
+        return tuple(entry for group in self.groups for entry in group.entries)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Aside:
+    """A short list beside the chart: its label and its items."""
+
+    label: str
+    items: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Contents:
+    """The whole chart in words: title, registers, asides, and the conditions as pairs of label and value."""
+
+    title: str
+    subtitle: str
+    summary: str
+    holes: int
+    sections: tuple[Section, ...]
+    asides: tuple[Aside, ...]
+    conditions: tuple[tuple[str, str], ...]
+    reference_label: str | None
+
+
+def chart_contents(survey: Survey, tolerance_cents: float = 10.0) -> Contents:
+    """Return what a survey's chart says.
+
+    Raises
+    ------
+    ValueError
+        If the tolerance is not a positive number of cents.
+    """
+    if not (isfinite(tolerance_cents) and tolerance_cents > 0.0):
+        raise ValueError(f"a tolerance is above 0 cents, not {tolerance_cents}")
+    heard: list[Register] = [3] if any(entry.register == 3 for entry in survey.entries) else []
+    return Contents(
+        title=clean(survey.flute.name) or "A flute without a name",
+        subtitle=_subtitle(survey),
+        summary=_summary(survey.entries),
+        holes=survey.flute.holes,
+        sections=tuple(_section(survey.entries, r, tolerance_cents) for r in (*heard, 2, 1)),
+        asides=tuple(
+            aside for aside in (_silent(survey), _undecided(survey), _unused(survey)) if aside.items
+        ),
+        conditions=_conditions(survey),
+        reference_label=_reference_label(survey),
+    )
+
+
+def note_text(note: str) -> str:
+    """Return a note as it is printed: `C#5` becomes `C♯5`, `Bb4` becomes `B♭4`."""
+    return note[:1] + note[1:].replace("#", "♯").replace("b", "♭")
+
+
+def cents_text(cents: float | None) -> str:
+    """Return a deviation in whole cents, always with its sign: `+4`, `−12`, `0`."""
+    if cents is None or not isfinite(cents):
+        return "?"
+    whole = round(cents)
+    return "0" if whole == 0 else f"{'+' if whole > 0 else MINUS}{abs(whole)}"
+
+
+def uncertainty_text(cents: float | None) -> str:
+    """Return a standard uncertainty: `±0.6` under ten cents, `±14` from there."""
+    if cents is None or not isfinite(cents):
+        return "±?"
+    return f"±{cents:.1f}" if cents < 9.95 else f"±{cents:.0f}"
+
+
+def share_text(share: float) -> str:
+    """Return a share from 0 to 1 in per cent."""
+    return f"{100.0 * share:.0f} %"
+
+
+def best_first(entries: Iterable[Entry], tolerance_cents: float) -> tuple[Entry, ...]:
+    """Return fingerings of one note, best first.
+
+    One that speaks well comes before one that does not, then one within the tolerance before one that is
+    off, then the surer, then the closer.
+    """
+
+    def rank(entry: Entry) -> tuple[bool, bool, float, float, str]:
+        off = abs(entry.cents) > tolerance_cents
+        return (
+            entry.reliability < SPEAKS_WELL,
+            off,
+            -entry.reliability,
+            abs(entry.cents),
+            str(entry.fingering),
+        )
+
+    return tuple(sorted(entries, key=rank))
+
+
+def _section(entries: Sequence[Entry], register: Register, tolerance_cents: float) -> Section:
+    def pitch(entry: Entry) -> tuple[int, str]:
+        return round(1200.0 * _octaves(entry) - entry.cents), entry.note
+
+    mine = sorted((entry for entry in entries if entry.register == register), key=pitch)
+    groups = tuple(
+        NoteGroup(note=note_text(key[1]), entries=best_first(group, tolerance_cents))
+        for key, group in groupby(mine, key=pitch)
+    )
+    name = _REGISTER_NAMES[register]
+    remark = _counted(len(mine), "fingering", len(groups)) if groups else "Nothing has been heard in it yet."
+    return Section(register=register, title=name, groups=groups, remark=remark)
+
+
+def _octaves(entry: Entry) -> float:
+    note, cents = nearest_note(entry.frequency_hz)
+    return (note.midi + cents / 100.0) / 12.0
+
+
+def _counted(fingerings: int, word: str, notes: int) -> str:
+    return f"{fingerings} {word}{'' if fingerings == 1 else 's'}, {notes} note{'' if notes == 1 else 's'}"
+
+
+def _subtitle(survey: Survey) -> str:
+    facts = survey.flute
+    made = ", ".join(
+        filter(None, (clean(facts.maker or ""), f"no. {clean(facts.serial)}" if facts.serial else ""))
+    )
+    holes = f"{facts.holes} hole{'' if facts.holes == 1 else 's'}"
+    return "  ·  ".join(filter(None, (made, clean(facts.key or ""), clean(facts.wood or ""), holes)))
+
+
+def _summary(entries: Sequence[Entry]) -> str:
+    if not entries:
+        return ""
+    lowest, *_, highest = (ordered := sorted(entries, key=lambda entry: entry.frequency_hz)) * 2
+    notes = len({entry.note for entry in ordered})
+    if notes == 1:
+        return note_text(lowest.note)
+    return f"{notes} notes from {note_text(lowest.note)} to {note_text(highest.note)}"
+
+
+def _silent(survey: Survey) -> Aside:
+    breath_only = [r for r in _outside(survey) if r.tone.kind == "breath only"]
+    return Aside(label="did not speak", items=tuple(_with_breaths(breath_only)))
+
+
+def _undecided(survey: Survey) -> Aside:
+    sounding = [r for r in _outside(survey) if r.tone.kind != "breath only"]
+    return Aside(label="undecided", items=tuple(dict.fromkeys(_described(r) for r in sounding)))
+
+
+def _unused(survey: Survey) -> Aside:
+    return Aside(
+        label="not used", items=tuple(dict.fromkeys(clean(problem.take) for problem in survey.problems))
+    )
+
+
+def _outside(survey: Survey) -> list[Reading]:
+    """Return readings that stand behind no entry: of takes in none, or sounding with no register decided."""
+    used = {take for entry in survey.entries for take in entry.takes}
+    return [
+        r
+        for r in survey.readings
+        if r.take not in used or (r.tone.kind != "breath only" and r.call.register is None)
+    ]
+
+
+def _with_breaths(readings: Sequence[Reading]) -> list[str]:
+    breaths: dict[str, list[str]] = {}
+    for r in readings:
+        known = breaths.setdefault(_word(r), [])
+        if r.breath is not None and r.breath not in known:
+            known.append(r.breath)
+    return [f"{word} ({', '.join(known)})" if known else word for word, known in breaths.items()]
+
+
+def _described(r: Reading) -> str:
+    breath = f" ({r.breath})" if r.breath else ""
+    pitch = f" {note_text(r.note)} {cents_text(r.cents)}" if r.note else ""
+    kind = f" {_SOUNDS[r.tone.kind]}" if r.tone.kind in _SOUNDS else ""
+    return f"{_word(r)}{breath}{kind}{pitch}"
+
+
+def _word(r: Reading) -> str:
+    return clean(r.take) if r.fingering is None else str(r.fingering)
+
+
+def _conditions(survey: Survey) -> tuple[tuple[str, str], ...]:
+    sitting = survey.sitting
+    pairs = (
+        ("A4", f"{sitting.a4_hz:g} Hz"),
+        ("air", _celsius(sitting.air_temperature_c)),
+        ("carried to", _celsius(sitting.reference_temperature_c)),
+        ("date", sitting.date),
+        ("player", sitting.player),
+        ("place", sitting.place),
+        ("microphone", sitting.microphone),
+    )
+    return tuple((label, clean(value)) for label, value in pairs if value and clean(value))
+
+
+def _celsius(temperature_c: float | None) -> str | None:
+    return None if temperature_c is None else f"{temperature_c:g} °C".replace("-", MINUS)
+
+
+def _reference_label(survey: Survey) -> str | None:
+    if all(entry.cents_at_reference is None for entry in survey.entries):
+        return None
+    temperature = _celsius(survey.sitting.reference_temperature_c)
+    return f"est. at {temperature}" if temperature else "est. at ref."

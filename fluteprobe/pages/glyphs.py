@@ -1,0 +1,159 @@
+"""What is drawn rather than written: holes under a finger, the flute that carries them, deviations to scale.
+
+Conventions: millimetres on the page, y downwards. A hole is drawn as what the finger leaves of it: full ink is
+closed, a bare ring is open, and the light between ring and finger is the part left open. The mouth end is up.
+"""
+
+from dataclasses import dataclass
+from math import atan2, degrees, sqrt
+
+import numpy as np
+from matplotlib.path import Path
+from matplotlib.transforms import Affine2D
+
+from fluteprobe.flute.fingering import Fingering
+from fluteprobe.pages.paper import (
+    ACCENT,
+    BAND,
+    FINE_PT,
+    FIRM_PT,
+    HAIR_PT,
+    INK,
+    QUIET,
+    WHITE,
+    WING,
+    WOOD,
+    Page,
+)
+
+FINGER_TO_HOLE = 2.2  # the finger's pad is drawn this much wider than the hole
+WING_MM = 2.1  # half the width of the box that shows an uncertainty
+LEFT_OPEN = {"h": 0.5, "v": 0.22}  # share of the hole's width that the finger leaves
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class FluteSize:
+    """How large a flute is drawn: hole diameter, distance between holes, and the space between the hands."""
+
+    hole_mm: float
+    pitch_mm: float
+    hands_apart_mm: float
+    head_mm: float = 5.0
+    foot_mm: float = 1.2
+
+    def height_mm(self, holes: int) -> float:
+        """Return the height of a flute with that many holes."""
+        return (
+            self.head_mm + holes * self.pitch_mm + (self.hands_apart_mm if holes >= 4 else 0.0) + self.foot_mm
+        )
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Scale:
+    """A scale for deviations: its height on the page, its limit and the tolerance, both in cents either way."""
+
+    height_mm: float
+    limit_cents: float
+    tolerance_cents: float
+
+    def rise_mm(self, cents: float) -> float:
+        """Return how far above the middle a deviation stands, held inside the scale."""
+        held = max(-self.limit_cents, min(self.limit_cents, cents))
+        return 0.5 * self.height_mm * held / self.limit_cents
+
+
+def draw_hole(page: Page, x_mm: float, y_mm: float, diameter_mm: float, state: str) -> None:
+    """Draw one hole: `x` closed, `o` open, `h` half-holed, `v` vented."""
+    radius = 0.5 * diameter_mm
+    if state == "x":
+        page.path(_disc(x_mm, y_mm, radius), fill=INK)
+        return
+    line_mm = 0.32
+    page.path(_disc(x_mm, y_mm, radius - 0.5 * line_mm), fill=WHITE, edge=INK, pt=line_mm * 72.0 / 25.4)
+    if state in LEFT_OPEN:
+        page.path(_finger_on(x_mm, y_mm, radius, LEFT_OPEN[state]), fill=INK)
+    if state == "v":
+        page.line((x_mm + 1.3 * radius, y_mm), (x_mm + 1.85 * radius, y_mm), colour=INK, pt=FINE_PT)
+
+
+def draw_flute(page: Page, x_mm: float, top_mm: float, size: FluteSize, fingering: Fingering) -> None:
+    """Draw a flute upright, its mouth end at the top and its middle line at x."""
+    half = 0.82 * size.hole_mm
+    bottom = top_mm + size.height_mm(fingering.holes)
+    page.path(_body(x_mm, top_mm, bottom, half), fill=WOOD)
+    page.box(x_mm - 0.4 * size.hole_mm, top_mm + 1.9, 0.8 * size.hole_mm, 0.9, QUIET)
+    for k, state in enumerate(fingering.states):
+        draw_hole(page, x_mm, top_mm + hole_depth_mm(size, k, fingering.holes), size.hole_mm, state)
+
+
+def hole_depth_mm(size: FluteSize, hole: int, holes: int) -> float:
+    """Return how far below the flute's top a hole's middle stands; hole 0 is nearest the mouth."""
+    between_hands = size.hands_apart_mm if holes >= 4 and hole >= (holes + 1) // 2 else 0.0
+    return size.head_mm + (hole + 0.5) * size.pitch_mm + between_hands
+
+
+def draw_deviation(
+    page: Page, x_mm: float, middle_mm: float, scale: Scale, cents: float, uncertainty: float
+) -> None:
+    """Draw a deviation: a stem, then a dot inside the tolerance or else a wedge pointing off; its ± as wings."""
+    y = middle_mm - scale.rise_mm(cents)
+    off = abs(cents) > scale.tolerance_cents
+    colour = ACCENT if off else INK
+    high, low = (middle_mm - scale.rise_mm(cents + sign * uncertainty) for sign in (1.0, -1.0))
+    page.box(x_mm - WING_MM, high, 2.0 * WING_MM, low - high, WING)
+    page.line((x_mm, middle_mm), (x_mm, y), colour=colour, pt=FIRM_PT)
+    page.path(_wedge(x_mm, y, 1.15, up=cents > 0) if off else _disc(x_mm, y, 0.8), fill=colour)
+
+
+def draw_scale(page: Page, left_mm: float, right_mm: float, middle_mm: float, scale: Scale) -> None:
+    """Draw the ground that deviations stand on: the tolerance as a band, the tuned pitch as a line."""
+    reach = scale.rise_mm(scale.tolerance_cents)
+    page.box(left_mm, middle_mm - reach, right_mm - left_mm, 2.0 * reach, BAND)
+    page.line((left_mm, middle_mm), (right_mm, middle_mm), colour=QUIET, pt=HAIR_PT)
+
+
+def draw_share(page: Page, x_mm: float, y_mm: float, width_mm: float, share: float) -> None:
+    """Draw a share from 0 to 1 as a fine line of which that part is firm, centred at x."""
+    left = x_mm - 0.5 * width_mm
+    page.line((left, y_mm), (left + width_mm, y_mm), colour=QUIET, pt=HAIR_PT)
+    page.box(left, y_mm - 0.25, width_mm * min(1.0, max(0.0, share)), 0.5, INK)
+
+
+def _disc(x_mm: float, y_mm: float, radius_mm: float) -> Path:
+    return Path.unit_circle().transformed(Affine2D().scale(radius_mm).translate(x_mm, y_mm))
+
+
+def _finger_on(x_mm: float, y_mm: float, radius_mm: float, left_open: float) -> Path:
+    """Return the part of a hole under a finger that has slid to the left (a lens between two arcs)."""
+    pad = FINGER_TO_HOLE
+    edge = 1.0 - 2.0 * left_open
+    centre = edge - pad
+    cross_x = (1.0 - pad**2 + centre**2) / (2.0 * centre)
+    cross_y = sqrt(1.0 - cross_x**2)
+    at_hole = degrees(atan2(cross_y, cross_x))
+    at_pad = degrees(atan2(cross_y, cross_x - centre))
+    rim = Path.arc(at_hole, 360.0 - at_hole)
+    tip = Path.arc(-at_pad, at_pad)
+    vertices = np.concatenate([rim.vertices, tip.vertices[1:] * pad + [centre, 0.0]])
+    codes = np.concatenate([rim.codes, tip.codes[1:]])
+    return Path(vertices, codes).transformed(Affine2D().scale(radius_mm).translate(x_mm, y_mm))
+
+
+def _body(x_mm: float, top_mm: float, bottom_mm: float, half_mm: float) -> Path:
+    shoulder = min(half_mm, 1.6)
+    left, right = x_mm - half_mm, x_mm + half_mm
+    points = [
+        (left, bottom_mm), (left, top_mm + shoulder), (left, top_mm), (left + shoulder, top_mm),
+        (right - shoulder, top_mm), (right, top_mm), (right, top_mm + shoulder), (right, bottom_mm), (left, bottom_mm),
+    ]  # fmt: skip
+    go, bend = Path.LINETO, Path.CURVE3
+    return Path(points, [Path.MOVETO, go, bend, bend, go, bend, bend, go, Path.CLOSEPOLY])
+
+
+def _wedge(x_mm: float, y_mm: float, half_mm: float, *, up: bool) -> Path:
+    """Return a wedge whose point is at the deviation itself."""
+    back = 1.7 * half_mm if up else -1.7 * half_mm
+    return Path(
+        [(x_mm, y_mm), (x_mm + half_mm, y_mm + back), (x_mm - half_mm, y_mm + back), (x_mm, y_mm)],
+        closed=True,
+    )

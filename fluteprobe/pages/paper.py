@@ -1,0 +1,337 @@
+"""Paper, type and colours of the house, and a page to draw on.
+
+Conventions: lengths in millimetres from the page's top left corner, x to the right and y downwards; type sizes
+and line widths in points. Text is set on its baseline and never read as markup. Nothing here changes
+matplotlib's settings outside `house_style()`; identical pages give identical bytes on the same versions.
+"""
+
+import os
+import unicodedata
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
+from dataclasses import dataclass
+from functools import cache
+from pathlib import Path as File
+from typing import Literal
+
+import matplotlib as mpl
+from matplotlib.artist import Artist
+from matplotlib.backends.backend_pdf import PdfPages
+from matplotlib.figure import Figure
+from matplotlib.font_manager import FontProperties, findfont, fontManager, get_font
+from matplotlib.patches import PathPatch
+from matplotlib.path import Path
+from matplotlib.text import Text
+from matplotlib.textpath import text_to_path
+from matplotlib.transforms import Affine2D
+
+MM_PER_INCH = 25.4
+MM_PER_POINT = MM_PER_INCH / 72.0
+PAPERS_MM = {"a4": (210.0, 297.0), "letter": (215.9, 279.4)}  # ISO 216; ANSI/ASME Y14.1 size A
+MARGIN_MM = 15.0
+SMALLEST_TYPE_PT = 7.0
+PNG_DOTS_PER_INCH = 200
+SUFFIXES = (".pdf", ".png", ".svg")
+
+# One accent on warm greys. Meaning is carried by shape and place; these only support it.
+WHITE = "#ffffff"
+INK = "#211c17"
+QUIET = "#675f55"
+HAIRLINE = "#b8afa2"
+WOOD = "#efe7d9"
+BAND = "#e6dfd2"
+WING = "#b9ae9d"
+ACCENT = "#a02c1c"
+
+HAIR_PT = 0.4
+FINE_PT = 0.7
+FIRM_PT = 1.1
+
+Align = Literal["left", "center", "right"]
+
+_SERIF = ("STIXGeneral", "DejaVu Serif", "DejaVu Sans", "serif")
+_MONO = ("DejaVu Sans Mono", "DejaVu Sans", "monospace")
+_MISSING = "□"
+_SETTINGS = {
+    "pdf.fonttype": 42,
+    "svg.fonttype": "none",
+    "svg.hashsalt": "fluteprobe",
+    "font.serif": ["STIXGeneral", "DejaVu Serif"],
+    "font.monospace": ["DejaVu Sans Mono"],
+    "text.hinting": "none",
+    "path.simplify": False,
+}
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Type:
+    """A voice of the page: size in points, and its cut. `mono` is for words that are counted letter by letter."""
+
+    size_pt: float
+    italic: bool = False
+    bold: bool = False
+    mono: bool = False
+
+
+TITLE = Type(size_pt=31.0)
+SUBTITLE = Type(size_pt=11.0, italic=True)
+HEADING = Type(size_pt=15.0, italic=True)
+NOTE = Type(size_pt=19.0)
+NOTE_SMALL = Type(size_pt=15.0)
+NUMBER = Type(size_pt=11.5)
+NUMBER_BOLD = Type(size_pt=11.5, bold=True)
+BODY = Type(size_pt=8.5)
+LABEL = Type(size_pt=8.0, italic=True)
+SMALL = Type(size_pt=8.0)
+WORD = Type(size_pt=SMALLEST_TYPE_PT, mono=True)
+
+
+class Page:
+    """One sheet: a figure that is drawn on in millimetres.
+
+    Parameters
+    ----------
+    paper
+        A key of PAPERS_MM, in any case.
+
+    Raises
+    ------
+    ValueError
+        If the paper is not known.
+    """
+
+    def __init__(self, paper: str = "a4") -> None:
+        self.width_mm, self.height_mm = paper_size_mm(paper)
+        self.figure = Figure(
+            figsize=(self.width_mm / MM_PER_INCH, self.height_mm / MM_PER_INCH), facecolor=WHITE
+        )
+        from_millimetres = Affine2D().scale(1.0 / self.width_mm, -1.0 / self.height_mm).translate(0.0, 1.0)
+        self._transform = from_millimetres + self.figure.transFigure
+
+    @property
+    def right_mm(self) -> float:
+        """Where the right margin begins."""
+        return self.width_mm - MARGIN_MM
+
+    @property
+    def bottom_mm(self) -> float:
+        """Where the bottom margin begins."""
+        return self.height_mm - MARGIN_MM
+
+    def text(
+        self, x_mm: float, y_mm: float, words: str, voice: Type, *, align: Align = "left", colour: str = INK
+    ) -> None:
+        """Set one line of text on the baseline y."""
+        words, families = printable(words, voice)
+        label = Text(
+            x_mm, y_mm, words, color=colour, ha=align, va="baseline", fontproperties=_font(voice, families),
+            parse_math=False, usetex=False, transform=self._transform,
+        )  # fmt: skip
+        self._add(label)
+
+    def line(
+        self,
+        start_mm: tuple[float, float],
+        end_mm: tuple[float, float],
+        *,
+        colour: str = HAIRLINE,
+        pt: float = HAIR_PT,
+    ) -> None:
+        """Draw a straight line."""
+        self.path(Path([start_mm, end_mm]), edge=colour, pt=pt)
+
+    def box(self, x_mm: float, y_mm: float, width_mm: float, height_mm: float, colour: str) -> None:
+        """Fill a rectangle whose top left corner is (x, y)."""
+        corners = [
+            (x_mm, y_mm),
+            (x_mm + width_mm, y_mm),
+            (x_mm + width_mm, y_mm + height_mm),
+            (x_mm, y_mm + height_mm),
+        ]
+        self.path(Path([*corners, corners[0]], closed=True), fill=colour)
+
+    def path(self, outline: Path, *, fill: str = "none", edge: str = "none", pt: float = HAIR_PT) -> None:
+        """Draw a path in page millimetres."""
+        line_width = 0.0 if edge == "none" else pt
+        self._add(
+            PathPatch(
+                outline, facecolor=fill, edgecolor=edge, linewidth=line_width, capstyle="butt", joinstyle="miter",
+                transform=self._transform,
+            )
+        )  # fmt: skip
+
+    def _add(self, artist: Artist) -> None:
+        artist.set_clip_on(False)
+        self.figure.add_artist(artist)
+
+
+def paper_size_mm(paper: str) -> tuple[float, float]:
+    """Return a paper's width and height.
+
+    Raises
+    ------
+    ValueError
+        If the paper is not known.
+    """
+    try:
+        return PAPERS_MM[paper.lower()]
+    except KeyError:
+        raise ValueError(f"paper is one of {', '.join(PAPERS_MM)}, not {paper!r}") from None
+
+
+def clean(words: str) -> str:
+    """Return text fit for one printed line: no control, direction or private characters, single spaces."""
+    kept = ("" if unicodedata.category(letter) in {"Cf", "Co", "Cn", "Cs"} else letter for letter in words)
+    spaced = "".join(" " if unicodedata.category(letter) in {"Cc", "Zl", "Zp"} else letter for letter in kept)
+    return " ".join(spaced.split())
+
+
+def printable(words: str, voice: Type) -> tuple[str, tuple[str, ...]]:
+    """Return text without letters that no font here has, and the font families to set it in.
+
+    Fonts of the system join only where our own lack a letter; what none has becomes an empty box.
+    """
+    families = _MONO if voice.mono else _SERIF
+    guests: list[str] = []
+    letters = []
+    for letter in words:
+        home = _home_of(letter, voice, families)
+        letters.append(_MISSING if home is None else letter)
+        if home is not None and home not in families and home not in guests:
+            guests.append(home)
+    return "".join(letters), (*families[:-1], *guests, families[-1])
+
+
+@cache
+def width_mm(words: str, voice: Type) -> float:
+    """Return how wide a line of text is set."""
+    words, families = printable(words, voice)
+    with house_style():
+        width, _, _ = text_to_path.get_text_width_height_descent(words, _font(voice, families), ismath=False)
+    return float(width) * MM_PER_POINT
+
+
+def shortened(words: str, voice: Type, room_mm: float) -> str:
+    """Return the text, cut with an ellipsis where it is wider than the room."""
+    if width_mm(words, voice) <= room_mm:
+        return words
+    cut = len(words)
+    while cut > 0 and width_mm(words[:cut].rstrip() + "…", voice) > room_mm:
+        cut -= 1
+    return words[:cut].rstrip() + "…"
+
+
+def wrapped(parts: Sequence[str], voice: Type, room_mm: float, *, between: str = " ") -> list[str]:
+    """Return the parts as lines that fit the room, broken only between parts; one too wide for a line is cut."""
+    lines: list[str] = []
+    for part in parts:
+        longer = f"{lines[-1]}{between}{part}" if lines else part
+        if lines and width_mm(longer, voice) <= room_mm:
+            lines[-1] = longer
+        else:
+            lines.append(shortened(part, voice, room_mm))
+    return lines
+
+
+@contextmanager
+def house_style() -> Iterator[None]:
+    """Draw with the house's settings, whatever the user's own are, and put those back."""
+    with mpl.rc_context():
+        mpl.rcdefaults()
+        mpl.rcParams.update(_SETTINGS)
+        yield
+
+
+def save_pages(pages: Sequence[Figure], target: File, *, title: str, author: str | None) -> tuple[File, ...]:
+    """Write the pages and return the files written: one PDF, or a PNG or SVG for each page (`-2`, `-3` …).
+
+    Each file is written beside its place first and then put there whole.
+
+    Raises
+    ------
+    ValueError
+        If the target's suffix is not .pdf, .png or .svg.
+    """
+    suffix = target.suffix.lower()
+    if suffix not in SUFFIXES:
+        raise ValueError(f"{target.name}: a page is written as {', '.join(SUFFIXES[:-1])} or {SUFFIXES[-1]}")
+    with house_style():
+        if suffix == ".pdf":
+            _save_pdf(pages, target, title, author)
+            return (target,)
+        targets = tuple(_numbered(target, k) for k in range(1, len(pages) + 1))
+        for page, place in zip(pages, targets, strict=True):
+            _save_picture(page, place, title, author)
+        return targets
+
+
+def _save_pdf(pages: Sequence[Figure], target: File, title: str, author: str | None) -> None:
+    facts = {"Title": title, "Creator": "fluteprobe", "CreationDate": None}
+    if author:
+        facts["Author"] = author
+    with _put_whole(target) as draft, PdfPages(draft, metadata=facts) as book:
+        for page in pages:
+            book.savefig(page)
+
+
+def _save_picture(page: Figure, target: File, title: str, author: str | None) -> None:
+    kind = target.suffix.lower().lstrip(".")
+    creator, by = ("Software", "Author") if kind == "png" else ("Creator", "Contributor")
+    facts = {"Title": title, creator: "fluteprobe"} | ({by: author} if author else {})
+    if kind == "svg":
+        facts["Date"] = None
+    with _put_whole(target) as draft:
+        page.savefig(draft, format=kind, dpi=PNG_DOTS_PER_INCH if kind == "png" else 72, metadata=facts)
+
+
+@contextmanager
+def _put_whole(target: File) -> Iterator[File]:
+    draft = target.with_name(f".{target.name}.{os.getpid()}.part")
+    try:
+        yield draft
+        draft.replace(target)
+    finally:
+        draft.unlink(missing_ok=True)
+
+
+def _numbered(target: File, number: int) -> File:
+    return target if number == 1 else target.with_name(f"{target.stem}-{number}{target.suffix}")
+
+
+def _font(voice: Type, families: Sequence[str]) -> FontProperties:
+    return FontProperties(
+        family=list(families),
+        size=voice.size_pt,
+        style="italic" if voice.italic else "normal",
+        weight="bold" if voice.bold else "normal",
+    )
+
+
+@cache
+def _home_of(letter: str, voice: Type, families: tuple[str, ...]) -> str | None:
+    """Return the first family that has the letter, our own before the system's; None if there is none."""
+    own = next(
+        (family for family in families[:-1] if ord(letter) in _letters_of(family, voice.italic, voice.bold)),
+        None,
+    )
+    return own or next(
+        (family for family in _guests() if ord(letter) in _letters_of(family, False, False)), None
+    )
+
+
+@cache
+def _guests() -> tuple[str, ...]:
+    """Return the system's TrueType families: the kind that a PDF takes in as it is."""
+    named = {face.name for face in fontManager.ttflist if face.fname.lower().endswith(".ttf")}
+    return tuple(sorted(name for name in named if "Last Resort" not in name and not name.startswith("STIX")))
+
+
+@cache
+def _letters_of(family: str, italic: bool, bold: bool) -> frozenset[int]:
+    wanted = FontProperties(
+        family=family, style="italic" if italic else "normal", weight="bold" if bold else "normal"
+    )
+    try:
+        return frozenset(get_font(findfont(wanted, fallback_to_default=False)).get_charmap())
+    except (ValueError, OSError, RuntimeError):
+        return frozenset()
