@@ -1,19 +1,34 @@
-"""The measured flute: hears every take, decides every register, sums up every fingering."""
+"""The measured flute: hears every take, decides every register, sums up every fingering.
 
-from dataclasses import dataclass
+Conventions: pitches are in cents above 1 Hz inside; notes are spelt in ASCII with a sharp where one is needed
+("C#5"); deviations are positive where the flute is sharp; `uncertainty_cents` is standard (k = 1).
+"""
+
+from collections.abc import Callable, Mapping, Sequence
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass, replace
+from math import log2, sqrt
+from os import cpu_count
+from pathlib import Path
 
 from fluteprobe.flute.fingering import Breath, Fingering
-from fluteprobe.flute.register import Register, RegisterCall
-from fluteprobe.session import FluteFacts, Problem, Sitting
-from fluteprobe.sound.tone import Tone
+from fluteprobe.flute.register import REGISTERS, Register, RegisterCall, Sounding, decide, registers_of
+from fluteprobe.flute.tuning import A4_HZ, nearest_note, temperature_shift_cents
+from fluteprobe.session import FluteFacts, Problem, Session, Sitting, Take, read_session
+from fluteprobe.sound.recording import RecordingError, open_recording
+from fluteprobe.sound.tone import Tone, read_tones
+
+_FEW_TAKES = 3
+
+Progress = Callable[[int, int], None]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Reading:
     """One tone, read against the tuning and the flute.
 
-    `note` is spelt in ASCII with a sharp where one is needed ("C#5"); `cents` is the deviation from it as
-    played, `cents_at_reference` the same carried to the reference temperature (an estimate).
+    `note` and `cents` are the nearest equal-tempered note and the deviation from it as played;
+    `cents_at_reference` is the same carried to the reference temperature, which is an estimate.
     """
 
     take: str
@@ -52,3 +67,207 @@ class Survey:
     readings: tuple[Reading, ...]
     entries: tuple[Entry, ...]
     problems: tuple[Problem, ...]
+
+
+def hear(path: Path | str, *, a4_hz: float = A4_HZ, name: str | None = None) -> tuple[Reading, ...]:
+    """Return the tones of one recording, read against a tuning; nothing is known of the flute.
+
+    Raises
+    ------
+    RecordingError
+        If the file cannot be used; the message says what is wrong and what to do.
+    """
+    recording = open_recording(Path(path))
+    tones = _with_cautions(read_tones(recording), recording.cautions)
+    sitting = Sitting(a4_hz=a4_hz)
+    return tuple(_reading(name or str(path), None, tone, sitting, decide(())) for tone in tones)
+
+
+def measure(folder: Path | str, *, on_take: Progress | None = None) -> Survey:
+    """Return the survey of a session folder.
+
+    Raises
+    ------
+    SessionError
+        If the folder is no session; takes that cannot be used are problems of the survey instead.
+    """
+    return survey_of(read_session(Path(folder)), on_take=on_take)
+
+
+def survey_of(session: Session, *, on_take: Progress | None = None) -> Survey:
+    """Hear every take of a session, decide every register and sum up every fingering."""
+    heard: list[tuple[Take, Tone]] = []
+    problems = list(session.problems)
+    for done, (take, result) in enumerate(_heard(session.takes), start=1):
+        if isinstance(result, RecordingError):
+            problems.append(Problem(take=take.name, message=str(result)))
+        else:
+            heard += [(take, tone) for tone in result]
+        if on_take:
+            on_take(done, len(session.takes))
+    calls = _calls(session.flute.holes, heard)
+    readings = tuple(
+        _reading(take.name, take, tone, session.sitting, call)
+        for (take, tone), call in zip(heard, calls, strict=True)
+    )
+    return Survey(
+        flute=session.flute,
+        sitting=session.sitting,
+        readings=readings,
+        entries=summed_up(readings, session.takes, session.sitting),
+        problems=tuple(problems),
+    )
+
+
+def _heard(takes: Sequence[Take]) -> "list[tuple[Take, tuple[Tone, ...] | RecordingError]]":
+    """Hear all takes, on all cores where there are several: numpy's FFT and products release the lock."""
+    if len(takes) <= _FEW_TAKES:
+        return [(take, _hear_one(take)) for take in takes]
+    with ThreadPoolExecutor(cpu_count() or 1) as pool:
+        return list(zip(takes, pool.map(_hear_one, takes), strict=True))
+
+
+def _hear_one(take: Take) -> tuple[Tone, ...] | RecordingError:
+    try:
+        recording = open_recording(take.path)
+        return _with_cautions(read_tones(recording), recording.cautions)
+    except RecordingError as error:
+        return error
+
+
+def _with_cautions(tones: tuple[Tone, ...], cautions: tuple[str, ...]) -> tuple[Tone, ...]:
+    return tuple(replace(tone, cautions=(*cautions, *tone.cautions)) for tone in tones)
+
+
+def _reading(name: str, take: Take | None, tone: Tone, sitting: Sitting, call: RegisterCall) -> Reading:
+    note, cents = (
+        (None, None) if tone.frequency_hz is None else nearest_note(tone.frequency_hz, sitting.a4_hz)
+    )
+    shift = _reference_shift_cents(sitting)
+    return Reading(
+        take=name,
+        fingering=take.fingering if take else None,
+        breath=take.breath if take else None,
+        tone=tone,
+        note=None if note is None else str(note),
+        cents=cents,
+        cents_at_reference=None if cents is None or shift is None else cents + shift,
+        call=call,
+    )
+
+
+def _reference_shift_cents(sitting: Sitting) -> float | None:
+    """Return what carries a pitch from the air's temperature to the reference; None unless both are known."""
+    if sitting.air_temperature_c is None or sitting.reference_temperature_c is None:
+        return None
+    return temperature_shift_cents(sitting.air_temperature_c, sitting.reference_temperature_c)
+
+
+def _calls(holes: int, heard: Sequence[tuple[Take, Tone]]) -> list[RegisterCall]:
+    """Decide the register of every tone that sounds; breath alone has none."""
+    sounding = [i for i, (_, tone) in enumerate(heard) if tone.frequency_hz is not None]
+    decided = registers_of(holes, [_sounding(*heard[i]) for i in sounding])
+    calls = dict(zip(sounding, decided, strict=True))
+    none = RegisterCall(register=None, probability=dict.fromkeys(REGISTERS, 1.0 / 3.0))
+    return [calls.get(i, none) for i in range(len(heard))]
+
+
+def _sounding(take: Take, tone: Tone) -> Sounding:
+    return Sounding(
+        take=take.name, fingering=take.fingering, breath=take.breath, pitch_cents=_pitch_cents(tone)
+    )
+
+
+def _pitch_cents(tone: Tone) -> float:
+    assert tone.frequency_hz is not None  # noqa: S101  (callers ask for sounding tones only)
+    return 1200.0 * log2(tone.frequency_hz)
+
+
+# --- entries -----------------------------------------------------------------------------------------
+
+
+def summed_up(readings: Sequence[Reading], takes: Sequence[Take], sitting: Sitting) -> tuple[Entry, ...]:
+    """Return one entry for every fingering and register that was decided, low to high."""
+    groups: dict[tuple[Fingering, Register], list[Reading]] = {}
+    for reading in readings:
+        if (
+            reading.fingering is not None
+            and reading.call.register is not None
+            and reading.tone.kind == "tone"
+        ):
+            groups.setdefault((reading.fingering, reading.call.register), []).append(reading)
+    scatter = _pooled_scatter_cents(list(groups.values()))
+    entries = [_entry(group, takes, sitting, scatter) for group in groups.values()]
+    first = {entry.fingering: entry for entry in entries if entry.register == 1}
+    return tuple(
+        sorted((_stretched(entry, first) for entry in entries), key=lambda entry: entry.frequency_hz)
+    )
+
+
+def _entry(group: Sequence[Reading], takes: Sequence[Take], sitting: Sitting, scatter_cents: float) -> Entry:
+    """Sum up the tones of one fingering in one register."""
+    fingering, register = group[0].fingering, group[0].call.register
+    assert fingering is not None  # noqa: S101  (grouped by both)
+    assert register is not None  # noqa: S101
+    mean_cents, uncertainty = _mean(group, scatter_cents)
+    frequency_hz = float(2.0 ** (mean_cents / 1200.0))
+    note, cents = nearest_note(frequency_hz, sitting.a4_hz)
+    shift = _reference_shift_cents(sitting)
+    gave = {reading.take for reading in group}
+    breaths = {reading.breath for reading in group}
+    tried = {take.name for take in takes if take.fingering == fingering and take.breath in breaths}
+    return Entry(
+        fingering=fingering,
+        register=register,
+        frequency_hz=frequency_hz,
+        uncertainty_cents=uncertainty,
+        note=str(note),
+        cents=cents,
+        cents_at_reference=None if shift is None else cents + shift,
+        stretch_cents=None,
+        takes=tuple(dict.fromkeys(reading.take for reading in group)),
+        tones=len(group),
+        reliability=len(gave & tried) / len(tried) if tried else 1.0,
+    )
+
+
+def _stretched(entry: Entry, first: Mapping[Fingering, Entry]) -> Entry:
+    """Add the stretch: how far a second-register tone is from the octave over the same fingering's first."""
+    if entry.register != 2 or entry.fingering not in first:
+        return entry
+    octaves = log2(entry.frequency_hz / first[entry.fingering].frequency_hz)
+    return replace(entry, stretch_cents=1200.0 * (octaves - 1.0))
+
+
+def _mean(group: Sequence[Reading], scatter_cents: float) -> tuple[float, float]:
+    """Return the weighted mean pitch of some tones and its standard uncertainty, both in cents.
+
+    Each tone counts by the inverse of its own variance plus that between takes (DerSimonian & Laird, Control.
+    Clin. Trials 7, 177 (1986)); where these tones scatter more than that, by the ratio (Birge, Phys. Rev. 40,
+    207 (1932)).
+    """
+    pitches = [_pitch_cents(reading.tone) for reading in group]
+    weights = [1.0 / (_own_variance(reading) + scatter_cents**2) for reading in group]
+    total = sum(weights)
+    mean = sum(w * p for w, p in zip(weights, pitches, strict=True)) / total
+    spread = sum(w * (p - mean) ** 2 for w, p in zip(weights, pitches, strict=True))
+    ratio = max(1.0, spread / (len(group) - 1)) if len(group) > 1 else 1.0
+    return mean, sqrt(ratio / total)
+
+
+def _own_variance(reading: Reading) -> float:
+    return max(reading.tone.uncertainty_cents or 0.0, 1e-3) ** 2
+
+
+def _pooled_scatter_cents(groups: Sequence[Sequence[Reading]]) -> float:
+    """Return the scatter between takes beyond the tones' own uncertainty, pooled over what was repeated."""
+    squares, freedom, own = 0.0, 0, 0.0
+    for group in groups:
+        if len(group) < 2:
+            continue
+        pitches = [_pitch_cents(reading.tone) for reading in group]
+        mean = sum(pitches) / len(pitches)
+        squares += sum((pitch - mean) ** 2 for pitch in pitches)
+        freedom += len(group) - 1
+        own += (len(group) - 1) * sum(_own_variance(reading) for reading in group) / len(group)
+    return sqrt(max(squares - own, 0.0) / freedom) if freedom else 0.0

@@ -1,44 +1,89 @@
-"""Which register sounds: pieces of evidence, each a log-odds, combined in one place.
+"""Which register sounds: from the tones of a flute to a register, or undecided, for each.
 
 Conventions: register 1 is the lowest resonance of the air column for that fingering, 2 the next, 3 the
-next. `None` is undecided. Log-odds are natural logarithms, in favour of the register that is named against
-the other two together.
+next. Pitches are in cents above 1 Hz (1200 log2 of the frequency).
+
+Every tone is judged twice: from what it says itself, and then also from the other tones of its fingering,
+whose registers are known by then with some probability. To add a kind of evidence, write a function that
+returns a `Clue` and call it from `_own_clues`.
 """
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
-from typing import Literal
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 
-Register = Literal[1, 2, 3]
-REGISTERS: tuple[Register, ...] = (1, 2, 3)
+from fluteprobe.flute.evidence import PRIOR, REGISTERS, Clue, Evidence, Register, RegisterCall, decide
+from fluteprobe.flute.fingering import Breath, Fingering
+from fluteprobe.flute.ladder import Ladder, companion_clue, known_ladder, ladder_clue
 
+__all__ = ["REGISTERS", "Evidence", "Register", "RegisterCall", "Sounding", "decide", "registers_of"]
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Evidence:
-    """One reason to believe in a register.
-
-    Attributes
-    ----------
-    source
-        Where it comes from, a few plain words: "same fingering", "ladder", "breath in the file name" …
-    favours
-        The register that it speaks for.
-    log_odds
-        How strongly, natural log, never negative.
-    detail
-        The reason in words, with numbers and units.
-    """
-
-    source: str
-    favours: Register
-    log_odds: float
-    detail: str
+SAME_PITCH_CENTS = 120.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
-class RegisterCall:
-    """The decision on one tone: a register or undecided, with probabilities and all the reasons."""
+class Sounding:
+    """What is known of one tone: the take it is in, how it was fingered and blown, and its pitch."""
 
-    register: Register | None
-    probability: Mapping[Register, float]
-    evidence: tuple[Evidence, ...] = field(default=())
+    take: str
+    fingering: Fingering
+    breath: Breath
+    pitch_cents: float
+
+
+def registers_of(holes: int, soundings: Sequence[Sounding]) -> list[RegisterCall]:
+    """Decide the register of every tone of one flute with that many holes, in the order given."""
+    flute = known_ladder(holes, _lowest(soundings))
+    own = [_own_clues(flute, sounding, soundings) for sounding in soundings]
+    alone = [decide(clues) for clues in own]
+    return [
+        decide([*clues, *_companion_clues(sounding, soundings, alone)])
+        for sounding, clues in zip(soundings, own, strict=True)
+    ]
+
+
+def _own_clues(flute: Ladder, sounding: Sounding, soundings: Sequence[Sounding]) -> list[Clue]:
+    """Return what a tone's own pitch and its take's name say."""
+    clue = ladder_clue(flute, sounding.fingering, sounding.pitch_cents)
+    clues = [] if clue is None else [clue]
+    highest = max(other.pitch_cents for other in soundings if other.take == sounding.take)
+    if sounding.breath != "over" or sounding.pitch_cents > highest - SAME_PITCH_CENTS:
+        clues.append(breath_clue(sounding.breath))
+    return clues
+
+
+def _companion_clues(
+    sounding: Sounding, soundings: Sequence[Sounding], alone: Sequence[RegisterCall]
+) -> list[Clue]:
+    """Compare a tone with the surest other pitch that the same fingering gave."""
+    apart = [
+        (max(call.probability.values()), other.pitch_cents, call.probability)
+        for other, call in zip(soundings, alone, strict=True)
+        if other.fingering == sounding.fingering
+        and abs(other.pitch_cents - sounding.pitch_cents) > SAME_PITCH_CENTS
+    ]
+    if not apart:
+        return []
+    _, companion_cents, probability = max(apart, key=lambda other: other[0])
+    return [companion_clue(sounding.fingering, sounding.pitch_cents, companion_cents, probability)]
+
+
+def _lowest(soundings: Sequence[Sounding]) -> Mapping[Fingering, float]:
+    """Return the lowest pitch that each fingering gave."""
+    lowest: dict[Fingering, float] = {}
+    for sounding in soundings:
+        lowest[sounding.fingering] = min(lowest.get(sounding.fingering, 1e9), sounding.pitch_cents)
+    return lowest
+
+
+_NAMED: Mapping[Breath, Mapping[Register, float]] = {
+    "soft": {1: 0.6, 2: 0.3, 3: 0.1},
+    "normal": {1: 0.5, 2: 0.35, 3: 0.15},
+    "over": {1: 0.15, 2: 0.6, 3: 0.25},
+}
+
+
+def breath_clue(breath: Breath) -> Clue:
+    """Take the breath that the file's name says as a weak hint."""
+    detail = {"soft": "blown softly", "normal": "blown normally", "over": "overblown"}[breath]
+    likelihood = {register: _NAMED[breath][register] / PRIOR[register] for register in REGISTERS}
+    return Clue(source="breath in the file name", likelihood=likelihood, detail=f"the name says {detail}")

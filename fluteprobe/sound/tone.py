@@ -1,22 +1,48 @@
-"""One steady tone of a recording, as physical facts.
+"""One steady tone of a recording, as physical facts: a span goes in, a Tone comes out.
 
 Conventions: times in seconds from the start of the recording; frequencies in Hz; partial levels in dB
 against the strongest partial of the same tone; `uncertainty_cents` is a standard uncertainty (k = 1).
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
+import numpy as np
+from numpy.typing import NDArray
+
+from fluteprobe.sound.partials import (
+    Partial,
+    Samples,
+    Tracks,
+    amplitudes,
+    demodulate,
+    orders_below_nyquist,
+    partials_of,
+    without_partials,
+)
+from fluteprobe.sound.pitch import Pitch, Vibrato, follow_guide, measure_pitch, phase_track, settle_octave
+from fluteprobe.sound.recording import Recording
+from fluteprobe.sound.spans import SHORTEST_TONE_S, Span, find_spans
+
+__all__ = ["BreathResonance", "Kind", "Partial", "Tone", "Vibrato", "read_tones"]
+
 Kind = Literal["tone", "edge tone", "breath only", "multiphonic"]
+Floats = NDArray[np.float64]
 
+LONGEST_TONE_S = 30.0
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Partial:
-    """One harmonic of a tone: its order (1 is the fundamental), frequency and level."""
-
-    order: int
-    frequency_hz: float
-    level_db: float
+_MARGIN_S = 0.15
+_EDGE_DB = 3.0
+_ATTACK_DB = 20.0
+_EDGE_REFERENCE_S = 0.2
+_SETTLING_S = 0.1
+_SETTLED_CENTS = 20.0
+_SHORT_S = 0.4
+_NOISY_DB = 12.0
+_UNSTEADY_CENTS = 12.0
+_DRIFTING_CENTS = 20.0
+_QUIET_DB = -50.0
+_CLIPPED_SHARE = 0.001
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -26,14 +52,6 @@ class BreathResonance:
     frequency_hz: float
     width_hz: float
     prominence_db: float
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Vibrato:
-    """A regular swing of pitch: its rate, and its extent from the middle to either side."""
-
-    rate_hz: float
-    extent_cents: float
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -55,3 +73,184 @@ class Tone:
     vibrato: Vibrato | None
     attack_ms: float | None
     cautions: tuple[str, ...]
+
+
+def read_tones(recording: Recording) -> tuple[Tone, ...]:
+    """Find and measure every steady tone of a recording; a recording without one gives the breath alone."""
+    spans = find_spans(recording)
+    tones = [_read_tone(recording, span) for span in spans if span.frequency_hz is not None]
+    found = tuple(tone for tone in tones if tone is not None and tone.kind != "breath only")
+    return found or (_breath_alone(recording, spans),)
+
+
+def _read_tone(recording: Recording, span: Span) -> Tone | None:
+    """Measure one span: settle the octave, trim the edges, follow the phase, weigh the partials."""
+    assert span.frequency_hz is not None  # noqa: S101  (spans without pitch are sorted out before)
+    steady = _steady_part(recording, span, span.frequency_hz)
+    if steady.stop - steady.start < SHORTEST_TONE_S * recording.rate_hz:
+        return None
+    samples = recording.read(steady.start, steady.stop)
+    measured = _measured(samples, recording.rate_hz, steady.frequency_hz)
+    cycles = _whole_cycles(measured.pitch.vibrato, len(samples), recording.rate_hz)
+    if cycles < len(samples):
+        steady = replace(steady, start=steady.start + (len(samples) - cycles) // 2)
+        steady = replace(steady, stop=steady.start + cycles)
+        samples = recording.read(steady.start, steady.stop)
+        measured = _measured(samples, recording.rate_hz, steady.frequency_hz)
+    return _tone(recording, steady, samples, measured)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Steady:
+    """The part of a span that is measured, its refined pitch, and how long the attack took."""
+
+    start: int
+    stop: int
+    frequency_hz: float
+    attack_ms: float | None
+
+
+def _steady_part(recording: Recording, span: Span, coarse_hz: float) -> _Steady:
+    """Trim a span to where the partials have risen and have not yet fallen, and the pitch has settled."""
+    rate, margin = recording.rate_hz, int(_MARGIN_S * recording.rate_hz)
+    stop = min(span.stop, span.start + int(LONGEST_TONE_S * rate))
+    frequency_hz = settle_octave(recording.read(span.start, stop), rate, coarse_hz)
+    first = max(span.start - margin, 0)
+    around = recording.read(first, min(stop + margin, recording.frames))
+    guide = demodulate(around, rate, frequency_hz, orders_below_nyquist(rate, frequency_hz, 4))
+    inside = slice((span.start - first) // guide.hop, max((stop - first) // guide.hop, 1))
+    low, high, attack = _edges(guide, inside)
+    return _Steady(
+        start=first + low * guide.hop,
+        stop=min(first + (high + 2) * guide.hop, recording.frames),
+        frequency_hz=frequency_hz,
+        attack_ms=attack,
+    )
+
+
+def _edges(guide: Tracks, inside: slice) -> tuple[int, int, float | None]:
+    """Return the first and last steady frame, and the attack in ms (None where it starts in mid-sound)."""
+    level = 10.0 * np.log10(np.sum(np.abs(guide.phasors) ** 2, axis=1) + 1e-20)
+    near = max(round(_EDGE_REFERENCE_S / guide.hop_s), 1)
+    core = level[inside] if len(level[inside]) else level
+    risen = core[:near] if len(core) < 2 * near else core[near // 4 : near + near // 4]
+    low = _last_below(level[: inside.start + near], float(np.median(risen)) - _EDGE_DB)
+    fallen = level[max(inside.stop - near, 0) :][::-1]
+    end = core[-near:] if len(core) < 2 * near else core[-near - near // 4 : -(near // 4) or None]
+    high = len(level) - 1 - _last_below(fallen, float(np.median(end)) - _EDGE_DB)
+    quiet = _last_below(level[:low], float(np.median(risen)) - _ATTACK_DB)
+    attack = (low - quiet) * guide.hop_s * 1000.0 if quiet else None
+    return _settled(guide, low, high), high, attack
+
+
+def _last_below(level: Floats, threshold: float) -> int:
+    """Return the index after the last value under the threshold, 0 where there is none."""
+    below = np.flatnonzero(level < threshold)
+    return int(below[-1]) + 1 if len(below) else 0
+
+
+def _settled(guide: Tracks, low: int, high: int) -> int:
+    """Return the first frame from which the pitch is near that of the next moments."""
+    strongest = int(np.argmax(np.sum(np.abs(guide.phasors[low:high]) ** 2, axis=0)))
+    phasors = guide.phasors[low:high, strongest]
+    steps = np.angle(phasors[1:] * phasors[:-1].conj()) / (2 * np.pi * guide.hop_s * guide.orders[strongest])
+    cents = 1731.0 * steps / guide.frequency_hz
+    look = max(round(_SETTLING_S / guide.hop_s), 1)
+    if len(cents) < 4 * look:
+        return low
+    return low + _last_below(-np.abs(cents[:look] - np.median(cents[look : 3 * look])), -_SETTLED_CENTS)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Measured:
+    """Pitch, partial amplitudes (orders,) and what is left without the partials (samples,)."""
+
+    pitch: Pitch
+    orders: Floats
+    amplitude: Floats
+    residual: Samples
+
+    @property
+    def harmonic_to_noise_db(self) -> float:
+        """Power of all partials over the power of the rest, in dB."""
+        noise = float(np.mean(self.residual.astype(np.float64) ** 2)) + 1e-20
+        return float(10.0 * np.log10((0.5 * np.sum(self.amplitude**2) + 1e-20) / noise))
+
+
+def _measured(samples: Samples, rate_hz: int, frequency_hz: float) -> _Measured:
+    guide = follow_guide(samples, rate_hz, frequency_hz)
+    tracks = demodulate(
+        samples, rate_hz, guide.frequency_hz, orders_below_nyquist(rate_hz, guide.frequency_hz)
+    )
+    pitch = measure_pitch(phase_track(tracks))
+    amplitude = amplitudes(tracks, pitch.phase_rad)
+    residual = without_partials(samples, tracks, pitch.phase_rad, amplitude > 0.0)
+    return _Measured(pitch=pitch, orders=tracks.orders, amplitude=amplitude, residual=residual)
+
+
+def _whole_cycles(vibrato: Vibrato | None, length: int, rate_hz: int) -> int:
+    """Return how many samples hold whole cycles of the vibrato, so that its mean is its middle."""
+    if vibrato is None:
+        return length
+    cycles = int(length / rate_hz * vibrato.rate_hz)
+    return min(int(cycles / vibrato.rate_hz * rate_hz), length) if cycles >= 2 else length
+
+
+def _tone(recording: Recording, steady: _Steady, samples: Samples, measured: _Measured) -> Tone:
+    pitch, rate = measured.pitch, recording.rate_hz
+    sounds = bool(np.any(measured.amplitude > 0.0))
+    hnr = measured.harmonic_to_noise_db
+    return Tone(
+        start_s=steady.start / rate,
+        end_s=steady.stop / rate,
+        kind="tone" if sounds else "breath only",
+        frequency_hz=pitch.frequency_hz if sounds else None,
+        uncertainty_cents=pitch.uncertainty_cents if sounds else None,
+        partials=partials_of(pitch.frequency_hz, measured.orders, measured.amplitude),
+        harmonic_to_noise_db=hnr if sounds else None,
+        breath_resonances=(),
+        drift_cents=pitch.drift_cents if sounds else None,
+        vibrato=pitch.vibrato if sounds else None,
+        attack_ms=steady.attack_ms,
+        cautions=tuple(_cautions(samples, rate, pitch, hnr)) if sounds else (),
+    )
+
+
+def _cautions(samples: Samples, rate_hz: int, pitch: Pitch, harmonic_to_noise_db: float) -> list[str]:
+    """Say in plain words what makes this tone's numbers less sure."""
+    cautions = []
+    peak = float(np.max(np.abs(samples)))
+    level_db = 20.0 * np.log10(float(np.sqrt(np.mean(samples.astype(np.float64) ** 2))) + 1e-20)
+    if peak > 0.5 and float(np.mean(np.abs(samples) >= 0.999 * peak)) > _CLIPPED_SHARE * 10:
+        cautions.append("clipped: record with less gain or from farther away")
+    if level_db < _QUIET_DB:
+        cautions.append(f"very quiet ({level_db:.0f} dB under full scale): record closer")
+    if harmonic_to_noise_db < _NOISY_DB:
+        cautions.append(f"noisy: the tone stands only {harmonic_to_noise_db:.0f} dB over the noise")
+    if len(samples) < _SHORT_S * rate_hz:
+        cautions.append(f"short: {len(samples) / rate_hz:.2f} s steady; hold the tone for two seconds")
+    if pitch.wander_cents > _UNSTEADY_CENTS:
+        cautions.append(f"unsteady: the pitch wanders by {pitch.wander_cents:.0f} cents")
+    if abs(pitch.drift_cents) > _DRIFTING_CENTS:
+        cautions.append(f"drifting: the pitch moves by {pitch.drift_cents:+.0f} cents from start to end")
+    return cautions
+
+
+def _breath_alone(recording: Recording, spans: tuple[Span, ...]) -> Tone:
+    """Return the breath of a recording in which no tone speaks."""
+    start = min(span.start for span in spans)
+    stop = max(span.stop for span in spans)
+    return Tone(
+        start_s=start / recording.rate_hz,
+        end_s=stop / recording.rate_hz,
+        kind="breath only",
+        frequency_hz=None,
+        uncertainty_cents=None,
+        partials=(),
+        harmonic_to_noise_db=None,
+        breath_resonances=(),
+        drift_cents=None,
+        vibrato=None,
+        attack_ms=None,
+        cautions=("no steady tone was found: breath only",),
+    )

@@ -1,0 +1,216 @@
+"""Partials as slowly turning phasors: a tone is taken apart, measured, and put together again.
+
+Conventions: orders are multiples of the fundamental (1 is the fundamental; halves and thirds are asked for
+when octaves are checked). A track is sampled once a hop; frames are Hann-windowed, `PERIODS` periods of the
+fundamental long, with half overlap, so that frame m is centred on sample `(m + 1) * hop`. Phasors have the
+amplitude of the partial (peak, not rms) and its phase against a steady oscillation at order × frequency.
+
+A window of a whole number of periods puts the other partials on its zeros (Harris, Proc. IEEE 66, 51
+(1978)): each partial is read undisturbed, and its noise is that of a band of 1.5 / (frame length).
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+Floats = NDArray[np.float64]
+Complexes = NDArray[np.complex128]
+Samples = NDArray[np.float32]
+
+PERIODS = 5
+HIGHEST_PARTIAL_HZ = 20000.0
+MOST_PARTIALS = 32
+
+# Noise of neighbouring half-overlapped Hann frames correlates by 1/6 (sum of w(n) w(n + hop) over sum of w²).
+OVERLAP_CORRELATION = 1.0 / 6.0
+
+_NEIGHBOURS = 4
+_SMOOTHING = 9
+
+
+_CHANCE = 1e-4
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Partial:
+    """One harmonic of a tone: its order (1 is the fundamental), frequency, and level re the strongest."""
+
+    order: int
+    frequency_hz: float
+    level_db: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Tracks:
+    """Phasors of some partials over time, (frames, orders); frame m is centred on `(m + 1) * hop`."""
+
+    rate_hz: int
+    frequency_hz: float
+    hop: int
+    orders: Floats
+    phasors: Complexes
+
+    @property
+    def hop_s(self) -> float:
+        """Seconds from one frame to the next."""
+        return self.hop / self.rate_hz
+
+    @property
+    def time_s(self) -> Floats:
+        """Centres of the frames, from the first sample, shape (frames,)."""
+        return np.arange(1, len(self.phasors) + 1, dtype=np.float64) * self.hop_s
+
+
+def orders_below_nyquist(rate_hz: int, frequency_hz: float, most: int = MOST_PARTIALS) -> Floats:
+    """Return the orders 1, 2, 3 … whose partials the recording can hold."""
+    highest = min(HIGHEST_PARTIAL_HZ, 0.47 * rate_hz)
+    return np.arange(1.0, max(min(most, int(highest / frequency_hz)), 1) + 1.0, dtype=np.float64)
+
+
+def demodulate(
+    samples: Samples, rate_hz: int, frequency_hz: float, orders: Floats, periods: int = PERIODS
+) -> Tracks:
+    """Read the phasors of the given orders of `frequency_hz` along the samples.
+
+    One matrix product does it: the samples as rows of one hop, against windowed cosines and sines.
+    """
+    hop = max(round(0.5 * periods * rate_hz / frequency_hz), 1)
+    rows = samples[: len(samples) // hop * hop].reshape(-1, hop)
+    turning = rows @ _windowed_waves(rate_hz, frequency_hz, hop, orders)
+    count = len(orders)
+    first, second = turning[:-1, : 2 * count], turning[1:, 2 * count :]
+    parts = (first + second).astype(np.float64)
+    centres = (np.arange(len(parts)) + 1.0) * hop
+    turned = np.exp(-2j * np.pi * frequency_hz / rate_hz * centres[:, None] * orders)
+    phasors = (parts[:, :count] + 1j * parts[:, count:]) * turned
+    return Tracks(rate_hz=rate_hz, frequency_hz=frequency_hz, hop=hop, orders=orders, phasors=phasors)
+
+
+def _windowed_waves(rate_hz: int, frequency_hz: float, hop: int, orders: Floats) -> Samples:
+    """Return windowed cosines and minus sines over both halves of a frame, shape (hop, 4 orders)."""
+    n = np.arange(-hop, hop)
+    window = 0.5 * (1.0 + np.cos(np.pi * n / hop)) * (2.0 / hop)
+    angle = 2.0 * np.pi * frequency_hz / rate_hz * n[:, None] * orders
+    waves = np.concatenate([np.cos(angle), -np.sin(angle)], axis=1) * window[:, None]
+    return np.concatenate([waves[:hop], waves[hop:]], axis=1).astype(np.float32)
+
+
+def line_chances(tracks: Tracks, phase_rad: Floats) -> Floats:
+    """Return for each order the probability that its line is chance, shape (orders,).
+
+    With order × `phase_rad` (frames,) taken out, a partial of the tone stands still: its power gathers in
+    the middle line of its phasors' spectrum, while noise is as strong in the lines next to it. Under noise
+    alone the ratio of that power to the mean of its 2n neighbours has the F distribution with 2 and 4n
+    degrees of freedom, whose upper tail is (1 + ratio / 2n)^-2n (Percival & Walden, Spectral Analysis for
+    Physical Applications, 1993, ch. 10: the F test for a line).
+    """
+    still = tracks.phasors * np.exp(-1j * phase_rad[:, None] * tracks.orders)
+    neighbours = min(_NEIGHBOURS, (len(still) - 1) // 2)
+    if neighbours < 1:
+        return np.ones(len(tracks.orders))
+    turn = (
+        np.arange(-neighbours, neighbours + 1)[:, None] * np.arange(len(still)) * (-2j * np.pi / len(still))
+    )
+    power = np.abs(np.exp(turn) @ still) ** 2
+    beside = np.delete(power, neighbours, axis=0).mean(axis=0)
+    ratio = power[neighbours] / np.maximum(beside, 1e-30)
+    return np.asarray((1.0 + ratio / (2.0 * neighbours)) ** (-2.0 * neighbours))
+
+
+def noise_powers(tracks: Tracks, phase_rad: Floats) -> Floats:
+    """Return the noise power in each order's phasors, E |n|² (orders,), from what changes within a hop.
+
+    With a smooth phase (frames,) taken out, x(m) - (x(m-2) + x(m+2)) / 2 holds 1.5 times the noise of one
+    frame and next to nothing of a slow change.
+    """
+    still = tracks.phasors * np.exp(-1j * phase_rad[:, None] * tracks.orders)
+    rough = still[2:-2] - 0.5 * (still[:-4] + still[4:])
+    return np.asarray(np.mean(np.abs(rough) ** 2, axis=0) / 1.5)
+
+
+def amplitudes(tracks: Tracks, phase_rad: Floats) -> Floats:
+    """Return the root-mean-square phasor of each order that is no chance, its noise taken off; 0 elsewhere.
+
+    A window that is off the partial's frequency by x bins reads it lower by sinc(x) / (1 - x²), the Hann
+    window's transform (Harris 1978); the phase's own slope tells x and the loss is made good.
+    """
+    offset = np.gradient(phase_rad) / (2.0 * np.pi) * 2.0
+    bins = np.clip(offset[:, None] * tracks.orders, -0.9, 0.9)
+    loss = np.sinc(bins) / (1.0 - bins**2)
+    power = np.mean(np.abs(tracks.phasors / loss) ** 2, axis=0) - noise_powers(tracks, phase_rad)
+    told = (line_chances(tracks, phase_rad) < _CHANCE) & (power > 0.0)
+    return np.sqrt(np.where(told, power, 0.0))
+
+
+def partials_of(frequency_hz: float, orders: Floats, amplitude: Floats) -> tuple[Partial, ...]:
+    """Return the partials that are there, levels against the strongest."""
+    strongest = amplitude.max(initial=0.0)
+    return tuple(
+        Partial(
+            order=int(k), frequency_hz=float(k * frequency_hz), level_db=float(20.0 * np.log10(a / strongest))
+        )
+        for k, a in zip(orders, amplitude, strict=True)
+        if a > 0.0
+    )
+
+
+def without_partials(samples: Samples, tracks: Tracks, phase_rad: Floats, told: NDArray[np.bool_]) -> Samples:
+    """Take the told partials out of the samples, with their slow changes of frequency and amplitude.
+
+    The phasors, still against `phase_rad` (frames,), are smoothed over about twenty periods, so that only
+    noise very near a partial goes with it, and put together in frames of two periods: what the linear
+    change within a frame leaves behind then falls on the partials' own places and on no other.
+    """
+    if not told.any():
+        return samples
+    orders = tracks.orders[told]
+    hop = max(round(tracks.rate_hz / tracks.frequency_hz), 2)
+    count = len(samples) // hop + 2
+    at = np.arange(count) * hop / tracks.rate_hz
+    still = _smoothed(tracks.phasors[:, told] * np.exp(-1j * phase_rad[:, None] * orders))
+    now = _interpolated(at, tracks.time_s, still)
+    phase = _extended(at, tracks.time_s, phase_rad) + 2.0 * np.pi * tracks.frequency_hz * at
+    phasors = now * np.exp(1j * phase[:, None] * orders)
+    model = (np.concatenate([phasors.real, phasors.imag], axis=1).astype(np.float32)) @ _waves(
+        tracks, hop, orders
+    )
+    whole = (model[:-1, hop:] + model[1:, :hop]).reshape(-1)
+    return samples - whole[: len(samples)]
+
+
+def _waves(tracks: Tracks, hop: int, orders: Floats) -> Samples:
+    """Return windowed cosines and minus sines over one frame of two hops, shape (2 orders, 2 hop)."""
+    n = np.arange(-hop, hop)
+    angle = 2.0 * np.pi * tracks.frequency_hz / tracks.rate_hz * orders[:, None] * n
+    window = 0.5 * (1.0 + np.cos(np.pi * n / hop))
+    return (np.concatenate([np.cos(angle), -np.sin(angle)]) * window).astype(np.float32)
+
+
+def _smoothed(still: Complexes) -> Complexes:
+    """Smooth phasors along time by a Hann-weighted mean; towards the ends the mean grows shorter."""
+    width = min(_SMOOTHING, (len(still) - 1) // 2 * 2 + 1)
+    weights = np.hanning(width + 2)[1:-1]
+    weights /= weights.sum()
+    half = width // 2
+    padded = np.concatenate(
+        [2 * still[0] - still[half:0:-1], still, 2 * still[-1] - still[-2 : -2 - half : -1]]
+    )
+    return np.asarray(np.lib.stride_tricks.sliding_window_view(padded, width, axis=0) @ weights)
+
+
+def _interpolated(at: Floats, time_s: Floats, values: Complexes) -> Complexes:
+    """Interpolate columns linearly, held at the ends."""
+    place = np.clip((at - time_s[0]) / (time_s[1] - time_s[0]), 0.0, len(time_s) - 1.0)
+    left = np.minimum(place.astype(np.intp), len(time_s) - 2)
+    part = (place - left)[:, None]
+    return np.asarray((1.0 - part) * values[left] + part * values[left + 1])
+
+
+def _extended(at: Floats, time_s: Floats, phase_rad: Floats) -> Floats:
+    """Interpolate the phase, and carry it on past either end at the slope that it has there."""
+    step = time_s[1] - time_s[0]
+    inside = np.interp(at, time_s, phase_rad)
+    before = np.minimum(at - time_s[0], 0.0) * (phase_rad[1] - phase_rad[0]) / step
+    after = np.maximum(at - time_s[-1], 0.0) * (phase_rad[-1] - phase_rad[-2]) / step
+    return np.asarray(inside + before + after)

@@ -1,0 +1,340 @@
+"""The pitch of one steady tone, at the statistical limit, with an honest uncertainty.
+
+Conventions: frequencies in Hz; drift, vibrato and uncertainty in cents; a phase track is that of the
+fundamental, in radians, against a steady oscillation at the track's `frequency_hz`.
+
+A tone is a sum of partials at whole multiples of one frequency in coloured noise. Each partial's phase,
+divided by its order, tells the fundamental's; weighted by order² × amplitude² / (noise near it) they make
+the maximum-likelihood phase (Quinn & Thomson, IEEE Trans. Signal Process. 39, 1991; Christensen & Jakobsson,
+Multi-Pitch Estimation, 2009, ch. 2), and the slope of a line through the phases is the frequency (Tretter,
+IEEE Trans. Inf. Theory 31, 832 (1985)), whose variance reaches the Cramér-Rao bound 24 σ² / (N³ Σ k² A_k²).
+Where the phases leave the line by more than their noise, the tone moves: the fewest slow terms that the
+noise cannot explain are added (Schwarz's criterion), and the pitch is the mean over time of that curve.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fluteprobe.sound.partials import (
+    OVERLAP_CORRELATION,
+    Samples,
+    Tracks,
+    demodulate,
+    line_chances,
+    noise_powers,
+    orders_below_nyquist,
+)
+
+Floats = NDArray[np.float64]
+
+CENTS = 1200.0 / np.log(2.0)
+
+_GUIDES = 4
+_PARTS = {2: np.array([0.5, 1.5, 2.5]), 3: np.array([1 / 3, 2 / 3, 4 / 3, 5 / 3])}
+_NARROW_PERIODS = 12
+_LEAST_PART_DB = -50.0
+_LOWEST_FUNDAMENTAL_HZ = 85.0
+_SURE = 1e-6
+_LIKELY = 1e-3
+_ROUNDS = 3
+_POINT_S = 0.02
+_FASTEST_WANDER_HZ = 12.0
+_MOST_TERMS = 160
+_CAUTION = 5.0
+_VIBRATO_HZ = (2.5, 9.0)
+_LEAST_VIBRATO_CENTS = 3.0
+_VIBRATO_SHARE = 0.5
+_SLOW_TERMS = 4
+# Student's t for 95 % over 2, by degrees of freedom (JCGM 100:2008, table G.2): a scatter known from few
+# independent values needs a wider interval.
+_STUDENT = {1: 6.35, 2: 2.15, 3: 1.59, 4: 1.39, 5: 1.285}
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Vibrato:
+    """A regular swing of pitch: its rate, and its extent from the middle to either side."""
+
+    rate_hz: float
+    extent_cents: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class PhaseTrack:
+    """The fundamental's phase along a tone, (frames,) at `time_s`; `noise_rad` is one frame's noise."""
+
+    frequency_hz: float
+    time_s: Floats
+    phase_rad: Floats
+    noise_rad: float
+
+    @property
+    def hop_s(self) -> float:
+        """Seconds from one frame to the next."""
+        return float(self.time_s[1] - self.time_s[0])
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Pitch:
+    """The mean pitch of a tone over its span, how it moves, and how sure the mean is (k = 1).
+
+    `deviation_cents` is the smoothed pitch against the mean at `time_s` (points,); None of the movement is
+    in it where the phases lie on a line. `noise_cents` is the uncertainty from noise alone, and
+    `phase_rad` (frames,) the smoothed phase at the frames of the track.
+    """
+
+    frequency_hz: float
+    uncertainty_cents: float
+    noise_cents: float
+    drift_cents: float
+    vibrato: Vibrato | None
+    wander_cents: float
+    time_s: Floats
+    deviation_cents: Floats
+    phase_rad: Floats
+
+
+def settle_octave(samples: Samples, rate_hz: int, frequency_hz: float) -> float:
+    """Return the fundamental that the lines themselves support: the coarse pitch, a multiple or a part of it.
+
+    A half (or a third) is the fundamental where steady lines stand at its odd multiples, however weak the
+    fundamental is; a bump of breath noise there is no line. A multiple is the fundamental where no other
+    line is steady. "Steady" is `line_chances`.
+    """
+    for _ in range(3):
+        settled = _part(samples, rate_hz, frequency_hz) or _multiple(samples, rate_hz, frequency_hz)
+        if settled is None:
+            break
+        frequency_hz = settled
+    return follow_guide(samples, rate_hz, frequency_hz).frequency_hz
+
+
+def _part(samples: Samples, rate_hz: int, frequency_hz: float) -> float | None:
+    """Return the half or the third of the pitch if steady lines stand between its multiples."""
+    guide = follow_guide(samples, rate_hz, frequency_hz)
+    whole = float(np.mean(np.abs(guide.phasors) ** 2, axis=0).sum())
+    for parts, orders in _PARTS.items():
+        if frequency_hz / parts < _LOWEST_FUNDAMENTAL_HZ:
+            continue
+        between = demodulate(samples, rate_hz, guide.frequency_hz, orders, _NARROW_PERIODS)
+        phase = np.interp(between.time_s, guide.time_s, _guide_phase(guide))
+        chances = line_chances(between, phase)
+        still = np.mean(between.phasors * np.exp(-1j * phase[:, None] * orders), axis=0)
+        loud = np.abs(still) ** 2 > whole * 10.0 ** (_LEAST_PART_DB / 10.0)
+        chances = np.sort(np.where(loud, chances, 1.0))
+        if chances[0] < _SURE or chances[1] < _LIKELY:
+            return guide.frequency_hz / parts
+    return None
+
+
+def _multiple(samples: Samples, rate_hz: int, frequency_hz: float) -> float | None:
+    """Return twice or three times the pitch if only those multiples are steady lines."""
+    guide = follow_guide(samples, rate_hz, frequency_hz)
+    tracks = demodulate(samples, rate_hz, guide.frequency_hz, orders_below_nyquist(rate_hz, frequency_hz, 9))
+    phase = _guide_phase(tracks)
+    power = np.mean(np.abs(tracks.phasors) ** 2, axis=0)
+    steady = (line_chances(tracks, phase) < _LIKELY) & (power > power.max() * 10.0 ** (_LEAST_PART_DB / 10.0))
+    for times in (2, 3):
+        on = tracks.orders % times == 0
+        if np.any(steady & on) and not np.any(steady & ~on):
+            return times * guide.frequency_hz
+    return None
+
+
+def follow_guide(samples: Samples, rate_hz: int, frequency_hz: float) -> Tracks:
+    """Return the phasors of the lowest four partials, turning at a frequency refined from themselves.
+
+    The coarse pitch may be off by about half a semitone.
+    """
+    orders = orders_below_nyquist(rate_hz, frequency_hz, _GUIDES)
+    coarse = demodulate(samples, rate_hz, frequency_hz, orders)
+    refined = frequency_hz + float(np.mean(np.diff(_guide_phase(coarse)))) / (2.0 * np.pi * coarse.hop_s)
+    return demodulate(samples, rate_hz, refined, orders)
+
+
+def phase_track(tracks: Tracks) -> PhaseTrack:
+    """Combine the phases of all partials into the fundamental's, each weighted by its own noise."""
+    phase = _guide_phase(tracks)
+    for _ in range(_ROUNDS):
+        errors, variances = _phase_errors(tracks, phase)
+        weights = tracks.orders**2 / variances
+        phase = phase + (errors / tracks.orders) @ weights / weights.sum()
+    noise = _noise_variances(tracks, phase)
+    return PhaseTrack(
+        frequency_hz=tracks.frequency_hz,
+        time_s=tracks.time_s,
+        phase_rad=phase,
+        noise_rad=float(1.0 / np.sqrt(np.sum(tracks.orders**2 / noise))),
+    )
+
+
+def _guide_phase(tracks: Tracks) -> Floats:
+    """Unwrap the phase of the strongest low partial, divided by its order."""
+    low = np.flatnonzero(tracks.orders <= _GUIDES)
+    strongest = low[np.argmax(np.mean(np.abs(tracks.phasors[:, low]) ** 2, axis=0))]
+    phasors = tracks.phasors[:, strongest]
+    steps = np.angle(phasors[1:] * phasors[:-1].conj()) / tracks.orders[strongest]
+    return np.concatenate([[0.0], np.cumsum(steps)])
+
+
+def _phase_errors(tracks: Tracks, phase: Floats) -> tuple[Floats, Floats]:
+    """Return each partial's phase against order × `phase` (frames, orders), and its variance (orders,)."""
+    still = tracks.phasors * np.exp(-1j * phase[:, None] * tracks.orders)
+    errors = np.angle(still * still.mean(axis=0).conj())
+    return errors, np.maximum(_noise_variances(tracks, phase), np.mean(errors**2, axis=0))
+
+
+def _noise_variances(tracks: Tracks, phase: Floats) -> Floats:
+    """Return the phase-noise variance of each partial, rad² (orders,): half the noise over the power."""
+    noise = noise_powers(tracks, _smoothed(phase))
+    power = np.mean(np.abs(tracks.phasors) ** 2, axis=0)
+    return np.asarray(0.5 * noise / np.maximum(power - noise, 1e-3 * power + 1e-30) + 1e-14)
+
+
+def _smoothed(phase: Floats) -> Floats:
+    """Smooth by the parabola-preserving mean of five, -3 12 17 12 -3 over 35 (Savitzky & Golay 1964)."""
+    padded = np.concatenate([2 * phase[0] - phase[2:0:-1], phase, 2 * phase[-1] - phase[-2:-4:-1]])
+    return np.convolve(padded, np.array([-3.0, 12.0, 17.0, 12.0, -3.0]) / 35.0, mode="valid")
+
+
+def measure_pitch(track: PhaseTrack) -> Pitch:
+    """Return the mean pitch over the track and how it moves: see the module's head for the method."""
+    time_s, phase, noise_rad = _thinned(track)
+    span_s = len(track.time_s) * track.hop_s
+    curve = _fit(time_s, phase, noise_rad, span_s, track.time_s)
+    deviation = CENTS * curve.rate_rad_per_s / (2.0 * np.pi * track.frequency_hz)
+    mean_hz = track.frequency_hz + curve.mean_rad_per_s / (2.0 * np.pi)
+    deviation = deviation - CENTS * np.log(mean_hz / track.frequency_hz)
+    mean_hz *= float(np.exp(-0.5 * np.mean((deviation / CENTS) ** 2)))
+    noise_cents = CENTS * curve.mean_noise_rad_per_s / (2.0 * np.pi * mean_hz)
+    trend, vibrato, rest = _movement(time_s, deviation, span_s)
+    wander_cents, freedom = _uncertainty_of_mean(rest) if curve.terms > 1 else (0.0, 1)
+    return Pitch(
+        frequency_hz=mean_hz,
+        uncertainty_cents=float(np.hypot(noise_cents, _STUDENT.get(freedom, 1.0) * wander_cents)),
+        noise_cents=noise_cents,
+        drift_cents=trend * span_s if curve.terms > 1 else 0.0,
+        vibrato=vibrato,
+        wander_cents=float(np.std(rest)),
+        time_s=time_s,
+        deviation_cents=deviation,
+        phase_rad=curve.phase_rad,
+    )
+
+
+def _thinned(track: PhaseTrack) -> tuple[Floats, Floats, float]:
+    """Average the track over about 20 ms, and tell the noise of each average."""
+    group = max(round(_POINT_S / track.hop_s), 1)
+    whole = len(track.phase_rad) // group * group
+    spare = (len(track.phase_rad) - whole) // 2
+    kept = slice(spare, spare + whole)
+    time_s = track.time_s[kept].reshape(-1, group).mean(axis=1)
+    phase = track.phase_rad[kept].reshape(-1, group).mean(axis=1)
+    variance = track.noise_rad**2 / group * (1.0 + 2.0 * OVERLAP_CORRELATION * (1.0 - 1.0 / group))
+    return time_s, phase, float(np.sqrt(variance))
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Curve:
+    """A curve through the phases: terms beside the constant, mean rate and its noise, rate, phase."""
+
+    terms: int
+    mean_rad_per_s: float
+    mean_noise_rad_per_s: float
+    rate_rad_per_s: Floats
+    phase_rad: Floats
+
+
+def _fit(time_s: Floats, phase: Floats, noise_rad: float, span_s: float, at_s: Floats) -> _Curve:
+    """Fit a line, a parabola, then cosines of ever shorter period, as many as the noise cannot explain.
+
+    The number of terms is the one that minimises Schwarz's criterion, n ln(RSS / n) + terms ln n (Ann.
+    Statist. 6, 461 (1978)), with the noise's own variance as the least that RSS / n may claim.
+    """
+    start, stop = time_s.mean() - 0.5 * span_s, time_s.mean() + 0.5 * span_s
+    most = int(min(_MOST_TERMS, 2.0 * _FASTEST_WANDER_HZ * span_s, 0.5 * len(time_s) - 1))
+    basis, slope = _basis(time_s, start, span_s, max(most, 1))
+    q, r = np.linalg.qr(basis)
+    along = q.T @ phase
+    left = np.maximum(phase @ phase - np.cumsum(along**2), 0.0)
+    terms = _enough_terms(left, len(phase), noise_rad)
+    used = terms + 1
+    unmix = np.linalg.inv(r[:used, :used])
+    weights = unmix @ along[:used]
+    ends, _ = _basis(np.array([start, stop]), start, span_s, terms)
+    pull = (ends[1] - ends[0]) @ unmix / span_s
+    noise = max(noise_rad**2, left[terms] / max(len(phase) - used, 1))
+    return _Curve(
+        terms=terms,
+        mean_rad_per_s=float(pull @ along[:used]),
+        mean_noise_rad_per_s=float(np.sqrt(noise) * np.linalg.norm(pull)),
+        rate_rad_per_s=slope[:, :used] @ weights,
+        phase_rad=_basis(at_s, start, span_s, terms)[0] @ weights,
+    )
+
+
+def _basis(time_s: Floats, start: float, span_s: float, terms: int) -> tuple[Floats, Floats]:
+    """Return constant, line, parabola, cosines (points, terms + 1), and their slopes per second."""
+    x = (time_s[:, None] - start) / span_s
+    order = np.arange(1, max(terms - 1, 1))
+    curves = [np.ones_like(x), x - 0.5, (x - 0.5) ** 2, np.cos(np.pi * order * x)]
+    slopes = [np.zeros_like(x), np.ones_like(x), 2.0 * (x - 0.5), -np.pi * order * np.sin(np.pi * order * x)]
+    return np.concatenate(curves, axis=1)[:, : terms + 1], np.concatenate(slopes, axis=1)[
+        :, : terms + 1
+    ] / span_s
+
+
+def _enough_terms(left: Floats, points: int, noise_rad: float) -> int:
+    """Return how many terms beside the constant minimise the criterion; at least the line."""
+    variance = np.maximum(left / points, noise_rad**2)
+    criterion = points * np.log(variance) + np.arange(len(left)) * (_CAUTION + np.log(points))
+    return int(1 + np.argmin(criterion[1:]))
+
+
+def _movement(time_s: Floats, deviation: Floats, span_s: float) -> tuple[float, Vibrato | None, Floats]:
+    """Part the pitch curve into a straight drift (cents/s), a vibrato, and the rest."""
+    centred = time_s - time_s.mean()
+    swing = _vibrato_rate(centred, deviation, span_s)
+    waves = [centred] if swing is None else [centred, np.cos(swing * centred), np.sin(swing * centred)]
+    design = np.stack([np.ones_like(centred), *waves], axis=1)
+    weights = np.linalg.lstsq(design, deviation, rcond=None)[0]
+    rest = deviation - design @ weights
+    if swing is None:
+        return float(weights[1]), None, rest
+    extent = float(np.hypot(weights[2], weights[3]))
+    share = extent**2 / 2.0 / (extent**2 / 2.0 + float(np.var(rest)) + 1e-12)
+    if extent < _LEAST_VIBRATO_CENTS or share < _VIBRATO_SHARE:
+        return _movement_without_vibrato(centred, deviation)
+    return float(weights[1]), Vibrato(rate_hz=float(swing / (2 * np.pi)), extent_cents=extent), rest
+
+
+def _movement_without_vibrato(centred: Floats, deviation: Floats) -> tuple[float, None, Floats]:
+    trend = float(centred @ deviation / max(float(centred @ centred), 1e-12))
+    return trend, None, deviation - deviation.mean() - trend * centred
+
+
+def _vibrato_rate(centred: Floats, deviation: Floats, span_s: float) -> float | None:
+    """Return the angular rate (rad/s) of the strongest swing in the vibrato range, if two cycles fit."""
+    rates = np.arange(max(_VIBRATO_HZ[0], 2.0 / span_s), _VIBRATO_HZ[1], 0.05 / max(span_s, 0.5))
+    if not len(rates) or np.std(deviation) < 1.0:
+        return None
+    _, _, level = _movement_without_vibrato(centred, deviation)
+    taper = np.cos(np.pi * centred / (span_s + 1e-9)) ** 2
+    power = np.abs(np.exp(-2j * np.pi * rates[:, None] * centred) @ (taper * level))
+    return float(2.0 * np.pi * rates[int(np.argmax(power))])
+
+
+def _uncertainty_of_mean(rest: Floats) -> tuple[float, int]:
+    """Return the standard uncertainty of the mean of a correlated series, and its degrees of freedom.
+
+    The variance of a mean is the series' spectrum at zero frequency over its length (Priestley, Spectral
+    Analysis and Time Series, 1981, eq. 5.3.5); the slowest cosine terms of the series estimate it, which is
+    the type A evaluation of JCGM 100:2008 (4.2) with the correlation taken into account (4.2.7).
+    """
+    points = len(rest)
+    order = np.arange(1, min(_SLOW_TERMS, points - 1) + 1)
+    waves = np.cos(np.pi * order[:, None] * (np.arange(points) + 0.5) / points)
+    strength = (waves @ rest) ** 2 * 2.0 / points
+    freedom = max(len(order) - 1, 1)
+    return float(np.sqrt(strength.sum() / freedom / points)), freedom
