@@ -25,11 +25,14 @@ MOST_PARTIALS = 32
 # Noise of neighbouring half-overlapped Hann frames correlates by 1/6 (sum of w(n) w(n + hop) over sum of w²).
 OVERLAP_CORRELATION = 1.0 / 6.0
 
-_NEIGHBOURS = 4
+_NEIGHBOURS = 8
+_FEWEST_FRAMES = 9
 _SMOOTHING = 9
 
 
 _CHANCE = 1e-4
+_PROMINENT = 2.0
+_CLEAR = 10.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -96,26 +99,41 @@ def _windowed_waves(rate_hz: int, frequency_hz: float, hop: int, orders: Floats)
     return np.concatenate([waves[:hop], waves[hop:]], axis=1).astype(np.float32)
 
 
-def line_chances(tracks: Tracks, phase_rad: Floats) -> Floats:
-    """Return for each order the probability that its line is chance, shape (orders,).
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Lines:
+    """What the spectrum of standing phasors says of each order, shapes (orders,).
+
+    `chance` is the probability that noise alone looks like this line; `prominence` the line's power over that
+    of the strongest other line in the order's whole band.
+    """
+
+    chance: Floats
+    prominence: Floats
+
+
+def lines(tracks: Tracks, phase_rad: Floats) -> Lines:
+    """Tell steady lines from noise in the phasors of each order.
 
     With order × `phase_rad` (frames,) taken out, a partial of the tone stands still: its power gathers in
-    the middle line of its phasors' spectrum, while noise is as strong in the lines next to it. Under noise
-    alone the ratio of that power to the mean of its 2n neighbours has the F distribution with 2 and 4n
-    degrees of freedom, whose upper tail is (1 + ratio / 2n)^-2n (Percival & Walden, Spectral Analysis for
-    Physical Applications, 1993, ch. 10: the F test for a line).
+    the middle of its phasors' spectrum (Hann-tapered, so that slow changes stay within two lines), while
+    noise is as strong in the 2n lines about it. Under noise alone the ratio of the two has the F distribution
+    with 2 and 4n degrees of freedom, whose upper tail is (1 + ratio / 2n)^-2n (Percival & Walden, Spectral
+    Analysis for Physical Applications, 1993, ch. 10); the taper leaves two thirds of the lines independent.
     """
     still = tracks.phasors * np.exp(-1j * phase_rad[:, None] * tracks.orders)
-    neighbours = min(_NEIGHBOURS, (len(still) - 1) // 2)
-    if neighbours < 1:
-        return np.ones(len(tracks.orders))
-    turn = (
-        np.arange(-neighbours, neighbours + 1)[:, None] * np.arange(len(still)) * (-2j * np.pi / len(still))
+    count = len(still)
+    if count < _FEWEST_FRAMES:
+        return Lines(chance=np.ones(still.shape[1]), prominence=np.zeros(still.shape[1]))
+    power = np.abs(np.fft.fft(still * np.hanning(count + 2)[1:-1, None], axis=0)) ** 2
+    middle = np.max(power[[-1, 0, 1]], axis=0)
+    beside = min(_NEIGHBOURS, (count - 1) // 2)
+    noise = np.concatenate([power[3 : beside + 1], power[count - beside : count - 2]])
+    freedom = len(noise) / 1.5
+    ratio = middle / np.maximum(noise.mean(axis=0), 1e-30)
+    return Lines(
+        chance=np.minimum(3.0 * (1.0 + ratio / freedom) ** -freedom, 1.0),
+        prominence=middle / np.maximum(power[3 : count - 2].max(axis=0), 1e-30),
     )
-    power = np.abs(np.exp(turn) @ still) ** 2
-    beside = np.delete(power, neighbours, axis=0).mean(axis=0)
-    ratio = power[neighbours] / np.maximum(beside, 1e-30)
-    return np.asarray((1.0 + ratio / (2.0 * neighbours)) ** (-2.0 * neighbours))
 
 
 def noise_powers(tracks: Tracks, phase_rad: Floats) -> Floats:
@@ -132,14 +150,20 @@ def noise_powers(tracks: Tracks, phase_rad: Floats) -> Floats:
 def amplitudes(tracks: Tracks, phase_rad: Floats) -> Floats:
     """Return the root-mean-square phasor of each order that is no chance, its noise taken off; 0 elsewhere.
 
+    Loudness that swings spreads a line over its neighbours, so one that leads its band and stands 10 dB
+    over what changes from frame to frame counts too.
+
     A window that is off the partial's frequency by x bins reads it lower by sinc(x) / (1 - x²), the Hann
     window's transform (Harris 1978); the phase's own slope tells x and the loss is made good.
     """
     offset = np.gradient(phase_rad) / (2.0 * np.pi) * 2.0
     bins = np.clip(offset[:, None] * tracks.orders, -0.9, 0.9)
     loss = np.sinc(bins) / (1.0 - bins**2)
-    power = np.mean(np.abs(tracks.phasors / loss) ** 2, axis=0) - noise_powers(tracks, phase_rad)
-    told = (line_chances(tracks, phase_rad) < _CHANCE) & (power > 0.0)
+    noise = noise_powers(tracks, phase_rad)
+    power = np.mean(np.abs(tracks.phasors / loss) ** 2, axis=0) - noise
+    line = lines(tracks, phase_rad)
+    swinging = (line.prominence > _PROMINENT) & (power > _CLEAR * noise)
+    told = ((line.chance < _CHANCE) | swinging) & (power > 0.0)
     return np.sqrt(np.where(told, power, 0.0))
 
 

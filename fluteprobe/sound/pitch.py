@@ -22,7 +22,7 @@ from fluteprobe.sound.partials import (
     Samples,
     Tracks,
     demodulate,
-    line_chances,
+    lines,
     noise_powers,
     orders_below_nyquist,
 )
@@ -32,8 +32,8 @@ Floats = NDArray[np.float64]
 CENTS = 1200.0 / np.log(2.0)
 
 _GUIDES = 4
-_PARTS = {2: np.array([0.5, 1.5, 2.5]), 3: np.array([1 / 3, 2 / 3, 4 / 3, 5 / 3])}
-_NARROW_PERIODS = 12
+_PARTS = {2: (8, np.array([0.5, 1.5, 2.5])), 3: (9, np.array([1 / 3, 2 / 3, 4 / 3, 5 / 3]))}
+_ALONE = 6.0
 _LEAST_PART_DB = -50.0
 _LOWEST_FUNDAMENTAL_HZ = 85.0
 _SURE = 1e-6
@@ -100,7 +100,7 @@ def settle_octave(samples: Samples, rate_hz: int, frequency_hz: float) -> float:
 
     A half (or a third) is the fundamental where steady lines stand at its odd multiples, however weak the
     fundamental is; a bump of breath noise there is no line. A multiple is the fundamental where no other
-    line is steady. "Steady" is `line_chances`.
+    line is steady. "Steady" is what `lines` tells from noise.
     """
     for _ in range(3):
         settled = _part(samples, rate_hz, frequency_hz) or _multiple(samples, rate_hz, frequency_hz)
@@ -114,16 +114,15 @@ def _part(samples: Samples, rate_hz: int, frequency_hz: float) -> float | None:
     """Return the half or the third of the pitch if steady lines stand between its multiples."""
     guide = follow_guide(samples, rate_hz, frequency_hz)
     whole = float(np.mean(np.abs(guide.phasors) ** 2, axis=0).sum())
-    for parts, orders in _PARTS.items():
+    for parts, (periods, orders) in _PARTS.items():
         if frequency_hz / parts < _LOWEST_FUNDAMENTAL_HZ:
             continue
-        between = demodulate(samples, rate_hz, guide.frequency_hz, orders, _NARROW_PERIODS)
+        between = demodulate(samples, rate_hz, guide.frequency_hz, orders, periods)
         phase = np.interp(between.time_s, guide.time_s, _guide_phase(guide))
-        chances = line_chances(between, phase)
-        still = np.mean(between.phasors * np.exp(-1j * phase[:, None] * orders), axis=0)
-        loud = np.abs(still) ** 2 > whole * 10.0 ** (_LEAST_PART_DB / 10.0)
-        chances = np.sort(np.where(loud, chances, 1.0))
-        if chances[0] < _SURE or chances[1] < _LIKELY:
+        loud = np.mean(np.abs(between.phasors) ** 2, axis=0) > whole * 10.0 ** (_LEAST_PART_DB / 10.0)
+        line = lines(between, phase)
+        chance = np.sort(np.where(loud & (line.prominence > _ALONE), line.chance, 1.0))
+        if chance[0] < _SURE or chance[1] < _LIKELY:
             return guide.frequency_hz / parts
     return None
 
@@ -134,7 +133,7 @@ def _multiple(samples: Samples, rate_hz: int, frequency_hz: float) -> float | No
     tracks = demodulate(samples, rate_hz, guide.frequency_hz, orders_below_nyquist(rate_hz, frequency_hz, 9))
     phase = _guide_phase(tracks)
     power = np.mean(np.abs(tracks.phasors) ** 2, axis=0)
-    steady = (line_chances(tracks, phase) < _LIKELY) & (power > power.max() * 10.0 ** (_LEAST_PART_DB / 10.0))
+    steady = (lines(tracks, phase).chance < _LIKELY) & (power > power.max() * 10.0 ** (_LEAST_PART_DB / 10.0))
     for times in (2, 3):
         on = tracks.orders % times == 0
         if np.any(steady & on) and not np.any(steady & ~on):
