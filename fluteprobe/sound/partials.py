@@ -31,8 +31,8 @@ _SMOOTHING = 9
 
 
 _CHANCE = 1e-4
-_PROMINENT = 2.0
-_CLEAR = 10.0
+_SWING_HZ = 12.0
+_GATHERED = 0.9
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -103,12 +103,14 @@ def _windowed_waves(rate_hz: int, frequency_hz: float, hop: int, orders: Floats)
 class Lines:
     """What the spectrum of standing phasors says of each order, shapes (orders,).
 
-    `chance` is the probability that noise alone looks like this line; `prominence` the line's power over that
-    of the strongest other line in the order's whole band.
+    `chance` is the probability that noise alone looks like this line; `prominence` the line's power over
+    that of the strongest other line in the order's whole band; `gathered` the share of the band's power that
+    lies within a vibrato's reach of the middle.
     """
 
     chance: Floats
     prominence: Floats
+    gathered: Floats
 
 
 def lines(tracks: Tracks, phase_rad: Floats) -> Lines:
@@ -123,16 +125,20 @@ def lines(tracks: Tracks, phase_rad: Floats) -> Lines:
     still = tracks.phasors * np.exp(-1j * phase_rad[:, None] * tracks.orders)
     count = len(still)
     if count < _FEWEST_FRAMES:
-        return Lines(chance=np.ones(still.shape[1]), prominence=np.zeros(still.shape[1]))
+        nothing = np.zeros(still.shape[1])
+        return Lines(chance=nothing + 1.0, prominence=nothing, gathered=nothing)
     power = np.abs(np.fft.fft(still * np.hanning(count + 2)[1:-1, None], axis=0)) ** 2
     middle = np.max(power[[-1, 0, 1]], axis=0)
     beside = min(_NEIGHBOURS, (count - 1) // 2)
     noise = np.concatenate([power[3 : beside + 1], power[count - beside : count - 2]])
     freedom = len(noise) / 1.5
+    reach = min(max(round(_SWING_HZ * count * tracks.hop_s), 3), (count - 1) // 2)
+    within = power[: reach + 1].sum(axis=0) + power[count - reach :].sum(axis=0)
     ratio = middle / np.maximum(noise.mean(axis=0), 1e-30)
     return Lines(
         chance=np.minimum(3.0 * (1.0 + ratio / freedom) ** -freedom, 1.0),
         prominence=middle / np.maximum(power[3 : count - 2].max(axis=0), 1e-30),
+        gathered=within / np.maximum(power.sum(axis=0), 1e-30),
     )
 
 
@@ -150,8 +156,8 @@ def noise_powers(tracks: Tracks, phase_rad: Floats) -> Floats:
 def amplitudes(tracks: Tracks, phase_rad: Floats) -> Floats:
     """Return the root-mean-square phasor of each order that is no chance, its noise taken off; 0 elsewhere.
 
-    Loudness that swings spreads a line over its neighbours, so one that leads its band and stands 10 dB
-    over what changes from frame to frame counts too.
+    Loudness that swings spreads a line over its neighbours, so one that holds nine tenths of its band's power
+    within a vibrato's reach counts too (a bump of breath noise would have to be under 4 Hz wide for that).
 
     A window that is off the partial's frequency by x bins reads it lower by sinc(x) / (1 - x²), the Hann
     window's transform (Harris 1978); the phase's own slope tells x and the loss is made good.
@@ -162,8 +168,7 @@ def amplitudes(tracks: Tracks, phase_rad: Floats) -> Floats:
     noise = noise_powers(tracks, phase_rad)
     power = np.mean(np.abs(tracks.phasors / loss) ** 2, axis=0) - noise
     line = lines(tracks, phase_rad)
-    swinging = (line.prominence > _PROMINENT) & (power > _CLEAR * noise)
-    told = ((line.chance < _CHANCE) | swinging) & (power > 0.0)
+    told = ((line.chance < _CHANCE) | (line.gathered > _GATHERED)) & (power > 0.0)
     return np.sqrt(np.where(told, power, 0.0))
 
 
