@@ -4,53 +4,30 @@ It reads like a page of music. A register is a row of upright flutes from low to
 one note, with its alternatives after it, best first. Below each flute its deviation stands on a scale (up is
 sharp, the band is the tolerance) and under that its numbers. Upper registers come first and are drawn larger.
 
-Conventions: lengths in millimetres, deviations in cents. Sizes shrink together until all fits on as few pages
-as it can; type never does.
+Conventions: lengths in millimetres, deviations in cents. Drawings shrink together until all fits on as few
+pages as it can; type never does.
 """
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
-from math import ceil
+from functools import partial
+from math import ceil, isfinite
 from pathlib import Path
 
 from matplotlib.figure import Figure
 
-from fluteprobe.pages.contents import (
-    SPEAKS_WELL,
-    Aside,
-    Contents,
-    Section,
-    cents_text,
-    chart_contents,
-    share_text,
-    uncertainty_text,
-)
-from fluteprobe.pages.glyphs import (
-    FluteSize,
-    Scale,
-    draw_deviation,
-    draw_flute,
-    draw_hole,
-    draw_scale,
-    draw_share,
-)
+from fluteprobe.pages.contents import Aside, Contents, chart_contents
+from fluteprobe.pages.glyphs import Scale, draw_deviation, draw_hole, draw_scale
 from fluteprobe.pages.paper import (
     ACCENT,
-    BODY,
     HAIRLINE,
-    HEADING,
-    INK,
     LABEL,
+    LEFT_MM,
     MARGIN_MM,
-    NOTE,
-    NOTE_SMALL,
-    NUMBER,
-    NUMBER_BOLD,
     QUIET,
     SMALL,
     SUBTITLE,
-    TITLE,
-    WORD,
+    TITLE_SIZES_PT,
     Page,
     Type,
     house_style,
@@ -60,33 +37,17 @@ from fluteprobe.pages.paper import (
     width_mm,
     wrapped,
 )
+from fluteprobe.pages.rows import LABEL_GAP_MM, Row, draw_row, look_for, rows_of
 from fluteprobe.survey import Entry, Survey
 
-GUTTER_MM = 17.0  # where the rows are named, left of the flutes
-WIDEST_COLUMN_MM = 21.0
 LEAST_SCALE = 2.5  # the deviation scale reaches at least this many tolerances
-WIDEST_SCALE_CENTS = 60.0
-STEPS = 20  # sizes tried between roomy and tight
+WIDEST_SCALE_CENTS = 60.0  # no deviation from the nearest note is beyond 50
+SIZES = 20  # tried between roomy and tight
+MOST_ASIDE_LINES = 12
 
-_FEET_MM = 4.0
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Look:
-    """How large one register is drawn."""
-
-    flute: FluteSize
-    scale: Scale
-    note: Type
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Column:
-    """One fingering on the page; `leads` where it is the first of its note."""
-
-    entry: Entry
-    note: str
-    leads: bool
+_LINE_MM = 3.6
+_FOOT_MM = 4.0
+_WIDEST_GAP_MM = 8.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -97,10 +58,13 @@ class Block:
     draw: Callable[[Page, float], None]
 
 
+Book = list[list[Block]]
+
+
 def write_chart(survey: Survey, target: Path, *, paper: str = "a4", tolerance_cents: float = 10.0) -> None:
     """Write a flute's chart as PDF, PNG or SVG, by the target's suffix.
 
-    A chart that needs a second page gets it: in the same PDF, or as a further picture whose name ends in `-2`.
+    A chart that needs a second page gets it: in the same PDF, or as a further picture with `-2` in its name.
 
     Raises
     ------
@@ -108,9 +72,8 @@ def write_chart(survey: Survey, target: Path, *, paper: str = "a4", tolerance_ce
         If the paper or the suffix is not known, or the tolerance is not above 0.
     """
     contents = chart_contents(survey, tolerance_cents)
-    figures = _drawn(contents, paper, tolerance_cents)
-    author = survey.flute.maker
-    save_pages(figures, target, title=f"{contents.title}: fingering chart", author=author)
+    figures = _figures(contents, paper, tolerance_cents)
+    save_pages(figures, target, title=f"{contents.title}: fingering chart", author=contents.maker)
 
 
 def chart_figures(survey: Survey, *, paper: str = "a4", tolerance_cents: float = 10.0) -> list[Figure]:
@@ -121,371 +84,170 @@ def chart_figures(survey: Survey, *, paper: str = "a4", tolerance_cents: float =
     ValueError
         If the paper is not known or the tolerance is not above 0.
     """
-    return _drawn(chart_contents(survey, tolerance_cents), paper, tolerance_cents)
+    return _figures(chart_contents(survey, tolerance_cents), paper, tolerance_cents)
 
 
 def scale_limit_cents(entries: Sequence[Entry], tolerance_cents: float) -> float:
-    """Return how far the deviation scale reaches: whole tens that hold every deviation with its uncertainty."""
-    widest = max((abs(entry.cents) + entry.uncertainty_cents for entry in entries), default=0.0)
+    """Return how far the deviation scale reaches: whole tens that hold each deviation and its uncertainty."""
+    reaches = [abs(entry.cents) + entry.uncertainty_cents for entry in entries]
+    widest = max((reach for reach in reaches if isfinite(reach)), default=0.0)
     return max(LEAST_SCALE * tolerance_cents, 10.0 * ceil(min(widest, WIDEST_SCALE_CENTS) / 10.0))
 
 
-def _drawn(contents: Contents, paper: str, tolerance_cents: float) -> list[Figure]:
+def _figures(contents: Contents, paper: str, tolerance_cents: float) -> list[Figure]:
     with house_style():
         book = _fitted(contents, paper, tolerance_cents)
-        return [_draw_page(contents, paper, k, book) for k in range(len(book))]
+        return [_draw_page(contents, paper, book, k) for k in range(len(book))]
 
 
-# --- fitting ---------------------------------------------------------------------------------------------
-
-
-def _fitted(contents: Contents, paper: str, tolerance_cents: float) -> list[list[Block]]:
-    """Return the blocks page by page: as few pages as can be, and on those the roomiest look."""
+def _fitted(contents: Contents, paper: str, tolerance_cents: float) -> Book:
+    """Return the blocks page by page: as few pages as can be, and on those as roomy as can be."""
     books = []
-    for step in range(STEPS + 1):
-        books.append(_book(contents, paper, tolerance_cents, roomy=1.0 - step / STEPS))
+    for step in range(SIZES + 1):
+        books.append(_book(contents, paper, tolerance_cents, 1.0 - step / SIZES))
         if len(books[-1]) == 1:
             break
-    fewest = min(len(book) for book in books)
-    return next(book for book in books if len(book) == fewest)
+    return min(books, key=len)
 
 
-def _book(contents: Contents, paper: str, tolerance_cents: float, *, roomy: float) -> list[list[Block]]:
+def _book(contents: Contents, paper: str, tolerance_cents: float, roomy: float) -> Book:
     width, height = paper_size_mm(paper)
-    limit = scale_limit_cents([e for s in contents.sections for e in s.entries], tolerance_cents)
-    blocks = [
-        block
-        for section in contents.sections
-        for block in _section_blocks(contents, section, _look(section, roomy, limit, tolerance_cents), width)
-    ]
-    blocks += _closing_blocks(contents, tolerance_cents, width - 2.0 * MARGIN_MM - GUTTER_MM)
-    pages: list[list[Block]] = [[]]
-    room = height - 2.0 * MARGIN_MM - _header(contents, first=True).height_mm - _FEET_MM
+    blocks = _blocks(contents, width - MARGIN_MM - LEFT_MM, tolerance_cents, roomy)
+    room = height - 2.0 * MARGIN_MM - _FOOT_MM
+    book: Book = [[]]
+    left = room - _header(contents, first=True).height_mm
     for block in blocks:
-        if pages[-1] and block.height_mm > room:
-            pages.append([])
-            room = height - 2.0 * MARGIN_MM - _header(contents, first=False).height_mm - _FEET_MM
-        pages[-1].append(block)
-        room -= block.height_mm
-    return pages
+        if book[-1] and block.height_mm > left:
+            book.append([])
+            left = room - _header(contents, first=False).height_mm
+        book[-1].append(block)
+        left -= block.height_mm
+    return book
 
 
-def _look(section: Section, roomy: float, limit_cents: float, tolerance_cents: float) -> Look:
-    upper = section.register > 1
-
-    def between(tight: float, wide: float) -> float:
-        return tight + roomy * (wide - tight)
-
-    hole = between(2.7, 4.8 if upper else 3.8)
-    flute = FluteSize(hole_mm=hole, pitch_mm=between(1.28, 1.42) * hole, hands_apart_mm=0.45 * hole)
-    scale = Scale(
-        height_mm=between(13.0, 29.0 if upper else 22.0),
-        limit_cents=limit_cents,
-        tolerance_cents=tolerance_cents,
-    )
-    return Look(flute=flute, scale=scale, note=NOTE if upper else NOTE_SMALL)
+def _blocks(contents: Contents, room_mm: float, tolerance_cents: float, roomy: float) -> list[Block]:
+    entries = [entry for section in contents.sections for entry in section.entries]
+    limit = scale_limit_cents(entries, tolerance_cents)
+    rows: list[Row] = []
+    for section in contents.sections:
+        look = look_for(section.register > 1, roomy, limit, tolerance_cents)
+        rows += rows_of(section, look, contents.holes, room_mm, contents.reference_label)
+    blocks = [Block(height_mm=row.height_mm, draw=partial(draw_row, row)) for row in rows]
+    return [*blocks, _closing(contents, room_mm, tolerance_cents)]
 
 
-def _rows(section: Section, most: int) -> list[list[Column]]:
-    """Return the section's columns in rows of about equal length, one note's alternatives together."""
-    rows = ceil(len(section.entries) / most)
-    even = ceil(len(section.entries) / max(rows, 1))
-    filled: list[list[Column]] = [[]]
-    for group in section.groups:
-        if filled[-1] and len(filled[-1]) + len(group.entries) > even:
-            filled.append([])
-        for k, entry in enumerate(group.entries):
-            if len(filled[-1]) == most:
-                filled.append([])
-            filled[-1].append(Column(entry=entry, note=group.note, leads=k == 0 or not filled[-1]))
-    return [row for row in filled if row]
-
-
-def _least_column_mm(holes: int) -> float:
-    return max(13.2, width_mm("x" * holes, WORD) + 2.0)
-
-
-# --- blocks ----------------------------------------------------------------------------------------------
-
-
-def _header(contents: Contents, *, first: bool) -> Block:
-    if not first:
-        return Block(height_mm=12.0, draw=lambda page, top: _draw_running_header(page, top, contents))
-    return Block(height_mm=28.0, draw=lambda page, top: _draw_header(page, top, contents))
-
-
-def _section_blocks(contents: Contents, section: Section, look: Look, width: float) -> list[Block]:
-    room = width - 2.0 * MARGIN_MM - GUTTER_MM
-    rows = _rows(section, int(room / _least_column_mm(contents.holes)))
-    if not rows:
-        return [Block(height_mm=14.0, draw=lambda page, top: _draw_heading(page, top, section))]
-    column = min(WIDEST_COLUMN_MM, room / max(len(row) for row in rows))
-    return [
-        _row_block(contents, section, row, look, column, heading=k == 0)
-        for k, row in enumerate(rows)
-    ]  # fmt: skip
-
-
-def _row_block(
-    contents: Contents,
-    section: Section,
-    row: Sequence[Column],
-    look: Look,
-    column_mm: float,
-    *,
-    heading: bool,
-) -> Block:
-    above = 9.0 if heading else 0.0
-    flute = look.flute.height_mm(contents.holes)
-    numbers = 17.5 + (3.8 if contents.reference_label else 0.0)
-    height = above + 8.5 + flute + 5.5 + look.scale.height_mm + numbers + 4.0
-
-    def draw(page: Page, top: float) -> None:
-        if heading:
-            _draw_heading(page, top, section)
-        _draw_row(page, top + above, contents, row, look, column_mm)
-
-    return Block(height_mm=height, draw=draw)
-
-
-def _closing_blocks(contents: Contents, tolerance_cents: float, room: float) -> list[Block]:
-    asides = [_aside_block(aside, room) for aside in contents.asides]
-    key = Block(height_mm=19.0, draw=lambda page, top: _draw_key(page, top, tolerance_cents))
-    lines = _condition_lines(contents, room)
-    depth = max((len(value) for _, value in lines), default=0)
-    conditions = Block(
-        height_mm=8.0 + 3.6 * depth, draw=lambda page, top: _draw_conditions(page, top, lines, room)
-    )
-    together = [*asides, key, conditions]
-    return [_stacked(together)]
-
-
-def _stacked(blocks: Sequence[Block]) -> Block:
-    def draw(page: Page, top: float) -> None:
-        for block in blocks:
-            block.draw(page, top)
-            top += block.height_mm
-
-    return Block(height_mm=sum(block.height_mm for block in blocks), draw=draw)
-
-
-def _aside_block(aside: Aside, room: float) -> Block:
-    lines = wrapped(aside.items, SMALL, room, between="  ·  ")
-
-    def draw(page: Page, top: float) -> None:
-        page.text(MARGIN_MM + GUTTER_MM - 2.5, top + 3.4, aside.label, LABEL, align="right", colour=QUIET)
-        for k, line in enumerate(lines):
-            page.text(MARGIN_MM + GUTTER_MM, top + 3.4 + 3.6 * k, line, SMALL)
-
-    return Block(height_mm=3.6 * len(lines) + 1.4, draw=draw)
-
-
-# --- drawing ---------------------------------------------------------------------------------------------
-
-
-def _draw_page(contents: Contents, paper: str, number: int, book: Sequence[Sequence[Block]]) -> Figure:
+def _draw_page(contents: Contents, paper: str, book: Book, number: int) -> Figure:
     page = Page(paper)
     header = _header(contents, first=number == 0)
     header.draw(page, MARGIN_MM)
-    blocks = book[number]
-    spare = (
-        page.bottom_mm - MARGIN_MM - _FEET_MM - header.height_mm - sum(block.height_mm for block in blocks)
-    )
-    last = number == len(book) - 1
-    gap = min(7.0, spare / max(1, len(blocks)))
-    top = MARGIN_MM + header.height_mm
+    blocks, last = book[number], number == len(book) - 1
+    top, bottom = MARGIN_MM + header.height_mm, page.bottom_mm - _FOOT_MM
+    spare = bottom - top - sum(block.height_mm for block in blocks)
     for block in blocks[:-1] if last else blocks:
         block.draw(page, top)
-        top += block.height_mm + gap
+        top += block.height_mm + min(_WIDEST_GAP_MM, spare / len(blocks))
     if last:
-        blocks[-1].draw(page, page.bottom_mm - _FEET_MM - blocks[-1].height_mm)
-    if len(book) > 1:
-        page.text(
-            page.right_mm,
-            page.bottom_mm,
-            f"page {number + 1} of {len(book)}",
-            LABEL,
-            align="right",
-            colour=QUIET,
-        )
-    page.text(
-        MARGIN_MM + GUTTER_MM, page.bottom_mm, "measured and drawn with fluteprobe", LABEL, colour=QUIET
-    )
+        blocks[-1].draw(page, bottom - blocks[-1].height_mm)
+    _draw_foot(page, number + 1, len(book))
     return page.figure
 
 
-def _draw_header(page: Page, top: float, contents: Contents) -> None:
-    left, room = MARGIN_MM + GUTTER_MM, page.right_mm - MARGIN_MM - GUTTER_MM
-    sizes = (TITLE.size_pt, 26.0, 22.0, 19.0, 16.0)
-    voice = next(
-        (v for v in (Type(size_pt=s) for s in sizes) if width_mm(contents.title, v) <= room),
-        Type(size_pt=sizes[-1]),
-    )
-    page.text(left, top + 10.0, shortened(contents.title, voice, room), voice)
-    summary = width_mm(contents.summary, SUBTITLE)
-    page.text(
-        left, top + 17.0, shortened(contents.subtitle, SUBTITLE, room - summary - 5.0), SUBTITLE, colour=QUIET
-    )
-    page.text(page.right_mm, top + 17.0, contents.summary, SUBTITLE, align="right", colour=QUIET)
-    page.line((left, top + 20.5), (left + 14.0, top + 20.5), colour=ACCENT, pt=1.6)
+def _draw_foot(page: Page, number: int, pages: int) -> None:
+    page.text(LEFT_MM, page.bottom_mm, "measured and drawn with fluteprobe", LABEL, colour=QUIET)
+    if pages > 1:
+        words = f"page {number} of {pages}"
+        page.text(page.right_mm, page.bottom_mm, words, LABEL, align="right", colour=QUIET)
 
 
-def _draw_running_header(page: Page, top: float, contents: Contents) -> None:
-    left = MARGIN_MM + GUTTER_MM
-    page.text(
-        left, top + 4.0, shortened(contents.title, SUBTITLE, page.right_mm - left), SUBTITLE, colour=QUIET
-    )
-    page.line((left, top + 6.5), (left + 14.0, top + 6.5), colour=ACCENT, pt=1.6)
+# --- the header --------------------------------------------------------------------------------------------
 
 
-def _draw_heading(page: Page, top: float, section: Section) -> None:
-    left = MARGIN_MM + GUTTER_MM
-    page.text(left, top + 5.0, section.title, HEADING)
-    page.text(left + width_mm(section.title, HEADING) + 4.0, top + 5.0, section.remark, LABEL, colour=QUIET)
+def _header(contents: Contents, *, first: bool) -> Block:
+    if first:
+        return Block(height_mm=26.0, draw=partial(_draw_header, contents))
+    return Block(height_mm=13.0, draw=partial(_draw_running_header, contents))
 
 
-def _draw_row(
-    page: Page, top: float, contents: Contents, row: Sequence[Column], look: Look, column_mm: float
-) -> None:
-    left = MARGIN_MM + GUTTER_MM
-    flute_top = top + 8.5
-    word_line = flute_top + look.flute.height_mm(contents.holes) + 3.2
-    middle = word_line + 2.3 + 0.5 * look.scale.height_mm
-    numbers_top = middle + 0.5 * look.scale.height_mm
-    draw_scale(page, left, left + column_mm * len(row), middle, look.scale)
-    _draw_scale_labels(page, middle, look.scale)
-    _draw_number_labels(page, numbers_top, contents)
-    _draw_note_rules(page, top, row, column_mm)
-    for k, column in enumerate(row):
-        x = left + (k + 0.5) * column_mm
-        _draw_name(page, x, top + 6.3, column, look)
-        draw_flute(page, x, flute_top, look.flute, column.entry.fingering)
-        page.text(x, word_line, str(column.entry.fingering), WORD, align="center", colour=QUIET)
-        draw_deviation(page, x, middle, look.scale, column.entry.cents, column.entry.uncertainty_cents)
-        _draw_numbers(page, x, numbers_top, contents, column.entry, look.scale.tolerance_cents)
+def _draw_header(contents: Contents, page: Page, top: float) -> None:
+    room = page.right_mm - LEFT_MM
+    voices = [Type(size_pt=size) for size in TITLE_SIZES_PT]
+    voice = next((voice for voice in voices if width_mm(contents.title, voice) <= room), voices[-1])
+    page.text(LEFT_MM, top + 9.0, shortened(contents.title, voice, room), voice)
+    beside = room - width_mm(contents.summary, SUBTITLE) - 5.0
+    page.text(LEFT_MM, top + 15.8, shortened(contents.subtitle, SUBTITLE, beside), SUBTITLE, colour=QUIET)
+    page.text(page.right_mm, top + 15.8, contents.summary, SUBTITLE, align="right", colour=QUIET)
+    page.line((LEFT_MM, top + 19.2), (LEFT_MM + 14.0, top + 19.2), colour=ACCENT, pt=1.6)
 
 
-def _draw_note_rules(page: Page, top: float, row: Sequence[Column], column_mm: float) -> None:
-    """Draw one rule over each note's columns."""
-    starts = [k for k, column in enumerate(row) if column.leads]
-    for start, end in zip(starts, [*starts[1:], len(row)], strict=True):
-        left = MARGIN_MM + GUTTER_MM
-        page.line((left + start * column_mm + 1.2, top), (left + end * column_mm - 1.2, top), colour=QUIET)
+def _draw_running_header(contents: Contents, page: Page, top: float) -> None:
+    words = shortened(contents.title, SUBTITLE, page.right_mm - LEFT_MM)
+    page.text(LEFT_MM, top + 3.5, words, SUBTITLE, colour=QUIET)
+    page.line((LEFT_MM, top + 6.0), (LEFT_MM + 14.0, top + 6.0), colour=ACCENT, pt=1.6)
 
 
-def _draw_name(page: Page, x: float, y: float, column: Column, look: Look) -> None:
-    if column.leads:
-        page.text(x, y, column.note, look.note, align="center")
-    else:
-        page.text(x, y, "or", SUBTITLE, align="center", colour=QUIET)
+# --- what closes the chart: lists, key and conditions ------------------------------------------------------
 
 
-def _draw_scale_labels(page: Page, middle: float, scale: Scale) -> None:
-    right, reach = MARGIN_MM + GUTTER_MM - 2.5, 0.5 * scale.height_mm
-    page.text(
-        right, middle - reach + 2.6, f"sharp  +{scale.limit_cents:g}", LABEL, align="right", colour=QUIET
-    )
-    page.text(right, middle + 1.0, f"±{scale.tolerance_cents:g}", LABEL, align="right", colour=QUIET)
-    page.text(
-        right, middle + reach - 0.8, f"flat  −{scale.limit_cents:g}", LABEL, align="right", colour=QUIET
-    )
+def _closing(contents: Contents, room_mm: float, tolerance_cents: float) -> Block:
+    key = Block(height_mm=16.5, draw=partial(_draw_key, tolerance_cents))
+    lists = [_listed(aside, room_mm) for aside in contents.asides]
+    conditions = _listed(Aside(label="conditions", items=contents.conditions), room_mm)
+    blocks = [*lists, key, conditions]
+    return Block(height_mm=sum(block.height_mm for block in blocks), draw=partial(_draw_stacked, blocks))
 
 
-def _draw_number_labels(page: Page, top: float, contents: Contents) -> None:
-    right = MARGIN_MM + GUTTER_MM - 2.5
-    for label, y in _number_lines(contents, top):
-        page.text(right, y, label, LABEL, align="right", colour=QUIET)
+def _draw_stacked(blocks: Sequence[Block], page: Page, top: float) -> None:
+    for block in blocks:
+        block.draw(page, top)
+        top += block.height_mm
 
 
-def _number_lines(contents: Contents, top: float) -> list[tuple[str, float]]:
-    """Return the rows of numbers under a scale: label and baseline."""
-    lines = [("cents", top + 4.4), ("uncertain", top + 8.1)]
-    if contents.reference_label:
-        lines.append((contents.reference_label, lines[-1][1] + 3.8))
-    lines.append(("speaks", lines[-1][1] + 4.2))
-    lines.append(("takes", lines[-1][1] + 5.0))
-    return lines
+def _listed(aside: Aside, room_mm: float) -> Block:
+    lines = wrapped(aside.items, SMALL, room_mm, between="  ·  ")
+    if len(lines) > MOST_ASIDE_LINES:
+        lines = [*lines[: MOST_ASIDE_LINES - 1], "… and more, in the measurements"]
+    return Block(height_mm=_LINE_MM * len(lines) + 1.2, draw=partial(_draw_list, aside.label, lines))
 
 
-def _draw_numbers(
-    page: Page, x: float, top: float, contents: Contents, entry: Entry, tolerance_cents: float
-) -> None:
-    ys = [y for _, y in _number_lines(contents, top)]
-    off = abs(entry.cents) > tolerance_cents
-    page.text(
-        x,
-        ys[0],
-        cents_text(entry.cents),
-        NUMBER_BOLD if off else NUMBER,
-        align="center",
-        colour=ACCENT if off else INK,
-    )
-    page.text(x, ys[1], uncertainty_text(entry.uncertainty_cents), SMALL, align="center", colour=QUIET)
-    if contents.reference_label:
-        page.text(x, ys[2], cents_text(entry.cents_at_reference), LABEL, align="center", colour=QUIET)
-    page.text(
-        x,
-        ys[-2],
-        share_text(entry.reliability),
-        SMALL,
-        align="center",
-        colour=INK if entry.reliability < SPEAKS_WELL else QUIET,
-    )
-    draw_share(page, x, ys[-2] + 1.3, 7.0, entry.reliability)
-    page.text(x, ys[-1], str(len(entry.takes)), SMALL, align="center", colour=QUIET)
+def _draw_list(label: str, lines: Sequence[str], page: Page, top: float) -> None:
+    page.text(LEFT_MM - LABEL_GAP_MM, top + 3.2, label, LABEL, align="right", colour=QUIET)
+    for k, line in enumerate(lines):
+        page.text(LEFT_MM, top + 3.2 + _LINE_MM * k, line, SMALL)
 
 
-def _draw_key(page: Page, top: float, tolerance_cents: float) -> None:
-    left = MARGIN_MM + GUTTER_MM
-    page.line((left, top + 1.5), (page.right_mm, top + 1.5), colour=HAIRLINE)
-    page.text(left - 2.5, top + 7.0, "key", LABEL, align="right", colour=QUIET)
-    _draw_hole_key(page, left, top + 6.0)
-    _draw_deviation_key(page, left, top + 12.5, tolerance_cents)
+def _draw_key(tolerance_cents: float, page: Page, top: float) -> None:
+    page.line((LEFT_MM, top + 1.5), (page.right_mm, top + 1.5), colour=HAIRLINE)
+    page.text(LEFT_MM - LABEL_GAP_MM, top + 6.3, "key", LABEL, align="right", colour=QUIET)
+    _draw_hole_key(page, LEFT_MM, top + 5.3)
+    _draw_deviation_key(page, LEFT_MM, top + 11.3, tolerance_cents)
+    page.line((LEFT_MM, top + 15.2), (page.right_mm, top + 15.2), colour=HAIRLINE)
 
 
 def _draw_hole_key(page: Page, x: float, y: float) -> None:
     for state, word in (("x", "closed"), ("o", "open"), ("h", "half-holed"), ("v", "vented, barely cracked")):
         draw_hole(page, x + 1.9, y, 3.4, state)
         x = _key_words(page, x + 6.0, y, f"{state}  {word}")
-    _key_words(page, x, y, "flutes stand mouth end up")
+    _key_words(page, x, y, "the mouth end is up")
 
 
 def _draw_deviation_key(page: Page, x: float, y: float, tolerance_cents: float) -> None:
     scale = Scale(height_mm=5.0, limit_cents=3.0 * tolerance_cents, tolerance_cents=tolerance_cents)
-    in_tune, sharp = 0.0, 2.2 * tolerance_cents
-    marks = ((in_tune, "within the band"), (sharp, "sharp of it"), (-sharp, "flat of it"))
-    for cents, words in marks:
+    within, off, wide = 0.0, 2.2 * tolerance_cents, 1.1 * tolerance_cents
+    marks = (
+        (within, 0.0, f"within {tolerance_cents:g} cents"),
+        (off, 0.0, "sharper"),
+        (-off, 0.0, "flatter"),
+        (within, wide, "its uncertainty (standard, k = 1)"),
+    )
+    for cents, uncertainty, words in marks:
         draw_scale(page, x, x + 3.8, y, scale)
-        draw_deviation(page, x + 1.9, y, scale, cents, 0.0)
+        draw_deviation(page, (x + 1.9, y), scale, cents, uncertainty)
         x = _key_words(page, x + 6.0, y, words)
-    draw_scale(page, x, x + 3.8, y, scale)
-    draw_deviation(page, x + 1.9, y, scale, 0.0, 1.1 * tolerance_cents)
-    x = _key_words(page, x + 6.0, y, "uncertainty (standard, k = 1)")
-    page.text(x, y + 0.95, "or", LABEL, colour=QUIET)
-    _key_words(page, x + 5.0, y, "the same note again, best first")
+    page.text(x, y + 1.0, "or", LABEL, colour=QUIET)
+    _key_words(page, x + 4.5, y, "for the same note, best first")
 
 
 def _key_words(page: Page, x: float, y: float, words: str) -> float:
     """Write beside a symbol whose middle is at y, and return where the next symbol starts."""
-    page.text(x, y + 0.95, words, SMALL)
-    return x + width_mm(words, SMALL) + 5.5
-
-
-def _condition_lines(contents: Contents, room: float) -> list[tuple[str, list[str]]]:
-    cell = room / max(len(contents.conditions), 1) - 3.0
-    lines = []
-    for label, value in contents.conditions:
-        parts = wrapped(value.split(), BODY, cell)
-        lines.append(
-            (label, parts if len(parts) <= 3 else [*parts[:2], shortened(parts[2] + " …", BODY, cell)])
-        )
-    return lines
-
-
-def _draw_conditions(page: Page, top: float, lines: Sequence[tuple[str, Sequence[str]]], room: float) -> None:
-    left = MARGIN_MM + GUTTER_MM
-    cell = room / max(len(lines), 1)
-    for k, (label, parts) in enumerate(lines):
-        page.text(left + k * cell, top + 3.6, label, LABEL, colour=QUIET)
-        for j, part in enumerate(parts):
-            page.text(left + k * cell, top + 7.4 + 3.6 * j, part, BODY)
+    page.text(x, y + 1.0, words, SMALL)
+    return x + width_mm(words, SMALL) + 5.0

@@ -12,11 +12,10 @@ from math import isfinite
 
 from fluteprobe.flute.register import Register
 from fluteprobe.flute.tuning import nearest_note
-from fluteprobe.pages.paper import clean
+from fluteprobe.pages.paper import MINUS, clean
 from fluteprobe.survey import Entry, Reading, Survey
 
 SPEAKS_WELL = 0.75  # share of takes from which a fingering counts as one to rely on
-MINUS = "−"
 
 _REGISTER_NAMES: dict[Register, str] = {1: "First register", 2: "Second register", 3: "Third register"}
 _SOUNDS = {"edge tone": "edge tone", "multiphonic": "several notes at once"}
@@ -55,15 +54,16 @@ class Aside:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Contents:
-    """The whole chart in words: title, registers, asides, and the conditions as pairs of label and value."""
+    """The whole chart in words: title, registers, asides, and the conditions."""
 
     title: str
     subtitle: str
     summary: str
+    maker: str | None
     holes: int
     sections: tuple[Section, ...]
     asides: tuple[Aside, ...]
-    conditions: tuple[tuple[str, str], ...]
+    conditions: tuple[str, ...]
     reference_label: str | None
 
 
@@ -82,6 +82,7 @@ def chart_contents(survey: Survey, tolerance_cents: float = 10.0) -> Contents:
         title=clean(survey.flute.name) or "A flute without a name",
         subtitle=_subtitle(survey),
         summary=_summary(survey.entries),
+        maker=clean(survey.flute.maker or "") or None,
         holes=survey.flute.holes,
         sections=tuple(_section(survey.entries, r, tolerance_cents) for r in (*heard, 2, 1)),
         asides=tuple(
@@ -179,6 +180,10 @@ def _summary(entries: Sequence[Entry]) -> str:
     return f"{notes} notes from {note_text(lowest.note)} to {note_text(highest.note)}"
 
 
+def _asides(survey: Survey) -> tuple[Aside, ...]:
+    return tuple(aside for aside in (_silent(survey), _undecided(survey), _unused(survey)) if aside.items)
+
+
 def _silent(survey: Survey) -> Aside:
     breath_only = [r for r in _outside(survey) if r.tone.kind == "breath only"]
     return Aside(label="did not speak", items=tuple(_with_breaths(breath_only)))
@@ -198,11 +203,11 @@ def _unused(survey: Survey) -> Aside:
 def _outside(survey: Survey) -> list[Reading]:
     """Return readings that stand behind no entry: of takes in none, or sounding with no register decided."""
     used = {take for entry in survey.entries for take in entry.takes}
-    return [
-        r
-        for r in survey.readings
-        if r.take not in used or (r.tone.kind != "breath only" and r.call.register is None)
-    ]
+
+    def stands_outside(r: Reading) -> bool:
+        return r.take not in used or (r.tone.kind != "breath only" and r.call.register is None)
+
+    return [r for r in survey.readings if stands_outside(r)]
 
 
 def _with_breaths(readings: Sequence[Reading]) -> list[str]:
@@ -225,18 +230,23 @@ def _word(r: Reading) -> str:
     return clean(r.take) if r.fingering is None else str(r.fingering)
 
 
-def _conditions(survey: Survey) -> tuple[tuple[str, str], ...]:
+def _conditions(survey: Survey) -> tuple[str, ...]:
     sitting = survey.sitting
-    pairs = (
-        ("A4", f"{sitting.a4_hz:g} Hz"),
+    facts = (
+        ("A4 =", f"{sitting.a4_hz:g} Hz"),
         ("air", _celsius(sitting.air_temperature_c)),
-        ("carried to", _celsius(sitting.reference_temperature_c)),
-        ("date", sitting.date),
-        ("player", sitting.player),
-        ("place", sitting.place),
+        ("carried to", _carried_to(survey)),
+        ("", sitting.date),
+        ("played by", sitting.player),
+        ("at", sitting.place),
         ("microphone", sitting.microphone),
     )
-    return tuple((label, clean(value)) for label, value in pairs if value and clean(value))
+    return tuple(clean(f"{label} {value}") for label, value in facts if value and clean(value))
+
+
+def _carried_to(survey: Survey) -> str | None:
+    reference = _celsius(survey.sitting.reference_temperature_c)
+    return None if reference is None else f"{reference}: an estimate"
 
 
 def _celsius(temperature_c: float | None) -> str | None:

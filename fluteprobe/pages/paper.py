@@ -1,7 +1,7 @@
 """Paper, type and colours of the house, and a page to draw on.
 
-Conventions: lengths in millimetres from the page's top left corner, x to the right and y downwards; type sizes
-and line widths in points. Text is set on its baseline and never read as markup. Nothing here changes
+Conventions: lengths in millimetres from the page's top left corner, x to the right and y downwards; type
+sizes and line widths in points. Text is set on its baseline and never read as markup. Nothing here changes
 matplotlib's settings outside `house_style()`; identical pages give identical bytes on the same versions.
 """
 
@@ -12,7 +12,7 @@ from contextlib import contextmanager
 from dataclasses import dataclass
 from functools import cache
 from pathlib import Path as File
-from typing import Literal
+from typing import Any, Literal
 
 import matplotlib as mpl
 from matplotlib.artist import Artist
@@ -28,7 +28,9 @@ from matplotlib.transforms import Affine2D
 MM_PER_INCH = 25.4
 MM_PER_POINT = MM_PER_INCH / 72.0
 PAPERS_MM = {"a4": (210.0, 297.0), "letter": (215.9, 279.4)}  # ISO 216; ANSI/ASME Y14.1 size A
-MARGIN_MM = 15.0
+MARGIN_MM = 13.0
+GUTTER_MM = 19.0  # left of the drawings, where their lines are named
+LEFT_MM = MARGIN_MM + GUTTER_MM
 SMALLEST_TYPE_PT = 7.0
 PNG_DOTS_PER_INCH = 200
 SUFFIXES = (".pdf", ".png", ".svg")
@@ -46,13 +48,15 @@ ACCENT = "#a02c1c"
 HAIR_PT = 0.4
 FINE_PT = 0.7
 FIRM_PT = 1.1
+MINUS = "−"
 
 Align = Literal["left", "center", "right"]
 
 _SERIF = ("STIXGeneral", "DejaVu Serif", "DejaVu Sans", "serif")
 _MONO = ("DejaVu Sans Mono", "DejaVu Sans", "monospace")
 _MISSING = "□"
-_SETTINGS = {
+_UNPRINTABLE = {"Cf", "Cn", "Co", "Cs"}  # direction marks, unassigned, private, half of a pair
+_SETTINGS: dict[Any, Any] = {
     "pdf.fonttype": 42,
     "svg.fonttype": "none",
     "svg.hashsalt": "fluteprobe",
@@ -65,7 +69,7 @@ _SETTINGS = {
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Type:
-    """A voice of the page: size in points, and its cut. `mono` is for words that are counted letter by letter."""
+    """A voice of the page: size in points, and its cut. `mono` is for words read letter by letter."""
 
     size_pt: float
     italic: bool = False
@@ -73,14 +77,14 @@ class Type:
     mono: bool = False
 
 
-TITLE = Type(size_pt=31.0)
+TITLE_SIZES_PT = (31.0, 26.0, 22.0, 19.0, 16.0)
 SUBTITLE = Type(size_pt=11.0, italic=True)
 HEADING = Type(size_pt=15.0, italic=True)
 NOTE = Type(size_pt=19.0)
 NOTE_SMALL = Type(size_pt=15.0)
+OR = Type(size_pt=12.0, italic=True)
 NUMBER = Type(size_pt=11.5)
 NUMBER_BOLD = Type(size_pt=11.5, bold=True)
-BODY = Type(size_pt=8.5)
 LABEL = Type(size_pt=8.0, italic=True)
 SMALL = Type(size_pt=8.0)
 WORD = Type(size_pt=SMALLEST_TYPE_PT, mono=True)
@@ -118,7 +122,7 @@ class Page:
         """Where the bottom margin begins."""
         return self.height_mm - MARGIN_MM
 
-    def text(
+    def text(  # noqa: PLR0913 - a word's place, voice and colour are all of them needed
         self, x_mm: float, y_mm: float, words: str, voice: Type, *, align: Align = "left", colour: str = INK
     ) -> None:
         """Set one line of text on the baseline y."""
@@ -140,25 +144,20 @@ class Page:
         """Draw a straight line."""
         self.path(Path([start_mm, end_mm]), edge=colour, pt=pt)
 
-    def box(self, x_mm: float, y_mm: float, width_mm: float, height_mm: float, colour: str) -> None:
-        """Fill a rectangle whose top left corner is (x, y)."""
-        corners = [
-            (x_mm, y_mm),
-            (x_mm + width_mm, y_mm),
-            (x_mm + width_mm, y_mm + height_mm),
-            (x_mm, y_mm + height_mm),
-        ]
-        self.path(Path([*corners, corners[0]], closed=True), fill=colour)
+    def box(self, corner_mm: tuple[float, float], size_mm: tuple[float, float], colour: str) -> None:
+        """Fill a rectangle, given its top left corner and its width and height."""
+        (left, top), (width, height) = corner_mm, size_mm
+        right, bottom = left + width, top + height
+        corners = [(left, top), (right, top), (right, bottom), (left, bottom), (left, top)]
+        self.path(Path(corners, closed=True), fill=colour)
 
     def path(self, outline: Path, *, fill: str = "none", edge: str = "none", pt: float = HAIR_PT) -> None:
         """Draw a path in page millimetres."""
-        line_width = 0.0 if edge == "none" else pt
-        self._add(
-            PathPatch(
-                outline, facecolor=fill, edgecolor=edge, linewidth=line_width, capstyle="butt", joinstyle="miter",
-                transform=self._transform,
-            )
-        )  # fmt: skip
+        patch = PathPatch(outline, facecolor=fill, edgecolor=edge, transform=self._transform)
+        patch.set_linewidth(0.0 if edge == "none" else pt)
+        patch.set_capstyle("butt")
+        patch.set_joinstyle("miter")
+        self._add(patch)
 
     def _add(self, artist: Artist) -> None:
         artist.set_clip_on(False)
@@ -181,9 +180,9 @@ def paper_size_mm(paper: str) -> tuple[float, float]:
 
 def clean(words: str) -> str:
     """Return text fit for one printed line: no control, direction or private characters, single spaces."""
-    kept = ("" if unicodedata.category(letter) in {"Cf", "Co", "Cn", "Cs"} else letter for letter in words)
-    spaced = "".join(" " if unicodedata.category(letter) in {"Cc", "Zl", "Zp"} else letter for letter in kept)
-    return " ".join(spaced.split())
+    kept = (letter for letter in words if unicodedata.category(letter) not in _UNPRINTABLE)
+    spaced = (" " if unicodedata.category(letter) == "Cc" else letter for letter in kept)
+    return " ".join("".join(spaced).split())
 
 
 def printable(words: str, voice: Type) -> tuple[str, tuple[str, ...]]:
@@ -222,7 +221,7 @@ def shortened(words: str, voice: Type, room_mm: float) -> str:
 
 
 def wrapped(parts: Sequence[str], voice: Type, room_mm: float, *, between: str = " ") -> list[str]:
-    """Return the parts as lines that fit the room, broken only between parts; one too wide for a line is cut."""
+    """Return the parts as lines that fit the room, broken only between parts; one too wide is cut."""
     lines: list[str] = []
     for part in parts:
         longer = f"{lines[-1]}{between}{part}" if lines else part
@@ -266,7 +265,7 @@ def save_pages(pages: Sequence[Figure], target: File, *, title: str, author: str
 
 
 def _save_pdf(pages: Sequence[Figure], target: File, title: str, author: str | None) -> None:
-    facts = {"Title": title, "Creator": "fluteprobe", "CreationDate": None}
+    facts: dict[str, Any] = {"Title": title, "Creator": "fluteprobe", "CreationDate": None}
     if author:
         facts["Author"] = author
     with _put_whole(target) as draft, PdfPages(draft, metadata=facts) as book:
@@ -277,7 +276,7 @@ def _save_pdf(pages: Sequence[Figure], target: File, title: str, author: str | N
 def _save_picture(page: Figure, target: File, title: str, author: str | None) -> None:
     kind = target.suffix.lower().lstrip(".")
     creator, by = ("Software", "Author") if kind == "png" else ("Creator", "Contributor")
-    facts = {"Title": title, creator: "fluteprobe"} | ({by: author} if author else {})
+    facts: dict[str, Any] = {"Title": title, creator: "fluteprobe"} | ({by: author} if author else {})
     if kind == "svg":
         facts["Date"] = None
     with _put_whole(target) as draft:
@@ -310,13 +309,11 @@ def _font(voice: Type, families: Sequence[str]) -> FontProperties:
 @cache
 def _home_of(letter: str, voice: Type, families: tuple[str, ...]) -> str | None:
     """Return the first family that has the letter, our own before the system's; None if there is none."""
-    own = next(
-        (family for family in families[:-1] if ord(letter) in _letters_of(family, voice.italic, voice.bold)),
-        None,
-    )
-    return own or next(
-        (family for family in _guests() if ord(letter) in _letters_of(family, False, False)), None
-    )
+    cut = (voice.italic, voice.bold)
+    for family in families[:-1]:
+        if ord(letter) in _letters_of(family, *cut):
+            return family
+    return next((family for family in _guests() if ord(letter) in _letters_of(family, *cut)), None)
 
 
 @cache
