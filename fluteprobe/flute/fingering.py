@@ -30,7 +30,9 @@ class Fingering:
 
     def __post_init__(self) -> None:
         if not 1 <= len(self.states) <= MAX_HOLES:
-            raise ValueError(f"a fingering has 1 to {MAX_HOLES} holes, not {len(self.states)}: {self.states!r}")
+            raise ValueError(
+                f"a fingering has 1 to {MAX_HOLES} holes, not {len(self.states)}: {self.states!r}"
+            )
         strange = sorted(set(self.states) - set(STATES))
         if strange:
             raise ValueError(f"{self.states!r} has {strange[0]!r}; a fingering is spelt with x, o, h and v")
