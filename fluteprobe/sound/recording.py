@@ -45,7 +45,7 @@ _SILENT_DECODERS = (b"RIFF", b"RF64", b"riff", b"FORM", b"caff", b"fLaC", b"OggS
 _COARSE_STEPS = {"PCM_S8": 2.0**-7, "PCM_U8": 2.0**-7, "ULAW": 2.0**-5, "ALAW": 2.0**-5}
 _FINEST_STEP = 2.0**-15
 _BYTES = {"PCM_S8": 1, "PCM_U8": 1, "PCM_16": 2, "PCM_24": 3, "PCM_32": 4, "FLOAT": 4, "DOUBLE": 8}
-_SIZE_LINE = re.compile(r"^ *(?:data|SSND|Data Size) *: *(\d+)", re.MULTILINE)
+_SIZE_LINE = re.compile(r"^ *(?:data|SSND|Data Size) *: *(\d+)", re.MULTILINE | re.IGNORECASE)
 _SIZE_SLACK = 32  # bytes of a chunk's own header that some formats count as data
 _UNKNOWN_SIZES = range(0x7FFF0000, 0x1_0000_0000)  # written by recorders that did not know the length yet
 _NOT_RECOGNISED = 1  # libsndfile's SF_ERR_UNRECOGNISED_FORMAT
@@ -156,10 +156,11 @@ def open_recording(path: str | os.PathLike[str]) -> Recording:
     path = Path(path)
     with _Decoder(path) as decoder:
         _check_rate(decoder)
-        frames = decoder.frames if _is_short(decoder, decoder.frames) else decoder.frames_within_reach()
-        if _is_short(decoder, frames):
-            return _keep(path, decoder, frames)
-        return _stream(path, decoder, frames)
+        if _is_short(decoder, decoder.frames):
+            return _keep(path, decoder, decoder.frames)
+        if decoder.reaches(decoder.frames - 1):
+            return _stream(path, decoder, decoder.frames)
+    return _open_damaged(path)
 
 
 def _reblocked(pieces: Iterator[Samples], length: int, overlap: int) -> Iterator[tuple[int, Samples]]:
@@ -172,6 +173,14 @@ def _reblocked(pieces: Iterator[Samples], length: int, overlap: int) -> Iterator
             held, start = held[step:], start + step
     if len(held) > overlap or start == 0:
         yield start, held
+
+
+def _open_damaged(path: Path) -> Recording:
+    """Open a long recording that cannot be decoded to its announced end, as far as it can."""
+    with _Decoder(path) as decoder:
+        frames = sum(len(piece) for piece in _salvaged(decoder, decoder.frames))
+    with _Decoder(path) as decoder:  # after a fault, libsndfile does not go back
+        return (_keep if _is_short(decoder, frames) else _stream)(path, decoder, frames)
 
 
 class _Decoder:
@@ -240,37 +249,20 @@ class _Decoder:
             or _announced_bytes(self._file.extra_info) > found * width + _SIZE_SLACK > _SIZE_SLACK
         )
 
-    def frames_within_reach(self) -> int:
-        """Return how many frames can be decoded; where the last one cannot, by decoding all that can."""
+    def reaches(self, frame: int) -> bool:
+        """Return whether a frame can be decoded."""
         if not self._file.seekable():
             raise RecordingError("too long for its kind of sound file; save it as WAV or FLAC")
         try:
-            self.seek(self.frames - 1)
-            reached = len(self.read(1)) == 1
+            self.seek(frame)
+            return len(self.read(1)) == 1
         except RecordingError:
-            reached = False
-        return self.frames if reached else self._count()
-
-    def _count(self) -> int:
-        return sum(len(piece) for piece in self.salvaged(self.frames))
-
-    def salvaged(self, frames: int) -> Iterator[Samples]:
-        """Yield small pieces from the start until the file ends, is damaged, or `frames` have been read."""
-        try:
-            self.seek(0)
-            while frames > 0 and len(piece := self.read(min(_SALVAGE_FRAMES, frames))):
-                yield piece
-                frames -= len(piece)
-        except RecordingError:
-            return
+            return False
 
 
 def _keep(path: Path, decoder: _Decoder, frames: int) -> Recording:
     """Decode the whole recording and keep the chosen channel."""
-    try:
-        samples = decoder.read(frames)
-    except RecordingError:
-        samples = _salvage(path, frames)
+    samples = _all_that_can_be_read(path, decoder, frames)
     found = len(samples)
     _check_length(found, decoder.rate_hz)
     bad = decoder.may_hold_nan and _has_bad_samples(samples)
@@ -398,10 +390,22 @@ def _resampled(pieces: Iterator[Samples], rate_hz: int, division: int) -> Iterat
     yield stream.resample_chunk(np.empty(0, np.float32), last=True)
 
 
-def _salvage(path: Path, frames: int) -> Samples:
-    with _Decoder(path) as decoder:
-        pieces = list(decoder.salvaged(frames))
-        return np.concatenate([np.empty((0, decoder.channels), np.float32), *pieces])
+def _all_that_can_be_read(path: Path, decoder: _Decoder, frames: int) -> Samples:
+    try:
+        return decoder.read(frames)
+    except RecordingError:
+        with _Decoder(path) as afresh:
+            return np.concatenate([np.empty((0, afresh.channels), np.float32), *_salvaged(afresh, frames)])
+
+
+def _salvaged(decoder: _Decoder, frames: int) -> Iterator[Samples]:
+    """Yield small pieces until the file ends, is damaged, or `frames` have been read."""
+    try:
+        while frames > 0 and len(piece := decoder.read(min(_SALVAGE_FRAMES, frames))):
+            yield piece
+            frames -= len(piece)
+    except RecordingError:
+        return
 
 
 def _probes(decoder: _Decoder, frames: int) -> Iterator[Samples]:
@@ -463,7 +467,7 @@ class _Hush:
     def __init__(self) -> None:
         self._lock = threading.Lock()
         self._holders = 0
-        self._saved: int | None = None
+        self._saved = -1
 
     def __enter__(self) -> None:
         with self._lock:
@@ -476,18 +480,14 @@ class _Hush:
     ) -> None:
         with self._lock:
             self._holders -= 1
-            if self._holders == 0 and self._saved is not None:
+            if self._holders == 0:
                 os.dup2(self._saved, 2)
                 os.close(self._saved)
-                self._saved = None
 
 
-def _swap_standard_error() -> int | None:
-    """Point descriptor 2 at nothing and return a copy of what it was; None where it is closed."""
-    try:
-        saved = os.dup(2)
-    except OSError:
-        return None
+def _swap_standard_error() -> int:
+    """Point descriptor 2 at nothing and return a copy of what it was."""
+    saved = os.dup(2)
     nowhere = os.open(os.devnull, os.O_WRONLY)
     os.dup2(nowhere, 2)
     os.close(nowhere)
