@@ -178,12 +178,10 @@ def sixty_entries() -> Survey:
 
 def all_off(cents: float) -> Survey:
     """Return a flute of which every note is off by the same number of cents, with a wide uncertainty."""
-    entries = tuple(
-        entry(f"{'x' * (6 - k)}{'o' * k}", 1, 62 + 2 * k, cents, uncertainty=15.0) for k in range(7)
-    ) + (entry("oxxxxx", 2, 74, cents, uncertainty=40.0),)
-    return Survey(
-        flute=FluteFacts(name="Coot", holes=6), sitting=Sitting(), readings=(), entries=entries, problems=()
-    )
+    first = [entry(f"{'x' * (6 - k)}{'o' * k}", 1, 62 + 2 * k, cents, uncertainty=15.0) for k in range(7)]
+    upper = entry("oxxxxx", 2, 74, cents, uncertainty=40.0)
+    flute = FluteFacts(name="Coot", holes=6)
+    return Survey(flute=flute, sitting=Sitting(), readings=(), entries=(*first, upper), problems=())
 
 
 def strange_words() -> Survey:

@@ -47,6 +47,7 @@ MOST_ASIDE_LINES = 12
 
 _LINE_MM = 3.6
 _FOOT_MM = 4.0
+_TITLE_LINE_MM = 8.0
 _WIDEST_GAP_MM = 8.0
 
 
@@ -112,14 +113,14 @@ def _fitted(contents: Contents, paper: str, tolerance_cents: float) -> Book:
 
 def _book(contents: Contents, paper: str, tolerance_cents: float, roomy: float) -> Book:
     width, height = paper_size_mm(paper)
-    blocks = _blocks(contents, width - MARGIN_MM - LEFT_MM, tolerance_cents, roomy)
-    room = height - 2.0 * MARGIN_MM - _FOOT_MM
+    across, room = width - MARGIN_MM - LEFT_MM, height - 2.0 * MARGIN_MM - _FOOT_MM
+    blocks = _blocks(contents, across, tolerance_cents, roomy)
     book: Book = [[]]
-    left = room - _header(contents, first=True).height_mm
+    left = room - _header(contents, first=True, room_mm=across).height_mm
     for block in blocks:
         if book[-1] and block.height_mm > left:
             book.append([])
-            left = room - _header(contents, first=False).height_mm
+            left = room - _header(contents, first=False, room_mm=across).height_mm
         book[-1].append(block)
         left -= block.height_mm
     return book
@@ -138,7 +139,7 @@ def _blocks(contents: Contents, room_mm: float, tolerance_cents: float, roomy: f
 
 def _draw_page(contents: Contents, paper: str, book: Book, number: int) -> Figure:
     page = Page(paper)
-    header = _header(contents, first=number == 0)
+    header = _header(contents, first=number == 0, room_mm=page.right_mm - LEFT_MM)
     header.draw(page, MARGIN_MM)
     blocks, last = book[number], number == len(book) - 1
     top, bottom = MARGIN_MM + header.height_mm, page.bottom_mm - _FOOT_MM
@@ -162,21 +163,32 @@ def _draw_foot(page: Page, number: int, pages: int) -> None:
 # --- the header --------------------------------------------------------------------------------------------
 
 
-def _header(contents: Contents, *, first: bool) -> Block:
-    if first:
-        return Block(height_mm=26.0, draw=partial(_draw_header, contents))
-    return Block(height_mm=13.0, draw=partial(_draw_running_header, contents))
+def _header(contents: Contents, *, first: bool, room_mm: float) -> Block:
+    if not first:
+        return Block(height_mm=13.0, draw=partial(_draw_running_header, contents))
+    lines, voice = _title_lines(contents.title, room_mm)
+    height = 26.0 + _TITLE_LINE_MM * (len(lines) - 1)
+    return Block(height_mm=height, draw=partial(_draw_header, contents, lines, voice))
 
 
-def _draw_header(contents: Contents, page: Page, top: float) -> None:
-    room = page.right_mm - LEFT_MM
+def _title_lines(title: str, room_mm: float) -> tuple[list[str], Type]:
+    """Return a name as one line as large as fits, or as two lines of the smallest size."""
     voices = [Type(size_pt=size) for size in TITLE_SIZES_PT]
-    voice = next((voice for voice in voices if width_mm(contents.title, voice) <= room), voices[-1])
-    page.text(LEFT_MM, top + 9.0, shortened(contents.title, voice, room), voice)
-    beside = room - width_mm(contents.summary, SUBTITLE) - 5.0
-    page.text(LEFT_MM, top + 15.8, shortened(contents.subtitle, SUBTITLE, beside), SUBTITLE, colour=QUIET)
-    page.text(page.right_mm, top + 15.8, contents.summary, SUBTITLE, align="right", colour=QUIET)
-    page.line((LEFT_MM, top + 19.2), (LEFT_MM + 14.0, top + 19.2), colour=ACCENT, pt=1.6)
+    fitting = next((voice for voice in voices if width_mm(title, voice) <= room_mm), None)
+    if fitting:
+        return [title], fitting
+    first, *rest = wrapped(title.split(), voices[-1], room_mm)
+    return [first, *([shortened(" ".join(rest), voices[-1], room_mm)] if rest else [])], voices[-1]
+
+
+def _draw_header(contents: Contents, lines: Sequence[str], voice: Type, page: Page, top: float) -> None:
+    for k, line in enumerate(lines):
+        page.text(LEFT_MM, top + 9.0 + _TITLE_LINE_MM * k, line, voice)
+    y = top + 15.8 + _TITLE_LINE_MM * (len(lines) - 1)
+    beside = page.right_mm - LEFT_MM - width_mm(contents.summary, SUBTITLE) - 5.0
+    page.text(LEFT_MM, y, shortened(contents.subtitle, SUBTITLE, beside), SUBTITLE, colour=QUIET)
+    page.text(page.right_mm, y, contents.summary, SUBTITLE, align="right", colour=QUIET)
+    page.line((LEFT_MM, y + 3.4), (LEFT_MM + 14.0, y + 3.4), colour=ACCENT, pt=1.6)
 
 
 def _draw_running_header(contents: Contents, page: Page, top: float) -> None:

@@ -11,7 +11,6 @@ from itertools import groupby
 from math import isfinite
 
 from fluteprobe.flute.register import Register
-from fluteprobe.flute.tuning import nearest_note
 from fluteprobe.pages.paper import MINUS, clean
 from fluteprobe.survey import Entry, Reading, Survey
 
@@ -139,22 +138,15 @@ def best_first(entries: Iterable[Entry], tolerance_cents: float) -> tuple[Entry,
 
 
 def _section(entries: Sequence[Entry], register: Register, tolerance_cents: float) -> Section:
-    def pitch(entry: Entry) -> tuple[int, str]:
-        return round(1200.0 * _octaves(entry) - entry.cents), entry.note
-
-    mine = sorted((entry for entry in entries if entry.register == register), key=pitch)
+    mine = [entry for entry in entries if entry.register == register]
+    mine.sort(key=lambda entry: entry.frequency_hz)  # which keeps the entries of one note together
     groups = tuple(
-        NoteGroup(note=note_text(key[1]), entries=best_first(group, tolerance_cents))
-        for key, group in groupby(mine, key=pitch)
+        NoteGroup(note=note_text(note), entries=best_first(group, tolerance_cents))
+        for note, group in groupby(mine, key=lambda entry: entry.note)
     )
     name = _REGISTER_NAMES[register]
     remark = _counted(len(mine), "fingering", len(groups)) if groups else "Nothing has been heard in it yet."
     return Section(register=register, title=name, groups=groups, remark=remark)
-
-
-def _octaves(entry: Entry) -> float:
-    note, cents = nearest_note(entry.frequency_hz)
-    return (note.midi + cents / 100.0) / 12.0
 
 
 def _counted(fingerings: int, word: str, notes: int) -> str:
@@ -173,11 +165,10 @@ def _subtitle(survey: Survey) -> str:
 def _summary(entries: Sequence[Entry]) -> str:
     if not entries:
         return ""
-    lowest, *_, highest = (ordered := sorted(entries, key=lambda entry: entry.frequency_hz)) * 2
+    ordered = sorted(entries, key=lambda entry: entry.frequency_hz)
+    lowest, highest = note_text(ordered[0].note), note_text(ordered[-1].note)
     notes = len({entry.note for entry in ordered})
-    if notes == 1:
-        return note_text(lowest.note)
-    return f"{notes} notes from {note_text(lowest.note)} to {note_text(highest.note)}"
+    return lowest if notes == 1 else f"{notes} notes from {lowest} to {highest}"
 
 
 def _asides(survey: Survey) -> tuple[Aside, ...]:

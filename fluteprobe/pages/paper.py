@@ -42,7 +42,7 @@ QUIET = "#675f55"
 HAIRLINE = "#b8afa2"
 WOOD = "#efe7d9"
 BAND = "#e6dfd2"
-WING = "#b9ae9d"
+WING = "#9a8f7f"
 ACCENT = "#a02c1c"
 
 HAIR_PT = 0.4
@@ -52,16 +52,15 @@ MINUS = "−"
 
 Align = Literal["left", "center", "right"]
 
-_SERIF = ("STIXGeneral", "DejaVu Serif", "DejaVu Sans", "serif")
-_MONO = ("DejaVu Sans Mono", "DejaVu Sans", "monospace")
+_FAMILIES = ("STIXGeneral", "DejaVu Serif", "DejaVu Sans", "serif")
 _MISSING = "□"
+_NO_GUESTS = ("STIX", "DejaVu", "Last Resort", "cm")
 _UNPRINTABLE = {"Cf", "Cn", "Co", "Cs"}  # direction marks, unassigned, private, half of a pair
 _SETTINGS: dict[Any, Any] = {
     "pdf.fonttype": 42,
     "svg.fonttype": "none",
     "svg.hashsalt": "fluteprobe",
     "font.serif": ["STIXGeneral", "DejaVu Serif"],
-    "font.monospace": ["DejaVu Sans Mono"],
     "text.hinting": "none",
     "path.simplify": False,
 }
@@ -69,15 +68,14 @@ _SETTINGS: dict[Any, Any] = {
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Type:
-    """A voice of the page: size in points, and its cut. `mono` is for words read letter by letter."""
+    """A voice of the page: size in points, and its cut."""
 
     size_pt: float
     italic: bool = False
     bold: bool = False
-    mono: bool = False
 
 
-TITLE_SIZES_PT = (31.0, 26.0, 22.0, 19.0, 16.0)
+TITLE_SIZES_PT = (31.0, 26.0, 22.0, 18.0)
 SUBTITLE = Type(size_pt=11.0, italic=True)
 HEADING = Type(size_pt=15.0, italic=True)
 NOTE = Type(size_pt=19.0)
@@ -87,7 +85,8 @@ NUMBER = Type(size_pt=11.5)
 NUMBER_BOLD = Type(size_pt=11.5, bold=True)
 LABEL = Type(size_pt=8.0, italic=True)
 SMALL = Type(size_pt=8.0)
-WORD = Type(size_pt=SMALLEST_TYPE_PT, mono=True)
+WORD = Type(size_pt=8.5)
+LONG_WORD = Type(size_pt=SMALLEST_TYPE_PT)  # of nine or ten holes
 
 
 class Page:
@@ -190,23 +189,22 @@ def printable(words: str, voice: Type) -> tuple[str, tuple[str, ...]]:
 
     Fonts of the system join only where our own lack a letter; what none has becomes an empty box.
     """
-    families = _MONO if voice.mono else _SERIF
     guests: list[str] = []
     letters = []
     for letter in words:
-        home = _home_of(letter, voice, families)
+        home = _home_of(letter, voice)
         letters.append(_MISSING if home is None else letter)
-        if home is not None and home not in families and home not in guests:
+        if home is not None and home not in _FAMILIES and home not in guests:
             guests.append(home)
-    return "".join(letters), (*families[:-1], *guests, families[-1])
+    return "".join(letters), (*_FAMILIES[:-1], *guests, _FAMILIES[-1])
 
 
 @cache
 def width_mm(words: str, voice: Type) -> float:
     """Return how wide a line of text is set."""
     words, families = printable(words, voice)
-    with house_style():
-        width, _, _ = text_to_path.get_text_width_height_descent(words, _font(voice, families), ismath=False)
+    named = _font(voice, families[:-1])  # without the last, generic one, which settings would have to resolve
+    width, _, _ = text_to_path.get_text_width_height_descent(words, named, ismath=False)
     return float(width) * MM_PER_POINT
 
 
@@ -307,10 +305,10 @@ def _font(voice: Type, families: Sequence[str]) -> FontProperties:
 
 
 @cache
-def _home_of(letter: str, voice: Type, families: tuple[str, ...]) -> str | None:
+def _home_of(letter: str, voice: Type) -> str | None:
     """Return the first family that has the letter, our own before the system's; None if there is none."""
     cut = (voice.italic, voice.bold)
-    for family in families[:-1]:
+    for family in _FAMILIES[:-1]:
         if ord(letter) in _letters_of(family, *cut):
             return family
     return next((family for family in _guests() if ord(letter) in _letters_of(family, *cut)), None)
@@ -318,9 +316,10 @@ def _home_of(letter: str, voice: Type, families: tuple[str, ...]) -> str | None:
 
 @cache
 def _guests() -> tuple[str, ...]:
-    """Return the system's TrueType families: the kind that a PDF takes in as it is."""
-    named = {face.name for face in fontManager.ttflist if face.fname.lower().endswith(".ttf")}
-    return tuple(sorted(name for name in named if "Last Resort" not in name and not name.startswith("STIX")))
+    """Return the system's plain TrueType families: the kind that a PDF takes in as it is."""
+    faces = (face for face in fontManager.ttflist if face.fname.lower().endswith(".ttf"))
+    plain = {face.name for face in faces if (face.style, face.weight) == ("normal", 400)}
+    return tuple(sorted(name for name in plain if not name.startswith(_NO_GUESTS)))
 
 
 @cache

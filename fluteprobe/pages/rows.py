@@ -23,6 +23,7 @@ from fluteprobe.pages.paper import (
     INK,
     LABEL,
     LEFT_MM,
+    LONG_WORD,
     MINUS,
     NOTE,
     NOTE_SMALL,
@@ -38,7 +39,8 @@ from fluteprobe.pages.paper import (
 )
 from fluteprobe.survey import Entry
 
-WIDEST_COLUMN_MM = 21.0
+NARROWEST_COLUMN_MM = 13.2
+WIDEST_COLUMN_MM = 22.0
 LABEL_GAP_MM = 2.5  # between the gutter's words and the row
 
 _HEADING_MM = 9.5
@@ -94,9 +96,9 @@ def look_for(upper: bool, roomy: float, limit_cents: float, tolerance_cents: flo
     def between(tight: float, wide: float) -> float:
         return tight + roomy * (wide - tight)
 
-    hole = between(2.8, 4.9) if upper else between(2.6, 3.9)
-    height = between(13.0, 27.0) if upper else between(12.0, 20.0)
-    flute = FluteSize(hole_mm=hole, pitch_mm=between(1.26, 1.36) * hole, hands_apart_mm=0.4 * hole)
+    hole = between(2.5, 5.4) if upper else between(2.4, 4.4)
+    height = between(11.0, 28.0) if upper else between(10.0, 22.0)
+    flute = FluteSize(hole_mm=hole, pitch_mm=between(1.22, 1.36) * hole, hands_apart_mm=0.4 * hole)
     scale = Scale(height_mm=height, limit_cents=limit_cents, tolerance_cents=tolerance_cents)
     return Look(flute=flute, scale=scale, note=NOTE if upper else NOTE_SMALL)
 
@@ -105,7 +107,7 @@ def rows_of(
     section: Section, look: Look, holes: int, room_mm: float, reference_label: str | None
 ) -> list[Row]:
     """Return a register as rows of about equal length that fit the room; without notes it is a heading."""
-    least = max(13.2, width_mm("x" * holes, WORD) + 2.0)
+    least = max(NARROWEST_COLUMN_MM, width_mm("x" * holes, _word_voice(holes)) + 0.9)
     parts = _shared_out(section, int(room_mm / least)) or [()]
     column = min(WIDEST_COLUMN_MM, room_mm / max(1, *(len(part) for part in parts)))
     return [
@@ -136,21 +138,31 @@ def draw_row(row: Row, page: Page, top_mm: float) -> None:
         entry = column.entry
         _draw_name(page, column, row.look.note, (x, top_mm + 6.4))
         draw_flute(page, x, flute_top, row.look.flute, entry.fingering)
-        page.text(x, word_line, str(entry.fingering), WORD, align="center", colour=QUIET)
+        page.text(x, word_line, str(entry.fingering), _word_voice(row.holes), align="center", colour=QUIET)
         draw_deviation(page, (x, middle), row.look.scale, entry.cents, entry.uncertainty_cents)
         _draw_numbers(page, row, entry, (x, numbers_top))
 
 
+def _word_voice(holes: int) -> Type:
+    return WORD if holes <= 8 else LONG_WORD
+
+
 def _shared_out(section: Section, most: int) -> list[tuple[Column, ...]]:
-    """Return the columns in rows of at most so many, about even, one note's alternatives together."""
+    """Return the columns in as few rows as can be, each of at most so many, and on those about even."""
     count = len(section.entries)
     even = ceil(count / max(1, ceil(count / most)))
+    tries = [_filled(section, length) for length in range(even, most + 1)]
+    return min(tries, key=len)
+
+
+def _filled(section: Section, length: int) -> list[tuple[Column, ...]]:
+    """Return the columns in rows of at most that length, one note's alternatives together where they fit."""
     filled: list[list[Column]] = [[]]
     for group in section.groups:
-        if len(filled[-1]) + len(group.entries) > even:
+        if len(filled[-1]) + len(group.entries) > length:
             filled.append([])
         for k, entry in enumerate(group.entries):
-            if len(filled[-1]) == most:
+            if len(filled[-1]) == length:
                 filled.append([])
             filled[-1].append(Column(entry=entry, note=group.note, leads=k == 0 or not filled[-1]))
     return [tuple(columns) for columns in filled if columns]

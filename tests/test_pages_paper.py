@@ -1,0 +1,140 @@
+"""Paper, type, colours and saving.
+
+Contrast is checked against WCAG 2.1 (W3C Recommendation, 2018), success criteria 1.4.3 (text, 4.5 to 1) and
+1.4.11 (graphical objects, 3 to 1), with that document's relative luminance: what holds there holds in grey.
+"""
+
+from pathlib import Path
+
+import matplotlib as mpl
+import pytest
+from matplotlib.backends.backend_pdf import PdfPages
+
+from fluteprobe.pages import paper
+from fluteprobe.pages.paper import (
+    ACCENT,
+    BAND,
+    INK,
+    LABEL,
+    QUIET,
+    SMALL,
+    SMALLEST_TYPE_PT,
+    TITLE_SIZES_PT,
+    WHITE,
+    WING,
+    WOOD,
+    Page,
+    Type,
+    clean,
+    house_style,
+    paper_size_mm,
+    printable,
+    save_pages,
+    shortened,
+    width_mm,
+    wrapped,
+)  # fmt: skip
+
+VOICES = [voice for voice in vars(paper).values() if isinstance(voice, Type)]
+
+
+def luminance(colour: str) -> float:
+    """Return WCAG 2.1's relative luminance of an sRGB colour."""
+    parts = [int(colour[k : k + 2], 16) / 255.0 for k in (1, 3, 5)]
+    linear = [part / 12.92 if part <= 0.03928 else ((part + 0.055) / 1.055) ** 2.4 for part in parts]
+    return 0.2126 * linear[0] + 0.7152 * linear[1] + 0.0722 * linear[2]
+
+
+def contrast(one: str, other: str) -> float:
+    """Return WCAG 2.1's contrast ratio of two colours."""
+    light, dark = sorted((luminance(one), luminance(other)), reverse=True)
+    return (light + 0.05) / (dark + 0.05)
+
+
+@pytest.mark.parametrize("colour", [INK, QUIET, ACCENT])
+def test_text_is_legible_in_grey(colour: str) -> None:
+    assert contrast(colour, WHITE) >= 4.5
+
+
+@pytest.mark.parametrize(
+    ("mark", "ground"), [(INK, WOOD), (INK, BAND), (ACCENT, BAND), (WING, WHITE), (INK, WING)]
+)
+def test_marks_stand_out_in_grey(mark: str, ground: str) -> None:
+    assert contrast(mark, ground) >= 3.0
+
+
+def test_no_voice_is_smaller_than_seven_points() -> None:
+    assert min(voice.size_pt for voice in VOICES) >= SMALLEST_TYPE_PT == 7.0
+    assert min(TITLE_SIZES_PT) >= SMALLEST_TYPE_PT
+
+
+def test_paper_sizes() -> None:
+    """ISO 216 A4 is 210 by 297 mm; US Letter is 8.5 by 11 in."""
+    assert paper_size_mm("A4") == (210.0, 297.0)
+    assert paper_size_mm("letter") == pytest.approx((8.5 * 25.4, 11.0 * 25.4))
+    with pytest.raises(ValueError, match="paper is one of a4, letter, not 'a5'"):
+        Page("a5")
+
+
+def test_clean_keeps_words_and_drops_what_cannot_be_printed() -> None:
+    assert clean(" two\n\twords\x00 \u202eright\ud800 ") == "two words right"
+    assert clean("Ωκεανός $x$") == "Ωκεανός $x$"
+
+
+def test_a_letter_that_no_font_has_becomes_a_box() -> None:
+    assert printable("a\U0001f9ff", SMALL)[0] in {
+        "a□",
+        "a\U0001f9ff",
+    }  # the latter where the system can draw it
+    assert printable("\U000e0fff", SMALL)[0] == "□"
+    assert printable("C♯5 −12 ± 20 °C …", LABEL)[0] == "C♯5 −12 ± 20 °C …"
+
+
+def test_shortened_and_wrapped_text_fits() -> None:
+    words = "a long line of words that does not fit into so little room"
+    assert shortened(words, SMALL, 200.0) == words
+    assert shortened(words, SMALL, 30.0).endswith("…")
+    assert width_mm(shortened(words, SMALL, 30.0), SMALL) <= 30.0
+    lines = wrapped(words.split(), SMALL, 30.0)
+    assert " ".join(lines) == words
+    assert all(width_mm(line, SMALL) <= 30.0 for line in lines)
+    assert wrapped([], SMALL, 30.0) == []
+
+
+def test_settings_come_back_as_they_were() -> None:
+    before = {name: mpl.rcParams[name] for name in mpl.rcParams if name != "backend"}
+    with house_style():
+        assert mpl.rcParams["pdf.fonttype"] == 42
+    assert {name: mpl.rcParams[name] for name in before} == before
+
+
+def test_an_unknown_suffix_is_refused_before_anything_is_written(tmp_path: Path) -> None:
+    with pytest.raises(ValueError, match=r"chart\.docx: a page is written as \.pdf, \.png or \.svg"):
+        save_pages([Page().figure], tmp_path / "chart.docx", title="", author=None)
+    assert list(tmp_path.iterdir()) == []
+
+
+@pytest.mark.parametrize("suffix", [".pdf", ".png", ".svg"])
+def test_a_failure_leaves_the_old_file_and_no_draft(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, suffix: str
+) -> None:
+    target = tmp_path / f"chart{suffix}"
+    target.write_text("old")
+
+    def fail(*_: object, **__: object) -> None:
+        raise OSError("disk full")
+
+    page = Page()
+    monkeypatch.setattr(page.figure, "savefig", fail)
+    monkeypatch.setattr(PdfPages, "savefig", fail)
+    with pytest.raises(OSError, match="disk full"):
+        save_pages([page.figure], target, title="x", author=None)
+    assert target.read_text() == "old"
+    assert [file.name for file in tmp_path.iterdir()] == [target.name]
+
+
+def test_further_pages_of_a_picture_are_numbered(tmp_path: Path) -> None:
+    target = tmp_path / "chart.svg"
+    written = save_pages([Page().figure, Page().figure], target, title="x", author="y")
+    assert [file.name for file in written] == ["chart.svg", "chart-2.svg"]
+    assert all(file.exists() for file in written)
