@@ -39,7 +39,8 @@ _TAKE_NAME = re.compile(
 )
 _NO_SOUND = frozenset({
     ".txt", ".md", ".rtf", ".odt", ".doc", ".docx", ".pdf", ".html", ".xml", ".json", ".toml", ".csv", ".ods",
-    ".xlsx", ".png", ".jpg", ".jpeg", ".gif", ".heic", ".svg", ".ini", ".db", ".log", ".bak", ".tmp", ".py", ".zip",
+    ".xlsx", ".png", ".jpg", ".jpeg", ".gif", ".heic", ".svg", ".ini", ".db", ".log", ".bak", ".tmp", ".py",
+    ".zip",
 })  # fmt: skip
 
 
@@ -140,6 +141,7 @@ def create_session(folder: Path | str, flute: FluteFacts, sitting: Sitting | Non
         If there is a flute.toml already, a value is out of range or the folder cannot be written.
     """
     folder = Path(folder)
+    require_new(folder)
     facts = folder / FACTS_FILE
     text = facts_text(flute, sitting or Sitting())
     _read_facts(text, FACTS_FILE, flute.name)
@@ -148,14 +150,17 @@ def create_session(folder: Path | str, flute: FluteFacts, sitting: Sitting | Non
         with facts.open("x", encoding="utf-8", newline="\n") as file:
             file.write(text)
     except FileExistsError as error:
-        if Path(error.filename or facts).name == FACTS_FILE:
-            raise SessionError(
-                f"{printable(str(facts))} exists already: edit it, or choose another folder"
-            ) from None
         raise SessionError(f"{printable(str(error.filename))} is a file, where a folder is needed") from None
     except (OSError, ValueError) as error:
         raise SessionError(f"{printable(str(folder))} cannot be made: {_reason(error)}") from None
     return facts
+
+
+def require_new(folder: Path) -> None:
+    """Raise a SessionError if a folder holds a flute.toml already."""
+    facts = folder / FACTS_FILE
+    if os.path.lexists(facts):
+        raise SessionError(f"{printable(str(facts))} exists already: edit it, or choose another folder")
 
 
 def parse_take_name(name: str) -> tuple[Fingering, Breath, int]:
@@ -621,7 +626,7 @@ _EXAMPLES: Mapping[str, str] = MappingProxyType(
         "wood": '"cherry"',
         "bore_mm": "19.0            # inner diameter of the sounding tube",
         "wall_mm": "4.0             # thickness of the wall at the holes",
-        "holes_mm": "[[105.0, 9.0], [127.0, 9.5]]   # distance from the sound hole, diameter; top hole first",
+        "holes_mm": "[[105.0, 9.0], [127.0, 9.5]]   # distance from the sound hole, diameter; top first",
         "air_temperature_c": "22.0",
         "reference_temperature_c": "20.0   # pitches are carried to it, as an estimate",
         "date": "2026-01-31",
@@ -636,7 +641,7 @@ def facts_text(flute: FluteFacts, sitting: Sitting) -> str:
     """Return a commented flute.toml; what is not known stands there as a comment to fill in."""
     return "\n".join(
         [
-            f"# One flute, one sitting. Put the recordings into {TAKES_FOLDER}/, each named by its fingering,",
+            f"# One flute, one sitting. Put recordings into {TAKES_FOLDER}/, each named by its fingering,",
             "# the hole nearest the mouth first: x closed, o open, h half-holed, v vented (barely cracked).",
             f"#   {TAKES_FOLDER}/{_example(flute.holes)}.wav          blown normally",
             f"#   {TAKES_FOLDER}/{_example(flute.holes)}-over-2.wav   overblown, second recording (or -soft)",
