@@ -29,6 +29,7 @@ from fluteprobe.pages.paper import (
 )
 
 FINGER_TO_HOLE = 2.2  # the finger's pad is drawn this much wider than the hole
+WEDGE_MM = 2.3  # the width of a wedge
 WING_MM = 2.1  # half the width of the box that shows an uncertainty
 LEFT_OPEN = {"h": 0.5, "v": 0.22}  # share of the hole's width that the finger leaves
 
@@ -109,8 +110,9 @@ def draw_deviation(
     high, low = (middle_mm - scale.rise_mm(cents + side * uncertainty_cents) for side in (1.0, -1.0))
     if isfinite(uncertainty_cents):
         page.box((x_mm - WING_MM, high), (2.0 * WING_MM, low - high), WING)
-    page.line((x_mm, middle_mm), (x_mm, y), colour=colour, pt=FIRM_PT)
-    page.path(_wedge(x_mm, y, 1.15, up=cents > 0) if off else _disc(x_mm, y, 0.8), fill=colour)
+    stem_end = y + (0.5 * WEDGE_MM if cents > 0.0 else -0.5 * WEDGE_MM) if off else y
+    page.line((x_mm, middle_mm), (x_mm, stem_end), colour=colour, pt=FIRM_PT)
+    page.path(_wedge(x_mm, y, up=cents > 0.0) if off else _disc(x_mm, y, 0.8), fill=colour)
 
 
 def draw_scale(page: Page, left_mm: float, right_mm: float, middle_mm: float, scale: Scale) -> None:
@@ -135,11 +137,12 @@ def draw_note(page: Page, at_mm: tuple[float, float], note: str, voice: Type) ->
     small, smaller = (replace(voice, size_pt=share * voice.size_pt) for share in (0.76, 0.62))
     parts = [(note[:1], voice, 0.0), (accidental, small, 0.09), (octave, smaller, 0.0)]
     widths = [width_mm(words, cut) if words else 0.0 for words, cut, _ in parts]
-    x = at_mm[0] - 0.5 * sum(widths)
+    apart = 0.006 * voice.size_pt
+    x = at_mm[0] - 0.5 * (sum(widths) + apart * (2 if accidental else 1))
     for (words, cut, raised), width in zip(parts, widths, strict=True):
         if words:
             page.text(x, at_mm[1] - raised * voice.size_pt * MM_PER_POINT, words, cut)
-        x += width
+        x += width + apart if words else 0.0
 
 
 def _disc(x_mm: float, y_mm: float, radius_mm: float) -> Path:
@@ -172,10 +175,8 @@ def _body(x_mm: float, top_mm: float, bottom_mm: float, half_mm: float) -> Path:
     return Path(points, [Path.MOVETO, go, bend, bend, go, bend, bend, go, Path.CLOSEPOLY])
 
 
-def _wedge(x_mm: float, y_mm: float, half_mm: float, *, up: bool) -> Path:
+def _wedge(x_mm: float, y_mm: float, *, up: bool) -> Path:
     """Return a wedge whose point is at the deviation itself."""
-    back = 1.7 * half_mm if up else -1.7 * half_mm
-    return Path(
-        [(x_mm, y_mm), (x_mm + half_mm, y_mm + back), (x_mm - half_mm, y_mm + back), (x_mm, y_mm)],
-        closed=True,
-    )
+    half, back = 0.5 * WEDGE_MM, y_mm + (0.85 * WEDGE_MM if up else -0.85 * WEDGE_MM)
+    tip, right, left = (x_mm, y_mm), (x_mm + half, back), (x_mm - half, back)
+    return Path([tip, right, left, tip], closed=True)
