@@ -9,6 +9,7 @@ A window of a whole number of periods puts the other partials on its zeros (Harr
 (1978)): each partial is read undisturbed, and its noise is that of a band of 1.5 / (frame length).
 """
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -158,18 +159,23 @@ def amplitudes(tracks: Tracks, phase_rad: Floats) -> Floats:
 
     Loudness that swings spreads a line over its neighbours, so one that holds nine tenths of its band's power
     within a vibrato's reach counts too (a bump of breath noise would have to be under 4 Hz wide for that).
-
-    A window that is off the partial's frequency by x bins reads it lower by sinc(x) / (1 - x²), the Hann
-    window's transform (Harris 1978); the phase's own slope tells x and the loss is made good.
     """
-    offset = np.gradient(phase_rad) / (2.0 * np.pi) * 2.0
-    bins = np.clip(offset[:, None] * tracks.orders, -0.9, 0.9)
-    loss = np.sinc(bins) / (1.0 - bins**2)
     noise = noise_powers(tracks, phase_rad)
-    power = np.mean(np.abs(tracks.phasors / loss) ** 2, axis=0) - noise
+    power = np.mean(np.abs(tracks.phasors / _window_loss(tracks, phase_rad)) ** 2, axis=0) - noise
     line = lines(tracks, phase_rad)
     told = ((line.chance < _CHANCE) | (line.gathered > _GATHERED)) & (power > 0.0)
     return np.sqrt(np.where(told, power, 0.0))
+
+
+def _window_loss(tracks: Tracks, phase_rad: Floats) -> Floats:
+    """Return by what each frame reads each order too low, shape (frames, orders).
+
+    A Hann window that is off a partial's frequency by x lines reads sinc(x) / (1 - x²) of it (Harris 1978);
+    the slope of the phase tells x, a frame being two hops long.
+    """
+    offset = np.gradient(phase_rad) / np.pi
+    off = np.clip(offset[:, None] * tracks.orders, -0.9, 0.9)
+    return np.asarray(np.sinc(off) / (1.0 - off**2))
 
 
 def partials_of(frequency_hz: float, orders: Floats, amplitude: Floats) -> tuple[Partial, ...]:
@@ -184,23 +190,27 @@ def partials_of(frequency_hz: float, orders: Floats, amplitude: Floats) -> tuple
     )
 
 
-def without_partials(samples: Samples, tracks: Tracks, phase_rad: Floats, told: NDArray[np.bool_]) -> Samples:
+def without_partials(
+    samples: Samples, tracks: Tracks, phase: Callable[[Floats], Floats], told: NDArray[np.bool_]
+) -> Samples:
     """Take the told partials out of the samples, with their slow changes of frequency and amplitude.
 
-    The phasors, still against `phase_rad` (frames,), are smoothed over about twenty periods, so that only
-    noise very near a partial goes with it, and put together in frames of two periods: what the linear
-    change within a frame leaves behind then falls on the partials' own places and on no other.
+    The phasors, still against the fundamental's `phase` (rad at given s), are smoothed over about twenty
+    periods, so that only noise very near a partial goes with it, and put together in frames of one period:
+    what is left by a pitch that moves within a frame falls on other partials' places, never between them.
     """
     if not told.any():
         return samples
     orders = tracks.orders[told]
-    hop = max(round(tracks.rate_hz / tracks.frequency_hz), 2)
+    hop = max(round(0.5 * tracks.rate_hz / tracks.frequency_hz), 2)
     count = len(samples) // hop + 2
     at = np.arange(count) * hop / tracks.rate_hz
-    still = _smoothed(tracks.phasors[:, told] * np.exp(-1j * phase_rad[:, None] * orders))
+    seen = phase(tracks.time_s)
+    steady = tracks.phasors / _window_loss(tracks, seen)
+    still = _smoothed(steady[:, told] * np.exp(-1j * seen[:, None] * orders))
     now = _interpolated(at, tracks.time_s, still)
-    phase = _extended(at, tracks.time_s, phase_rad) + 2.0 * np.pi * tracks.frequency_hz * at
-    phasors = now * np.exp(1j * phase[:, None] * orders)
+    turned = phase(at) + 2.0 * np.pi * tracks.frequency_hz * at
+    phasors = now * np.exp(1j * turned[:, None] * orders)
     model = (np.concatenate([phasors.real, phasors.imag], axis=1).astype(np.float32)) @ _waves(
         tracks, hop, orders
     )
@@ -234,12 +244,3 @@ def _interpolated(at: Floats, time_s: Floats, values: Complexes) -> Complexes:
     left = np.minimum(place.astype(np.intp), len(time_s) - 2)
     part = (place - left)[:, None]
     return np.asarray((1.0 - part) * values[left] + part * values[left + 1])
-
-
-def _extended(at: Floats, time_s: Floats, phase_rad: Floats) -> Floats:
-    """Interpolate the phase, and carry it on past either end at the slope that it has there."""
-    step = time_s[1] - time_s[0]
-    inside = np.interp(at, time_s, phase_rad)
-    before = np.minimum(at - time_s[0], 0.0) * (phase_rad[1] - phase_rad[0]) / step
-    after = np.maximum(at - time_s[-1], 0.0) * (phase_rad[-1] - phase_rad[-2]) / step
-    return np.asarray(inside + before + after)

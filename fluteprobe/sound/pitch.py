@@ -80,8 +80,8 @@ class Pitch:
     """The mean pitch of a tone over its span, how it moves, and how sure the mean is (k = 1).
 
     `deviation_cents` is the smoothed pitch against the mean at `time_s` (points,); None of the movement is
-    in it where the phases lie on a line. `noise_cents` is the uncertainty from noise alone, and
-    `phase_rad` (frames,) the smoothed phase at the frames of the track.
+    in it where the phases lie on a line. `noise_cents` is the uncertainty from noise alone; `curve` is the
+    smoothed phase.
     """
 
     frequency_hz: float
@@ -92,7 +92,7 @@ class Pitch:
     wander_cents: float
     time_s: Floats
     deviation_cents: Floats
-    phase_rad: Floats
+    curve: "PhaseCurve"
 
 
 def settle_octave(samples: Samples, rate_hz: int, frequency_hz: float) -> float:
@@ -199,89 +199,128 @@ def _smoothed(phase: Floats) -> Floats:
 
 def measure_pitch(track: PhaseTrack) -> Pitch:
     """Return the mean pitch over the track and how it moves: see the module's head for the method."""
-    time_s, phase, noise_rad = _thinned(track)
-    span_s = len(track.time_s) * track.hop_s
-    curve = _fit(time_s, phase, noise_rad, span_s, track.time_s)
-    deviation = CENTS * curve.rate_rad_per_s / (2.0 * np.pi * track.frequency_hz)
+    points = _thinned(track)
+    curve = _fit(points, len(track.time_s) * track.hop_s)
+    deviation = CENTS * curve.slope(points.time_s) / (2.0 * np.pi * track.frequency_hz)
     mean_hz = track.frequency_hz + curve.mean_rad_per_s / (2.0 * np.pi)
     deviation = deviation - CENTS * np.log(mean_hz / track.frequency_hz)
     mean_hz *= float(np.exp(-0.5 * np.mean((deviation / CENTS) ** 2)))
     noise_cents = CENTS * curve.mean_noise_rad_per_s / (2.0 * np.pi * mean_hz)
-    trend, vibrato, rest = _movement(time_s, deviation, span_s)
-    wander_cents, freedom = _uncertainty_of_mean(rest) if curve.terms > 1 else (0.0, 1)
+    moving = curve.terms > 1
+    trend, vibrato, rest = _movement(points.time_s, deviation, curve.span_s)
+    wander_cents, freedom = _uncertainty_of_mean(rest) if moving else (0.0, 1)
     return Pitch(
         frequency_hz=mean_hz,
         uncertainty_cents=float(np.hypot(noise_cents, _STUDENT.get(freedom, 1.0) * wander_cents)),
         noise_cents=noise_cents,
-        drift_cents=trend * span_s if curve.terms > 1 else 0.0,
+        drift_cents=trend * curve.span_s if moving else 0.0,
         vibrato=vibrato,
         wander_cents=float(np.std(rest)),
-        time_s=time_s,
+        time_s=points.time_s,
         deviation_cents=deviation,
-        phase_rad=curve.phase_rad,
+        curve=curve,
     )
 
 
-def _thinned(track: PhaseTrack) -> tuple[Floats, Floats, float]:
-    """Average the track over about 20 ms, and tell the noise of each average."""
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Points:
+    """Phases averaged over `group_s` of frames that are `frame_s` long, and the noise of each average."""
+
+    time_s: Floats
+    phase_rad: Floats
+    noise_rad: float
+    group_s: float
+    frame_s: float
+
+
+def _thinned(track: PhaseTrack) -> _Points:
+    """Average the track over about 20 ms."""
     group = max(round(_POINT_S / track.hop_s), 1)
     whole = len(track.phase_rad) // group * group
     spare = (len(track.phase_rad) - whole) // 2
     kept = slice(spare, spare + whole)
-    time_s = track.time_s[kept].reshape(-1, group).mean(axis=1)
-    phase = track.phase_rad[kept].reshape(-1, group).mean(axis=1)
     variance = track.noise_rad**2 / group * (1.0 + 2.0 * OVERLAP_CORRELATION * (1.0 - 1.0 / group))
-    return time_s, phase, float(np.sqrt(variance))
+    return _Points(
+        time_s=track.time_s[kept].reshape(-1, group).mean(axis=1),
+        phase_rad=track.phase_rad[kept].reshape(-1, group).mean(axis=1),
+        noise_rad=float(np.sqrt(variance)),
+        group_s=group * track.hop_s,
+        frame_s=2.0 * track.hop_s,
+    )
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
-class _Curve:
-    """A curve through the phases: terms beside the constant, mean rate and its noise, rate, phase."""
+class PhaseCurve:
+    """The phase as a line, a parabola and cosines over a span; `terms` counts them beside the constant."""
 
-    terms: int
+    start_s: float
+    span_s: float
+    weights: Floats
     mean_rad_per_s: float
     mean_noise_rad_per_s: float
-    rate_rad_per_s: Floats
-    phase_rad: Floats
+
+    @property
+    def terms(self) -> int:
+        """How many terms there are beside the constant; 1 is a straight line, a tone that does not move."""
+        return len(self.weights) - 1
+
+    def phase(self, time_s: Floats) -> Floats:
+        """Return the phase in radians at the given times, shape (points,)."""
+        return np.asarray(_basis((time_s - self.start_s) / self.span_s, self.terms) @ self.weights)
+
+    def slope(self, time_s: Floats) -> Floats:
+        """Return the phase's slope in rad/s at the given times, shape (points,)."""
+        slopes = _basis_slopes((time_s - self.start_s) / self.span_s, self.terms)
+        return np.asarray(slopes @ self.weights) / self.span_s
 
 
-def _fit(time_s: Floats, phase: Floats, noise_rad: float, span_s: float, at_s: Floats) -> _Curve:
+def _fit(points: _Points, span_s: float) -> PhaseCurve:
     """Fit a line, a parabola, then cosines of ever shorter period, as many as the noise cannot explain.
 
     The number of terms is the one that minimises Schwarz's criterion, n ln(RSS / n) + terms ln n (Ann.
     Statist. 6, 461 (1978)), with the noise's own variance as the least that RSS / n may claim.
     """
-    start, stop = time_s.mean() - 0.5 * span_s, time_s.mean() + 0.5 * span_s
-    most = int(min(_MOST_TERMS, 2.0 * _FASTEST_WANDER_HZ * span_s, 0.5 * len(time_s) - 1))
-    basis, slope = _basis(time_s, start, span_s, max(most, 1))
-    q, r = np.linalg.qr(basis)
-    along = q.T @ phase
-    left = np.maximum(phase @ phase - np.cumsum(along**2), 0.0)
-    terms = _enough_terms(left, len(phase), noise_rad)
-    used = terms + 1
+    count = len(points.time_s)
+    start_s = float(points.time_s.mean()) - 0.5 * span_s
+    most = max(int(min(_MOST_TERMS, 2.0 * _FASTEST_WANDER_HZ * span_s, 0.5 * count - 1)), 1)
+    seen = _basis((points.time_s - start_s) / span_s, most) * _smear(points, span_s, most)
+    q, r = np.linalg.qr(seen)
+    along = q.T @ points.phase_rad
+    left = np.maximum(points.phase_rad @ points.phase_rad - np.cumsum(along**2), 0.0)
+    used = _enough_terms(left, count, points.noise_rad) + 1
     unmix = np.linalg.inv(r[:used, :used])
-    weights = unmix @ along[:used]
-    ends, _ = _basis(np.array([start, stop]), start, span_s, terms)
+    ends = _basis(np.array([0.0, 1.0]), used - 1)
     pull = (ends[1] - ends[0]) @ unmix / span_s
-    noise = max(noise_rad**2, left[terms] / max(len(phase) - used, 1))
-    return _Curve(
-        terms=terms,
+    noise = max(points.noise_rad**2, left[used - 1] / max(count - used, 1))
+    return PhaseCurve(
+        start_s=start_s,
+        span_s=span_s,
+        weights=unmix @ along[:used],
         mean_rad_per_s=float(pull @ along[:used]),
         mean_noise_rad_per_s=float(np.sqrt(noise) * np.linalg.norm(pull)),
-        rate_rad_per_s=slope[:, :used] @ weights,
-        phase_rad=_basis(at_s, start, span_s, terms)[0] @ weights,
     )
 
 
-def _basis(time_s: Floats, start: float, span_s: float, terms: int) -> tuple[Floats, Floats]:
-    """Return constant, line, parabola, cosines (points, terms + 1), and their slopes per second."""
-    x = (time_s[:, None] - start) / span_s
-    order = np.arange(1, max(terms - 1, 1))
-    curves = [np.ones_like(x), x - 0.5, (x - 0.5) ** 2, np.cos(np.pi * order * x)]
-    slopes = [np.zeros_like(x), np.ones_like(x), 2.0 * (x - 0.5), -np.pi * order * np.sin(np.pi * order * x)]
-    return np.concatenate(curves, axis=1)[:, : terms + 1], np.concatenate(slopes, axis=1)[
-        :, : terms + 1
-    ] / span_s
+def _basis(x: Floats, terms: int) -> Floats:
+    """Return constant, line, parabola and cosines at x from 0 to 1, shape (points, terms + 1)."""
+    x = x[:, None]
+    waves = np.cos(np.pi * np.arange(1, terms - 1) * x)
+    return np.concatenate([np.ones_like(x), x - 0.5, (x - 0.5) ** 2, waves], axis=1)[:, : terms + 1]
+
+
+def _basis_slopes(x: Floats, terms: int) -> Floats:
+    """Return the slopes of `_basis` in x."""
+    x, order = x[:, None], np.pi * np.arange(1, terms - 1)
+    waves = -order * np.sin(order * x)
+    return np.concatenate([np.zeros_like(x), np.ones_like(x), 2.0 * (x - 0.5), waves], axis=1)[:, : terms + 1]
+
+
+def _smear(points: _Points, span_s: float, terms: int) -> Floats:
+    """Return what averaging leaves of each term: over a group evenly, over a frame by a Hann window."""
+    cycles = 0.5 * np.arange(1, terms - 1) / span_s
+    over_frame = cycles * points.frame_s
+    hann = np.sinc(over_frame) / (1.0 - over_frame**2)
+    return np.concatenate([np.ones(3), np.sinc(cycles * points.group_s) * hann])[: terms + 1]
 
 
 def _enough_terms(left: Floats, points: int, noise_rad: float) -> int:

@@ -10,6 +10,7 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
+from fluteprobe.sound.breath import BreathResonance, breath_resonances, noise_spectrum
 from fluteprobe.sound.partials import (
     Partial,
     Samples,
@@ -43,15 +44,6 @@ _UNSTEADY_CENTS = 12.0
 _DRIFTING_CENTS = 20.0
 _QUIET_DB = -50.0
 _CLIPPED_SHARE = 0.001
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class BreathResonance:
-    """A bump that a resonance of the air column leaves in the breath noise."""
-
-    frequency_hz: float
-    width_hz: float
-    prominence_db: float
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -183,8 +175,8 @@ def _measured(samples: Samples, rate_hz: int, frequency_hz: float) -> _Measured:
         samples, rate_hz, guide.frequency_hz, orders_below_nyquist(rate_hz, guide.frequency_hz)
     )
     pitch = measure_pitch(phase_track(tracks))
-    amplitude = amplitudes(tracks, pitch.phase_rad)
-    residual = without_partials(samples, tracks, pitch.phase_rad, amplitude > 0.0)
+    amplitude = amplitudes(tracks, pitch.curve.phase(tracks.time_s))
+    residual = without_partials(samples, tracks, pitch.curve.phase, amplitude > 0.0)
     return _Measured(pitch=pitch, orders=tracks.orders, amplitude=amplitude, residual=residual)
 
 
@@ -208,12 +200,17 @@ def _tone(recording: Recording, steady: _Steady, samples: Samples, measured: _Me
         uncertainty_cents=pitch.uncertainty_cents if sounds else None,
         partials=partials_of(pitch.frequency_hz, measured.orders, measured.amplitude),
         harmonic_to_noise_db=hnr if sounds else None,
-        breath_resonances=(),
+        breath_resonances=_resonances(measured, rate) if sounds else (),
         drift_cents=pitch.drift_cents if sounds else None,
         vibrato=pitch.vibrato if sounds else None,
         attack_ms=steady.attack_ms,
         cautions=tuple(_cautions(samples, rate, pitch, hnr)) if sounds else (),
     )
+
+
+def _resonances(measured: _Measured, rate_hz: int) -> tuple[BreathResonance, ...]:
+    spectrum = noise_spectrum(measured.residual, rate_hz, measured.pitch.frequency_hz)
+    return () if spectrum is None else breath_resonances(spectrum, measured.pitch.frequency_hz)
 
 
 def _cautions(samples: Samples, rate_hz: int, pitch: Pitch, harmonic_to_noise_db: float) -> list[str]:

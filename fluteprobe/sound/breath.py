@@ -1,0 +1,174 @@
+"""Breath resonances: the bumps that the resonances of the air column leave in the breath noise.
+
+Conventions: frequencies in Hz, widths at half power in Hz, prominence in dB over the noise to either side.
+`chance` is the probability that noise without a bump shows one as strong anywhere in the searched range.
+
+The jet's turbulence excites every resonance of the air column, also those that do not sound. With the
+partials taken out, the residual's spectrum is averaged over overlapping segments (Welch, IEEE Trans. Audio
+Electroacoust. 15, 70 (1967)); such an average is chi-square distributed, so that the ratio of a few lines to
+those on either side has an F distribution. What stands out by more than chance is a bump, unless it is
+
+- within reach of a partial, where what was left of the partial could be taken for it;
+- a steady line (mains hum, a whistle): its power hardly changes from segment to segment, while that of
+  noise changes as much as its mean;
+- as strong in the room when nobody plays, where the recording has such a pause.
+
+A fan's hiss and a room's reverberation have no bumps as narrow as an air column's.
+"""
+
+from dataclasses import dataclass
+from math import erfc, sqrt
+
+import numpy as np
+from numpy.typing import NDArray
+
+Floats = NDArray[np.float64]
+Samples = NDArray[np.float32]
+
+PERIODS = 44
+LOWEST_RATIO = 0.2
+HIGHEST_RATIO = 3.6
+PARTIAL_REACH = 0.1
+CHANCE = 0.01
+
+_FEWEST_SEGMENTS = 4
+_LOWEST_HZ = 70.0
+_PEAK = 1
+_GAP = 2
+_FLANK = 5
+_FEWEST_LINES = 3
+# Hann-windowed segments with half overlap: 0.95 of them count as independent; of neighbouring lines, 1 / 1.5
+# (Percival & Walden, Spectral Analysis for Physical Applications, 1993, secs. 6.10, 6.17).
+_SEGMENT_SHARE = 0.95
+_LINE_SHARE = 1.0 / 1.5
+_STEADY_CV = 0.35
+_ROOM_MARGIN = 2.0
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class BreathResonance:
+    """A bump that a resonance of the air column leaves in the breath noise."""
+
+    frequency_hz: float
+    width_hz: float
+    prominence_db: float
+    chance: float = 0.0
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class NoiseSpectrum:
+    """An averaged spectrum of breath noise: lines (lines,) at `line_hz` apart, from `segments` segments."""
+
+    line_hz: float
+    power: Floats
+    variation: Floats
+    segments: int
+
+
+def noise_spectrum(residual: Samples, rate_hz: int, frequency_hz: float) -> NoiseSpectrum | None:
+    """Average the spectrum of breath noise over segments of some forty periods; None if it is too short.
+
+    A short tone gets shorter segments, so that at least a few can be averaged.
+    """
+    length = int(min(PERIODS * rate_hz / frequency_hz, 2.0 * len(residual) / (_FEWEST_SEGMENTS + 1)))
+    hop = length // 2
+    if length < 16:
+        return None
+    starts = range(0, len(residual) - length + 1, hop)
+    window = np.hanning(length + 2)[1:-1].astype(np.float32)
+    segments = np.stack([residual[start : start + length] for start in starts]) * window
+    power = np.abs(np.fft.rfft(segments, axis=1)).astype(np.float64) ** 2
+    mean = power.mean(axis=0)
+    return NoiseSpectrum(
+        line_hz=rate_hz / length,
+        power=mean,
+        variation=power.std(axis=0) / np.maximum(mean, 1e-30),
+        segments=len(segments),
+    )
+
+
+def breath_resonances(
+    spectrum: NoiseSpectrum, frequency_hz: float, room: NoiseSpectrum | None = None
+) -> tuple[BreathResonance, ...]:
+    """Find the bumps of a residual's spectrum, low to high.
+
+    Parameters
+    ----------
+    spectrum, frequency_hz
+        The noise of a tone, and the tone's fundamental; nothing is said about the noise within a tenth of
+        the fundamental to either side of a partial's place.
+    room
+        The noise of the room on the same lines, when nobody plays.
+    """
+    ratio = np.arange(len(spectrum.power)) * spectrum.line_hz / frequency_hz
+    usable = (ratio > LOWEST_RATIO) & (ratio < HIGHEST_RATIO) & (ratio * frequency_hz > _LOWEST_HZ)
+    usable &= np.abs(ratio - np.round(ratio)) > PARTIAL_REACH
+    prominence, chance = _prominence(spectrum, usable)
+    noisy = spectrum.variation > _STEADY_CV
+    if room is not None:
+        noisy &= spectrum.power > _ROOM_MARGIN * room.power
+    chance = np.where(usable & noisy, np.minimum(chance * max(int(usable.sum() * _LINE_SHARE), 1), 1.0), 1.0)
+    return tuple(_bump(spectrum, line, prominence, chance) for line in _peaks(prominence, chance))
+
+
+def _prominence(spectrum: NoiseSpectrum, usable: NDArray[np.bool_]) -> tuple[Floats, Floats]:
+    """Return each line's level over the louder of its two sides, in nepers of power, and its chance.
+
+    The louder side, so that a slope or the skirt of a neighbouring partial is no bump.
+    """
+    power = np.where(usable, spectrum.power, 0.0)
+    peak, peak_lines = _windowed(power, usable, -_PEAK, _PEAK)
+    left, left_lines = _windowed(power, usable, -_GAP - _FLANK, -_GAP - 1)
+    right, right_lines = _windowed(power, usable, _GAP + 1, _GAP + _FLANK)
+    prominence = np.log(np.maximum(peak, 1e-30) / np.maximum(np.maximum(left, right), 1e-30))
+    freedom = 2.0 * _SEGMENT_SHARE * spectrum.segments * _LINE_SHARE
+    chance = _f_tail(np.exp(prominence), freedom * peak_lines, freedom * np.minimum(left_lines, right_lines))
+    measured = usable & (peak_lines > _PEAK) & (np.minimum(left_lines, right_lines) >= _FEWEST_LINES)
+    return np.where(measured, prominence, -np.inf), np.where(measured, chance, 1.0)
+
+
+def _windowed(power: Floats, usable: NDArray[np.bool_], low: int, high: int) -> tuple[Floats, Floats]:
+    """Return the mean of the usable lines from `low` to `high` about each line, and how many they are."""
+    reach, width = max(abs(low), abs(high)), high - low + 1
+
+    def summed(values: Floats) -> Floats:
+        windows = np.lib.stride_tricks.sliding_window_view(np.pad(values, reach), width)
+        return np.asarray(windows[low + reach :][: len(values)].sum(axis=1))
+
+    lines = summed(usable.astype(np.float64))
+    return summed(power) / np.maximum(lines, 1.0), lines
+
+
+def _f_tail(ratio: Floats, above: Floats, below: Floats) -> Floats:
+    """Return the upper tail of the F distribution, nearly (Paulson, Ann. Math. Statist. 13, 233 (1942))."""
+    a, b = 2.0 / (9.0 * np.maximum(above, 1.0)), 2.0 / (9.0 * np.maximum(below, 1.0))
+    root = np.cbrt(np.minimum(ratio, 1e12))
+    z = ((1.0 - b) * root - (1.0 - a)) / np.sqrt(b * root**2 + a)
+    return np.array([0.5 * erfc(value / sqrt(2.0)) for value in z])
+
+
+def _peaks(prominence: Floats, chance: Floats) -> list[int]:
+    """Return the lines that lead their surroundings and are less than a matter of chance."""
+    reach = _GAP + 1
+    padded = np.pad(prominence, reach, constant_values=-np.inf)
+    leading = np.lib.stride_tricks.sliding_window_view(padded, 2 * reach + 1).max(axis=1) == prominence
+    return np.flatnonzero(leading & (chance < CHANCE)).tolist()
+
+
+def _bump(spectrum: NoiseSpectrum, line: int, prominence: Floats, chance: Floats) -> BreathResonance:
+    """Return the bump at a line: centre by a parabola through three log powers, width at half power."""
+    lower, middle, upper = np.log(np.maximum(spectrum.power[line - 1 : line + 2], 1e-30))
+    curvature = lower - 2.0 * middle + upper
+    shift = float(np.clip(0.5 * (lower - upper) / curvature, -1.0, 1.0)) if curvature < 0.0 else 0.0
+    half = spectrum.power[line - 1 : line + 2].max() / 2.0
+    low = high = line
+    while low > 0 and spectrum.power[low - 1] > half:
+        low -= 1
+    while high < len(spectrum.power) - 1 and spectrum.power[high + 1] > half:
+        high += 1
+    return BreathResonance(
+        frequency_hz=(line + shift) * spectrum.line_hz,
+        width_hz=(high - low + 1) * spectrum.line_hz,
+        prominence_db=float(10.0 / np.log(10.0) * prominence[line]),
+        chance=float(chance[line]),
+    )
