@@ -1,8 +1,9 @@
 """Measurements as files: a Survey becomes measurements.json and measurements.csv, and comes back.
 
 Conventions: the fields are a contract that other programs read; fields may be added, never renamed. Numbers
-are rounded to what can be meant (frequencies to 0.0001 Hz, cents to 0.001, levels to 0.01 dB). What is not
-known, and what is no finite number, is null. The JSON Schemas in `fluteprobe/schema/` say the same strictly.
+are rounded to what can be meant: frequencies to 0.0001 Hz, cents to 0.001, levels to 0.01 dB,
+uncertainties to three digits. What is not known, and what is no finite number, is null. The JSON Schemas in
+`fluteprobe/schema/` say the same strictly.
 """
 
 import csv
@@ -20,7 +21,7 @@ from typing import Any, Literal, TypeVar, cast, get_args
 from fluteprobe import __version__
 from fluteprobe.flute.fingering import BREATHS, Breath, Fingering
 from fluteprobe.flute.register import REGISTERS, Evidence, Register, RegisterCall
-from fluteprobe.session import FluteFacts, Problem, Sitting
+from fluteprobe.session import FluteFacts, Problem, Sitting, printable
 from fluteprobe.sound.tone import BreathResonance, Kind, Partial, Tone, Vibrato
 from fluteprobe.survey import Entry, Reading, Survey
 
@@ -31,7 +32,7 @@ CSV_FIELDS = (
     "cents_at_reference", "stretch_cents", "takes", "tones", "reliability",
 )  # fmt: skip
 
-_FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r", "\n")
+_FORMULA_STARTS = ("=", "+", "-", "@", "＝", "＋", "－", "＠")  # the latter four count in some editions
 _KINDS = get_args(Kind)
 
 T = TypeVar("T")
@@ -143,7 +144,7 @@ def _tone_json(reading: Reading) -> dict[str, Any]:
         "breath": reading.breath,
         "kind": tone.kind,
         "frequency_hz": _rounded(tone.frequency_hz, 4),
-        "uncertainty_cents": _rounded(tone.uncertainty_cents, 4),
+        "uncertainty_cents": _significant(tone.uncertainty_cents),
         "note": reading.note,
         "cents": _rounded(reading.cents, 3),
         "cents_at_reference": _rounded(reading.cents_at_reference, 3),
@@ -170,10 +171,10 @@ def _partial_json(partial: Partial) -> dict[str, Any]:
 
 def _resonance_json(resonance: BreathResonance) -> dict[str, Any]:
     return {
-        **asdict(resonance),
         "frequency_hz": _rounded(resonance.frequency_hz, 2),
         "width_hz": _rounded(resonance.width_hz, 2),
         "prominence_db": _rounded(resonance.prominence_db, 2),
+        "chance": _significant(resonance.chance),
     }
 
 
@@ -186,7 +187,7 @@ def _entry_json(entry: Entry) -> dict[str, Any]:
         "fingering": str(entry.fingering),
         "register": entry.register,
         "frequency_hz": _rounded(entry.frequency_hz, 4),
-        "uncertainty_cents": _rounded(entry.uncertainty_cents, 4),
+        "uncertainty_cents": _significant(entry.uncertainty_cents),
         "note": entry.note,
         "cents": _rounded(entry.cents, 3),
         "cents_at_reference": _rounded(entry.cents_at_reference, 3),
@@ -204,6 +205,11 @@ def _rounded(value: float | None, digits: int) -> float | None:
     return round(float(value), digits) + 0.0
 
 
+def _significant(value: float | None) -> float | None:
+    """Return a number with three significant digits; None where it is none or not finite."""
+    return None if value is None or not math.isfinite(value) else float(f"{value:.3g}")
+
+
 def _plain(values: Any) -> Any:
     """Return values with tuples as lists and without what is not finite."""
     if isinstance(values, Mapping):
@@ -215,7 +221,10 @@ def _plain(values: Any) -> Any:
 
 def _cell(value: Any) -> Any:
     """Return a cell; text that a spreadsheet would run as a formula gets an apostrophe before it."""
-    return f"'{value}" if isinstance(value, str) and value.startswith(_FORMULA_STARTS) else value
+    if not isinstance(value, str):
+        return value
+    text = printable(value)
+    return f"'{text}" if text.lstrip().startswith(_FORMULA_STARTS) else text
 
 
 # --- files -> Survey ---------------------------------------------------------------------------------
@@ -275,6 +284,9 @@ class _At:
         if key not in self.value:
             raise ResultsError(f"{path} is missing")
         return _At(self.value[key], path)
+
+    def __contains__(self, key: str) -> bool:
+        return isinstance(self.value, Mapping) and key in self.value
 
     def each(self, read: Callable[["_At"], T]) -> tuple[T, ...]:
         if not isinstance(self.value, Sequence) or isinstance(self.value, str):
@@ -419,6 +431,7 @@ def _resonance(at: _At) -> BreathResonance:
         frequency_hz=at["frequency_hz"].above_zero(),
         width_hz=at["width_hz"].number(),
         prominence_db=at["prominence_db"].number(),
+        chance=at["chance"].share() if "chance" in at else 0.0,
     )
 
 

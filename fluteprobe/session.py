@@ -234,7 +234,7 @@ def _facts_text(folder: Path, facts: Path) -> str:
     except OSError as error:
         raise SessionError(f"{name} cannot be read: {_reason(error)}") from None
     if len(content) > _LARGEST_FACTS_BYTES:
-        raise SessionError(f"{name} is far too long for a {FACTS_FILE}: is it another file?")
+        raise SessionError(f"{name} is far too long: is it another file?")
     try:
         text = content.decode("utf-8-sig")
     except UnicodeDecodeError:

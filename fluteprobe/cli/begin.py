@@ -56,13 +56,17 @@ def begin(folder: Path, **given: Any) -> None:
     from fluteprobe.session import FluteFacts, Sitting, create_session, require_new
 
     require_new(folder)
-    if sys.stdin.isatty():
+    if _on_terminal():
         _ask(folder, given)
     given["name"] = given["name"] or folder.resolve().name
     given["holes"] = given["holes"] or _USUAL_HOLES
     flute = {key: given.pop(key) for key in FluteFacts.__dataclass_fields__ if key in given}
     facts = create_session(folder, FluteFacts(**flute), Sitting(**given))
     _say_what_next(folder, facts, flute["holes"])
+
+
+def _on_terminal() -> bool:
+    return sys.stdin.isatty()
 
 
 def _ask(folder: Path, given: dict[str, Any]) -> None:

@@ -31,7 +31,12 @@ def _formats(ctx: click.Context, param: click.Parameter, given: tuple[str, ...])
     metavar="|".join(FORMATS),
     help="Kind of file; several with commas.  [default: pdf]",
 )
-@click.option("--paper", type=click.Choice(PAPERS, case_sensitive=False), default="a4", show_default=True)
+@click.option(
+    "--paper",
+    type=click.Choice(PAPERS, case_sensitive=False),
+    default="a4",
+    help="What it is printed on.  [default: a4]",
+)
 @click.option(
     "--tolerance",
     "tolerance_cents",

@@ -33,6 +33,10 @@ class Unusable(click.ClickException):
 class Door(click.Group):
     """The group of commands, and the boundary for failures that are no bugs."""
 
+    def list_commands(self, ctx: click.Context) -> list[str]:  # noqa: ARG002  (click passes it)
+        """Return the commands in the order in which they are needed."""
+        return list(self.commands)
+
     def invoke(self, ctx: click.Context) -> Any:
         """Run a command; what its input is to blame for ends in one line, a bug in a traceback."""
         from fluteprobe.session import SessionError, printable

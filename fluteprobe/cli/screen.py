@@ -1,14 +1,14 @@
 """What people see in a terminal: tables as plain aligned text, at most 80 columns, and lines about takes.
 
 Conventions: deviations in cents with a sign, ± the standard uncertainty; `?` is an undecided register, `–`
-does not apply. Results go to stdout, everything else to stderr. A terminal that cannot show ♯ or ± gets # or
+no note. Results go to stdout, everything else to stderr. A terminal that cannot show ♯ or ± gets # or
 +/-.
 """
 
 import sys
 import textwrap
 import time
-from collections.abc import Callable, Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from itertools import groupby
 from pathlib import Path
@@ -26,7 +26,10 @@ _PLAIN = str.maketrans({"♯": "#", "±": "+/-", "−": "-", "–": "-", "…": 
 
 _SILENT = {"breath only": "Did not speak", "edge tone": "Edge tone", "multiphonic": "Two tones at once"}
 
-Row = Sequence[str]
+_SURVEY_COLUMNS = ("fingering", "register", "note", "cents", "reference", "stretch", "takes", "caution")
+_NUMBERS = {"register", "cents", "reference", "stretch", "takes", "Hz"}
+
+Row = Mapping[str, str]
 
 
 # --- saying ------------------------------------------------------------------------------------------
@@ -45,7 +48,7 @@ def say(text: str, *, err: bool = False) -> None:
 def tell_problems(problems: Iterable[Problem]) -> None:
     """Name on stderr what could not be used, a line each, with the cure."""
     for problem in problems:
-        say(f"Left out {printable(problem.take)}: {printable(problem.message)}", err=True)
+        say(f"Not used: {printable(problem.take)}: {printable(problem.message)}", err=True)
 
 
 def tell_cautions(readings: Iterable[Reading]) -> None:
@@ -53,10 +56,10 @@ def tell_cautions(readings: Iterable[Reading]) -> None:
     for reading in readings:
         place = f"{printable(reading.take)}, {_span(reading)}"
         for caution in reading.tone.cautions:
-            say(f"Caution {place}: {printable(caution)}", err=True)
+            say(f"Caution: {place}: {printable(caution)}", err=True)
         if _is_undecided(reading) and reading.fingering is not None:
             chances = ", ".join(f"{k} {100 * p:.0f} %" for k, p in sorted(reading.call.probability.items()))
-            say(f"Caution {place}: register undecided ({chances})", err=True)
+            say(f"Caution: {place}: register undecided ({chances})", err=True)
 
 
 def tell_written(paths: Iterable[Path], *, as_result: bool = False) -> None:
@@ -90,96 +93,106 @@ def progress(label: str) -> Iterator[Callable[[int, int], None]]:
 
 def survey_table(survey: Survey) -> str:
     """Return what every fingering gives, in the order of pitch, and what did not speak."""
-    reference = f"at {survey.sitting.reference_temperature_c or 0.0:g} °C"
-    with_reference = any(entry.cents_at_reference is not None for entry in survey.entries)
-    header = ["fingering", "register", "note", "cents", "stretch", "takes", "caution"]
-    if with_reference:
-        header.insert(4, reference)
-    cautions = {
-        (entry.fingering, entry.register): _entry_cautions(entry, survey.readings) for entry in survey.entries
-    }
-    rows = [
-        (e.frequency_hz, _entry_row(e, cautions[e.fingering, e.register], with_reference))
-        for e in survey.entries
-    ]
-    rows += [
-        (r.tone.frequency_hz or 0.0, _undecided_row(r, with_reference))
-        for r in survey.readings
-        if _is_undecided(r)
-    ]
-    body = [row for _, row in sorted(rows, key=lambda row: (row[0], row[1]))]
-    aligned = _aligned([header, *body], right={"register", "cents", reference, "stretch", "takes"})
-    return "\n".join([_heading(survey.flute, survey.sitting), "", *aligned, *_silent_lines(survey.readings)])
+    heading, silent = _heading(survey.flute, survey.sitting), _silent_lines(survey.readings)
+    rows = _survey_rows(survey)
+    if not rows:
+        return "\n".join([heading, "", "No fingering gave a steady tone.", *silent])
+    titles = {key: key for key in _SURVEY_COLUMNS}
+    notes = ["", "cents: off the note as played, ± standard uncertainty; above 0 is sharp"]
+    if any("reference" in row for row in rows):
+        titles["reference"] = _reference_title(survey.sitting)
+        notes.append(f"{titles['reference']}: the same carried to that temperature, an estimate")
+    else:
+        del titles["reference"]
+    return "\n".join([heading, "", *_aligned(titles, rows), *notes, *silent])
 
 
 def heard_table(readings: Sequence[Reading], a4_hz: float) -> str:
     """Return every tone under the name of its recording, in the order of time."""
     if not readings:
         return "Nothing was heard."
-    header = ["steady", "register", "note", "cents", "Hz", "remarks"]
-    aligned = _aligned([header, *map(_heard_row, readings)], right={"register", "cents", "Hz"})
-    lines = [f"  {aligned[0]}   (A4 = {a4_hz:g} Hz)" if len(aligned[0]) < 56 else f"  {aligned[0]}"]
-    below = iter(aligned[1:])
+    titles = {key: key for key in ("steady", "register", "note", "cents", "Hz", "remarks")}
+    header, *below = _aligned(titles, [_heard_row(reading) for reading in readings])
+    lines, rows = [f"  {header}"], iter(below)
     for take, tones in groupby(readings, key=lambda reading: reading.take):
         lines.append(printable(take))
-        lines += [f"  {next(below)}" for _ in tones]
-    return "\n".join(lines)
+        lines += [f"  {next(rows)}" for _ in tones]
+    return "\n".join([*lines, "", f"cents: off the note at A4 = {a4_hz:g} Hz, ± standard uncertainty"])
 
 
 def _heading(flute: FluteFacts, sitting: Sitting) -> str:
-    parts = [flute.name, f"{flute.holes} hole{'s' if flute.holes > 1 else ''}", f"A4 = {sitting.a4_hz:g} Hz"]
+    parts = [f"{flute.holes} hole{'s' if flute.holes > 1 else ''}", f"A4 = {sitting.a4_hz:g} Hz"]
     if sitting.air_temperature_c is not None:
         parts.append(f"air {sitting.air_temperature_c:g} °C")
-    return textwrap.shorten(printable(" · ".join(parts)), WIDTH, placeholder=" …")
+    tail, name = " · ".join(["", *parts]), printable(flute.name)
+    room = WIDTH - len(tail)
+    return (name if len(name) <= room else f"{name[: room - 1]}…") + tail
 
 
-def _entry_row(entry: Entry, cautions: str, with_reference: bool) -> list[str]:
-    tried = round(len(entry.takes) / entry.reliability) if entry.reliability > 0.0 else len(entry.takes)
-    row = [
-        str(entry.fingering),
-        str(entry.register),
-        _note(entry.note),
-        _off(entry.cents, entry.uncertainty_cents),
-        "" if entry.stretch_cents is None else _signed(entry.stretch_cents),
-        str(tried) if tried == len(entry.takes) else f"{len(entry.takes)} of {tried}",
-        cautions,
+def _reference_title(sitting: Sitting) -> str:
+    reference_c = sitting.reference_temperature_c
+    return "at reference" if reference_c is None else f"at {reference_c:g} °C"
+
+
+def _survey_rows(survey: Survey) -> list[Row]:
+    """Return a row for every entry and for every tone of undecided register, low to high."""
+    rows = [(entry.frequency_hz, _entry_row(entry, survey.readings)) for entry in survey.entries]
+    rows += [
+        (reading.tone.frequency_hz or 0.0, _undecided_row(reading))
+        for reading in survey.readings
+        if _is_undecided(reading)
     ]
-    if with_reference:
-        row.insert(4, "" if entry.cents_at_reference is None else _signed(entry.cents_at_reference))
+    return [row for _, row in sorted(rows, key=lambda item: item[0])]
+
+
+def _entry_row(entry: Entry, readings: Iterable[Reading]) -> Row:
+    gave = len(entry.takes)
+    tried = round(gave / entry.reliability) if entry.reliability > 0.0 else gave
+    row = {
+        "fingering": str(entry.fingering),
+        "register": str(entry.register),
+        "note": _note(entry.note),
+        "cents": _off(entry.cents, entry.uncertainty_cents),
+        "takes": str(gave) if tried <= gave else f"{gave} of {tried}",
+        "caution": _entry_cautions(entry, readings),
+    }
+    if entry.cents_at_reference is not None:
+        row["reference"] = _signed(entry.cents_at_reference)
+    if entry.stretch_cents is not None:
+        row["stretch"] = _signed(entry.stretch_cents)
     return row
 
 
-def _undecided_row(reading: Reading, with_reference: bool) -> list[str]:
-    row = [
-        str(reading.fingering),
-        "?",
-        _note(reading.note),
-        _off(reading.cents, reading.tone.uncertainty_cents),
-        "",
-        "1",
-        _brief(reading.tone.cautions),
-    ]
-    if with_reference:
-        row.insert(4, "" if reading.cents_at_reference is None else _signed(reading.cents_at_reference))
+def _undecided_row(reading: Reading) -> Row:
+    row = {
+        "fingering": str(reading.fingering),
+        "register": "?",
+        "note": _note(reading.note),
+        "cents": _off(reading.cents, reading.tone.uncertainty_cents),
+        "takes": "1",
+        "caution": _brief(reading.tone.cautions),
+    }
+    if reading.cents_at_reference is not None:
+        row["reference"] = _signed(reading.cents_at_reference)
     return row
 
 
-def _heard_row(reading: Reading) -> list[str]:
+def _heard_row(reading: Reading) -> Row:
     tone = reading.tone
     if tone.frequency_hz is None:
-        return [_span(reading), "–", "–", "–", "–", tone.kind]
-    remarks = [] if tone.kind == "tone" else [tone.kind]
+        return {"steady": _span(reading), "remarks": tone.kind}
+    remarks: list[str] = [] if tone.kind == "tone" else [tone.kind]
     if tone.vibrato is not None:
         remarks.append(f"vibrato {tone.vibrato.rate_hz:.1f} Hz")
     remarks += [text for text in [_brief(tone.cautions)] if text]
-    return [
-        _span(reading),
-        "?" if reading.call.register is None else str(reading.call.register),
-        _note(reading.note),
-        _off(reading.cents, tone.uncertainty_cents),
-        f"{tone.frequency_hz:.2f}",
-        ", ".join(remarks),
-    ]
+    return {
+        "steady": _span(reading),
+        "register": "?" if reading.call.register is None else str(reading.call.register),
+        "note": _note(reading.note),
+        "cents": _off(reading.cents, tone.uncertainty_cents),
+        "Hz": f"{tone.frequency_hz:.2f}",
+        "remarks": ", ".join(remarks),
+    }
 
 
 def _entry_cautions(entry: Entry, readings: Iterable[Reading]) -> str:
@@ -212,16 +225,15 @@ def _is_undecided(reading: Reading) -> bool:
     return reading.tone.kind == "tone" and reading.call.register is None
 
 
-def _aligned(rows: Sequence[Row], right: set[str]) -> list[str]:
-    """Return rows as lines with the columns under their headers, numbers to the right; no row is cut short."""
-    header = rows[0]
-    widths = [max(len(row[k]) for row in rows) for k in range(len(header))]
+def _aligned(titles: Mapping[str, str], rows: Sequence[Row]) -> list[str]:
+    """Return the titles and rows as lines, column under column, numbers to the right; nothing is cut."""
+    table = [titles, *({key: row.get(key, "") for key in titles} for row in rows)]
+    widths = {key: max(len(row[key]) for row in table) for key in titles}
     return [
         "  ".join(
-            cell.rjust(width) if name in right else cell.ljust(width)
-            for cell, width, name in zip(row, widths, header, strict=True)
+            row[key].rjust(widths[key]) if key in _NUMBERS else row[key].ljust(widths[key]) for key in titles
         ).rstrip()
-        for row in rows
+        for row in table
     ]
 
 
