@@ -1,4 +1,4 @@
-"""fluteprobe: which notes does this flute play, with which fingering, how far from tuned, how surely?
+"""Find out which notes a flute plays: with which fingering, how far off, and how surely.
 
 Two calls do the work of the command line from a notebook:
 

@@ -4,7 +4,7 @@ Conventions: pitches are in cents above 1 Hz inside; notes are spelt in ASCII wi
 ("C#5"); deviations are positive where the flute is sharp; `uncertainty_cents` is standard (k = 1).
 """
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
 from math import log2, sqrt
@@ -119,12 +119,13 @@ def survey_of(session: Session, *, on_take: Progress | None = None) -> Survey:
     )
 
 
-def _heard(takes: Sequence[Take]) -> "list[tuple[Take, tuple[Tone, ...] | RecordingError]]":
+def _heard(takes: Sequence[Take]) -> "Iterator[tuple[Take, tuple[Tone, ...] | RecordingError]]":
     """Hear all takes, on all cores where there are several: numpy's FFT and products release the lock."""
     if len(takes) <= _FEW_TAKES:
-        return [(take, _hear_one(take)) for take in takes]
+        yield from ((take, _hear_one(take)) for take in takes)
+        return
     with ThreadPoolExecutor(cpu_count() or 1) as pool:
-        return list(zip(takes, pool.map(_hear_one, takes), strict=True))
+        yield from zip(takes, pool.map(_hear_one, takes), strict=True)
 
 
 def _hear_one(take: Take) -> tuple[Tone, ...] | RecordingError:

@@ -10,8 +10,9 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from tones import RATE_HZ, TIMBRES, bound_cents, cents, make_tone
 
+from fluteprobe.sound.octave import settle_octave
 from fluteprobe.sound.partials import Samples, demodulate, orders_below_nyquist
-from fluteprobe.sound.pitch import Pitch, follow_guide, measure_pitch, phase_track, settle_octave
+from fluteprobe.sound.pitch import Pitch, measure_pitch, phase_track, refine
 
 PITCHES = [
     (110.0, 0.3),
@@ -25,7 +26,7 @@ PITCHES = [
 
 
 def read(samples: Samples, coarse_hz: float, rate_hz: int = RATE_HZ) -> Pitch:
-    refined = follow_guide(samples, rate_hz, settle_octave(samples, rate_hz, coarse_hz)).frequency_hz
+    refined = refine(samples, rate_hz, settle_octave(samples, rate_hz, coarse_hz))
     tracks = demodulate(samples, rate_hz, refined, orders_below_nyquist(rate_hz, refined))
     return measure_pitch(phase_track(tracks))
 

@@ -32,6 +32,7 @@ PARTIAL_REACH = 0.1
 CHANCE = 0.01
 
 _FEWEST_SEGMENTS = 4
+_SHORTEST = 16
 _LOWEST_HZ = 70.0
 _PEAK = 1
 _GAP = 2
@@ -70,10 +71,11 @@ def noise_spectrum(residual: Samples, rate_hz: int, frequency_hz: float) -> Nois
 
     A short tone gets shorter segments, so that at least a few can be averaged.
     """
-    length = int(min(PERIODS * rate_hz / frequency_hz, 2.0 * len(residual) / (_FEWEST_SEGMENTS + 1)))
-    hop = length // 2
-    if length < 16:
+    longest = int(min(PERIODS * rate_hz / frequency_hz, 2.0 * len(residual) / (_FEWEST_SEGMENTS + 1)))
+    if longest < _SHORTEST:
         return None
+    length = _quick_length(longest)
+    hop = length // 2
     starts = range(0, len(residual) - length + 1, hop)
     window = np.hanning(length + 2)[1:-1].astype(np.float32)
     segments = np.stack([residual[start : start + length] for start in starts]) * window
@@ -85,6 +87,12 @@ def noise_spectrum(residual: Samples, rate_hz: int, frequency_hz: float) -> Nois
         variation=power.std(axis=0) / np.maximum(mean, 1e-30),
         segments=len(segments),
     )
+
+
+def _quick_length(longest: int) -> int:
+    """Return the greatest quick FFT length up to `longest`: a small odd times a power of two."""
+    powers = [odd << max((longest // odd).bit_length() - 1, 0) for odd in (1, 3, 5, 9, 15)]
+    return max(length for length in powers if length <= longest)
 
 
 def breath_resonances(

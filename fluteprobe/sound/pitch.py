@@ -22,7 +22,6 @@ from fluteprobe.sound.partials import (
     Samples,
     Tracks,
     demodulate,
-    lines,
     noise_powers,
     orders_below_nyquist,
 )
@@ -31,14 +30,8 @@ Floats = NDArray[np.float64]
 
 CENTS = 1200.0 / np.log(2.0)
 
-_GUIDES = 4
-_PARTS = {2: (8, np.array([0.5, 1.5, 2.5])), 3: (9, np.array([1 / 3, 2 / 3, 4 / 3, 5 / 3]))}
-_ALONE = 6.0
-_LEAST_PART_DB = -50.0
-_LOWEST_FUNDAMENTAL_HZ = 85.0
-_SURE = 1e-6
-_LIKELY = 1e-3
-_ROUNDS = 3
+GUIDES = 4
+_ROUNDS = 2
 _POINT_S = 0.02
 _FASTEST_WANDER_HZ = 12.0
 _MOST_TERMS = 160
@@ -95,66 +88,22 @@ class Pitch:
     curve: "PhaseCurve"
 
 
-def settle_octave(samples: Samples, rate_hz: int, frequency_hz: float) -> float:
-    """Return the fundamental that the lines themselves support: the coarse pitch, a multiple or a part of it.
-
-    A half (or a third) is the fundamental where steady lines stand at its odd multiples, however weak the
-    fundamental is; a bump of breath noise there is no line. A multiple is the fundamental where no other
-    line is steady. "Steady" is what `lines` tells from noise.
-    """
-    for _ in range(3):
-        settled = _part(samples, rate_hz, frequency_hz) or _multiple(samples, rate_hz, frequency_hz)
-        if settled is None:
-            break
-        frequency_hz = settled
-    return follow_guide(samples, rate_hz, frequency_hz).frequency_hz
+def refine(samples: Samples, rate_hz: int, frequency_hz: float) -> float:
+    """Refine a pitch known within about half a semitone from the phase of the strongest low partial."""
+    return refined(
+        demodulate(samples, rate_hz, frequency_hz, orders_below_nyquist(rate_hz, frequency_hz, GUIDES))
+    )
 
 
-def _part(samples: Samples, rate_hz: int, frequency_hz: float) -> float | None:
-    """Return the half or the third of the pitch if steady lines stand between its multiples."""
-    guide = follow_guide(samples, rate_hz, frequency_hz)
-    whole = float(np.mean(np.abs(guide.phasors) ** 2, axis=0).sum())
-    for parts, (periods, orders) in _PARTS.items():
-        if frequency_hz / parts < _LOWEST_FUNDAMENTAL_HZ:
-            continue
-        between = demodulate(samples, rate_hz, guide.frequency_hz, orders, periods)
-        phase = np.interp(between.time_s, guide.time_s, _guide_phase(guide))
-        loud = np.mean(np.abs(between.phasors) ** 2, axis=0) > whole * 10.0 ** (_LEAST_PART_DB / 10.0)
-        line = lines(between, phase)
-        chance = np.sort(np.where(loud & (line.prominence > _ALONE), line.chance, 1.0))
-        if chance[0] < _SURE or chance[1] < _LIKELY:
-            return guide.frequency_hz / parts
-    return None
-
-
-def _multiple(samples: Samples, rate_hz: int, frequency_hz: float) -> float | None:
-    """Return twice or three times the pitch if only those multiples are steady lines."""
-    guide = follow_guide(samples, rate_hz, frequency_hz)
-    tracks = demodulate(samples, rate_hz, guide.frequency_hz, orders_below_nyquist(rate_hz, frequency_hz, 9))
-    phase = _guide_phase(tracks)
-    power = np.mean(np.abs(tracks.phasors) ** 2, axis=0)
-    steady = (lines(tracks, phase).chance < _LIKELY) & (power > power.max() * 10.0 ** (_LEAST_PART_DB / 10.0))
-    for times in (2, 3):
-        on = tracks.orders % times == 0
-        if np.any(steady & on) and not np.any(steady & ~on):
-            return times * guide.frequency_hz
-    return None
-
-
-def follow_guide(samples: Samples, rate_hz: int, frequency_hz: float) -> Tracks:
-    """Return the phasors of the lowest four partials, turning at a frequency refined from themselves.
-
-    The coarse pitch may be off by about half a semitone.
-    """
-    orders = orders_below_nyquist(rate_hz, frequency_hz, _GUIDES)
-    coarse = demodulate(samples, rate_hz, frequency_hz, orders)
-    refined = frequency_hz + float(np.mean(np.diff(_guide_phase(coarse)))) / (2.0 * np.pi * coarse.hop_s)
-    return demodulate(samples, rate_hz, refined, orders)
+def refined(guide: Tracks) -> float:
+    """Return the mean frequency that the phase of the strongest low partial tells."""
+    phase = guide_phase(guide)
+    return guide.frequency_hz + float(phase[-1] - phase[0]) / ((len(phase) - 1) * 2.0 * np.pi * guide.hop_s)
 
 
 def phase_track(tracks: Tracks) -> PhaseTrack:
     """Combine the phases of all partials into the fundamental's, each weighted by its own noise."""
-    phase = _guide_phase(tracks)
+    phase = guide_phase(tracks)
     for _ in range(_ROUNDS):
         errors, variances = _phase_errors(tracks, phase)
         weights = tracks.orders**2 / variances
@@ -168,9 +117,9 @@ def phase_track(tracks: Tracks) -> PhaseTrack:
     )
 
 
-def _guide_phase(tracks: Tracks) -> Floats:
-    """Unwrap the phase of the strongest low partial, divided by its order."""
-    low = np.flatnonzero(tracks.orders <= _GUIDES)
+def guide_phase(tracks: Tracks) -> Floats:
+    """Unwrap the phase of the strongest low partial, divided by its order, shape (frames,)."""
+    low = np.flatnonzero(tracks.orders <= GUIDES)
     strongest = low[np.argmax(np.mean(np.abs(tracks.phasors[:, low]) ** 2, axis=0))]
     phasors = tracks.phasors[:, strongest]
     steps = np.angle(phasors[1:] * phasors[:-1].conj()) / tracks.orders[strongest]

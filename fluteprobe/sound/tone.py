@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fluteprobe.sound.breath import BreathResonance, breath_resonances, noise_spectrum
+from fluteprobe.sound.octave import settle_octave
 from fluteprobe.sound.partials import (
     Partial,
     Samples,
@@ -21,7 +22,7 @@ from fluteprobe.sound.partials import (
     partials_of,
     without_partials,
 )
-from fluteprobe.sound.pitch import Pitch, Vibrato, follow_guide, measure_pitch, phase_track, settle_octave
+from fluteprobe.sound.pitch import GUIDES, Pitch, Vibrato, measure_pitch, phase_track, refined
 from fluteprobe.sound.recording import Recording
 from fluteprobe.sound.spans import SHORTEST_TONE_S, Span, find_spans
 
@@ -109,13 +110,15 @@ def _steady_part(recording: Recording, span: Span, coarse_hz: float) -> _Steady:
     frequency_hz = settle_octave(recording.read(span.start, stop), rate, coarse_hz)
     first = max(span.start - margin, 0)
     around = recording.read(first, min(stop + margin, recording.frames))
-    guide = demodulate(around, rate, frequency_hz, orders_below_nyquist(rate, frequency_hz, 4))
+    guide = demodulate(around, rate, frequency_hz, orders_below_nyquist(rate, frequency_hz, GUIDES))
     inside = slice((span.start - first) // guide.hop, max((stop - first) // guide.hop, 1))
     low, high, attack = _edges(guide, inside)
     return _Steady(
         start=first + low * guide.hop,
         stop=min(first + (high + 2) * guide.hop, recording.frames),
-        frequency_hz=frequency_hz,
+        frequency_hz=refined(replace(guide, phasors=guide.phasors[low : high + 1]))
+        if high > low
+        else frequency_hz,
         attack_ms=attack,
     )
 
@@ -170,10 +173,7 @@ class _Measured:
 
 
 def _measured(samples: Samples, rate_hz: int, frequency_hz: float) -> _Measured:
-    guide = follow_guide(samples, rate_hz, frequency_hz)
-    tracks = demodulate(
-        samples, rate_hz, guide.frequency_hz, orders_below_nyquist(rate_hz, guide.frequency_hz)
-    )
+    tracks = demodulate(samples, rate_hz, frequency_hz, orders_below_nyquist(rate_hz, frequency_hz))
     pitch = measure_pitch(phase_track(tracks))
     amplitude = amplitudes(tracks, pitch.curve.phase(tracks.time_s))
     residual = without_partials(samples, tracks, pitch.curve.phase, amplitude > 0.0)
