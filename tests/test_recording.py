@@ -297,7 +297,7 @@ def test_the_clearest_of_many_channels_is_found_in_a_long_recording_too(tmp_path
 
 
 def test_clearness_is_the_line_over_the_noise_around_it() -> None:
-    # Ten times less noise is 20 dB, by the definition of the decibel (ISO 80000-8); noise scatters by 1 dB.
+    # Ten times less noise is 20 dB, by the definition of the decibel; noise scatters by 1 dB.
     noisy, clean = (tone(noise=noise).astype(np.float32) for noise in (0.1, 0.01))
     assert clearness_db([clean], 48000) - clearness_db([noisy], 48000) == pytest.approx(20.0, abs=1.0)
 
