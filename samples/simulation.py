@@ -1,0 +1,418 @@
+"""A duct flute that is blown: the modes of the tube model, driven by a jet, and a microphone before it.
+
+Nothing is added at chosen frequencies. The air column is its modes (frequency, width and strength from
+`fluteprobe.flute.tube`); the jet crosses the sound hole in a finite time, is carried in and out by the column's
+own flow, and drives it through a saturating curve; the jet's turbulence pushes every mode. Registers, breaks
+between them and the bumps in the breath noise follow.
+
+Equations (Verge, Hirschberg & Caussé, JASA 101, 2914 (1997); Auvray, Fabre et al., JASA 131, 1574 (2012)):
+jet speed      U = √(2p/ρ)
+deflection     η(t) = (h/U) exp(0.4 W/h) v(t − W/(0.5 U)), v the flow's velocity in the sound hole
+drive          Δp = ρ δ b U/W · d/dt tanh((η − y0)/b), δ = (4/π)√(2hW), b = 2h/5
+losses         Δp = −½ρ (v/0.6)² sign(v), the flow separating at the edge
+turbulence     Δp = ρU²/2 · share · noise, first-order low-pass at 0.3 U/W
+W length of the sound hole from flue to edge, h height of the flue, y0 how far the edge is off the jet's middle.
+
+Units are in the names; the random numbers come from the seeds, so the same call gives the same samples.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from math import pi
+from typing import Any
+
+import numba
+import numpy as np
+import numpy.typing as npt
+
+from fluteprobe.flute.fingering import Fingering
+from fluteprobe.flute.tube import Resonances, Tube, outflows, resonances
+from fluteprobe.flute.tuning import speed_of_sound_m_per_s
+
+Reals = npt.NDArray[np.float64]
+Complexes = npt.NDArray[np.complex128]
+Curve = Sequence[tuple[float, float]]
+
+INNER_RATE_HZ = 88_200
+MODES = 12
+HIGHEST_MODE_HZ = 6000.0
+KEEP_EVERY = 8  # of the inner samples, for the truth
+
+_DENSITY = 1.2
+_CONVECTION = 0.5
+_GROWTH = 0.4
+_SEPARATION = 0.6
+_FASTEST = 0.2  # f W / U from which the jet no longer follows: its growth ends there
+_STROUHAL_NORMAL = 0.08  # f W / U where a tone speaks well: a quarter period's delay
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class FluteBuild:
+    """A flute to be blown: its tube and its voicing.
+
+    `window_mm` is from the flue to the edge, `window_width_mm` across it, `flue_mm` the flue's height, `aim` the
+    edge's distance from the jet's middle in jet half-widths, `hiss` the turbulence's share of ρU²/2.
+    """
+
+    tube: Tube
+    window_mm: float
+    window_width_mm: float
+    flue_mm: float
+    aim: float = 0.3
+    hiss: float = 0.006
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Microphone:
+    """Where and in what room it is heard.
+
+    Distances in m from the sound hole and from the foot's side; `room_pa` is the room noise's rms, and
+    `full_scale_pa` the pressure of sample value 1.
+    """
+
+    head_m: float = 0.45
+    foot_m: float = 0.60
+    room_pa: float = 1e-3
+    full_scale_pa: float = 4.0
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class SimulatedTone:
+    """What truly sounded: the steady part, its mean frequency, and the mode that carried it (1 the lowest).
+
+    `purity` is the share of the flow's power that stands at whole multiples of the frequency.
+    """
+
+    start_s: float
+    end_s: float
+    frequency_hz: float
+    register: int
+    purity: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Simulated:
+    """A simulated recording, its truth (empty where nothing spoke) and the resonances that made it."""
+
+    samples: npt.NDArray[np.float32]
+    rate_hz: int
+    truth: tuple[SimulatedTone, ...]
+    modes: Resonances
+
+    @property
+    def spoke(self) -> bool:
+        """Whether any tone sounded."""
+        return bool(self.truth)
+
+
+def steady(pressure_pa: float, duration_s: float, attack_s: float = 0.05, silence_s: float = 0.2) -> Curve:
+    """Return a breath curve: silence, attack, steady pressure, release, silence."""
+    return steps([(pressure_pa, duration_s - 2.0 * silence_s)], attack_s, silence_s)
+
+
+def steps(blows: Sequence[tuple[float, float]], attack_s: float = 0.05, silence_s: float = 0.2) -> Curve:
+    """Return a breath curve that goes through several (pressure in Pa, duration in s) without a pause."""
+    curve, now = [(0.0, 0.0), (silence_s, 0.0)], silence_s
+    for pressure, duration in blows:
+        curve += [(now + attack_s, pressure), (now + duration, pressure)]
+        now += duration
+    return [*curve, (now + 0.06, 0.0), (now + silence_s, 0.0)]
+
+
+def speaking_pressure_pa(
+    build: FluteBuild, fingering: Fingering | Sequence[float], register: int = 1
+) -> float:
+    """Return the pressure at which that register speaks most readily: a quarter period's delay of the jet."""
+    openness = fingering.openness if isinstance(fingering, Fingering) else fingering
+    frequency = float(resonances(build.tube, np.array([openness]), register).frequency_hz[0, -1])
+    speed = frequency * build.window_mm / 1000.0 / _STROUHAL_NORMAL
+    return 0.5 * _DENSITY * speed**2
+
+
+def blow(
+    build: FluteBuild,
+    fingering: Fingering | Sequence[float],
+    curve: Curve,
+    *,
+    seed: int,
+    rate_hz: int = 44_100,
+    microphone: Microphone | None = None,
+) -> Simulated:
+    """Blow a flute and record it.
+
+    Parameters
+    ----------
+    build
+        The flute.
+    fingering
+        A fingering (nominal openness of half-holed and vented), or each hole's openness.
+    curve
+        Breath pressure: (time in s, Pa) breakpoints; the last one ends the recording.
+    seed
+        For breath, turbulence and room.
+    rate_hz
+        Of the recording.
+    microphone
+        Where it is heard; the default is half a metre away in a quiet room.
+    """
+    openness = np.array(
+        fingering.openness if isinstance(fingering, Fingering) else fingering, dtype=np.float64
+    )
+    microphone = microphone or Microphone()
+    random = np.random.default_rng(seed)
+    modes = _modes(build.tube, openness)
+    pressure = _breath(curve, random)
+    flows, kept, noise = _run(build, openness, modes, pressure, random)
+    heard = _microphone(build, openness, flows, noise, microphone, random)
+    samples = _resampled(heard, rate_hz) / microphone.full_scale_pa
+    jet = np.sqrt(2.0 * pressure[::KEEP_EVERY] / _DENSITY)
+    return Simulated(
+        samples=samples.astype(np.float32), rate_hz=rate_hz, truth=_truth(build, kept, jet), modes=modes
+    )
+
+
+# --- the column --------------------------------------------------------------------------------------
+
+
+def _modes(tube: Tube, openness: Reals) -> Resonances:
+    found = resonances(tube, openness[None, :], MODES)
+    use = np.nan_to_num(found.frequency_hz[0], nan=np.inf) < HIGHEST_MODE_HZ
+    return Resonances(
+        frequency_hz=found.frequency_hz[0, use],
+        width_hz=found.width_hz[0, use],
+        strength=found.strength[0, use],
+    )
+
+
+def _poles(modes: Resonances) -> Complexes:
+    """Return each mode's pole in rad/s: its real part is −π width."""
+    decay = pi * modes.width_hz
+    return np.asarray(-decay + 1j * np.sqrt((2.0 * pi * modes.frequency_hz) ** 2 - decay**2))
+
+
+def _pushes(modes: Resonances, poles: Complexes, impedance: float) -> Complexes:
+    """Return what a pressure held for one inner sample adds to each mode's state.
+
+    A mode's admittance jω a/(ω0² − ω² + jω 2π width), a = strength 2π width / impedance, as its pole's residue.
+    """
+    residue = modes.strength * 2.0 * pi * modes.width_hz / impedance * poles / (2j * poles.imag)
+    return np.asarray(residue * np.expm1(poles / INNER_RATE_HZ) / poles)
+
+
+def _run(
+    build: FluteBuild, openness: Reals, modes: Resonances, pressure_pa: Reals, random: np.random.Generator
+) -> tuple[Reals, Complexes, Reals]:
+    """Return flows in m³/s (head, then openings; shape (openings + 1, samples)), states kept, and the noise."""
+    tube = build.tube
+    speed = speed_of_sound_m_per_s(tube.temperature_c)
+    poles = _poles(modes)
+    pushes = _pushes(modes, poles, _DENSITY * speed / (pi * tube.radius_m**2))
+    weights = outflows(tube, openness, modes.frequency_hz).real
+    weights = np.vstack([np.ones(len(poles)), weights[:-1][openness > 0.0], weights[-1:]])
+    jet = np.sqrt(2.0 * pressure_pa / _DENSITY)
+    noise = _turbulence(jet, build, random)
+    voicing = np.array(
+        [build.window_mm / 1000.0, build.window_width_mm / 1000.0, build.flue_mm / 1000.0, build.aim]
+    )
+    flows, kept = _time_loop(np.exp(poles / INNER_RATE_HZ), pushes, weights, jet, noise, voicing)
+    return flows, kept, noise
+
+
+def _turbulence(jet_m_per_s: Reals, build: FluteBuild, random: np.random.Generator) -> Reals:
+    """Return the turbulence's pressure in Pa: unit-power noise, low-passed at 0.3 U/W, times share · ρU²/2."""
+    corner = 0.3 * np.maximum(jet_m_per_s, 1.0) / (build.window_mm / 1000.0)
+    keep = np.exp(-2.0 * pi * corner / INNER_RATE_HZ)
+    unit = _low_passed(random.standard_normal(len(jet_m_per_s)), keep)
+    return build.hiss * 0.5 * _DENSITY * jet_m_per_s**2 * unit
+
+
+@numba.njit(cache=False)  # type: ignore[untyped-decorator]
+def _low_passed(white: Reals, keep: Reals) -> Reals:
+    out = np.empty_like(white)
+    state = 0.0
+    for i in range(len(white)):
+        state = keep[i] * state + np.sqrt(1.0 - keep[i] ** 2) * white[i]
+        out[i] = state
+    return out
+
+
+@numba.njit(cache=False)  # type: ignore[untyped-decorator]
+def _time_loop(
+    turns: Complexes, pushes: Complexes, weights: Reals, jet: Reals, noise: Reals, voicing: Reals
+) -> Any:
+    """Step the modes and the jet at INNER_RATE_HZ; return all flows and every KEEP_EVERYth state."""
+    window, width, flue, aim = voicing
+    half = 0.4 * flue
+    growth = np.exp(_GROWTH * window / flue)
+    drive = _DENSITY * (4.0 / np.pi) * np.sqrt(2.0 * flue * window) * half / window * INNER_RATE_HZ
+    state = np.zeros(len(turns), dtype=np.complex128)
+    past = np.zeros(4096)
+    flows = np.zeros((len(weights), len(jet)))
+    kept = np.zeros((len(turns), (len(jet) + KEEP_EVERY - 1) // KEEP_EVERY), dtype=np.complex128)
+    before = np.tanh(-aim)
+    velocity, once, twice = 0.0, 0.0, 0.0
+    for i in range(len(jet)):
+        speed = max(jet[i], 2.0)
+        back = min(window / (_CONVECTION * speed) * INNER_RATE_HZ, 4094.0)
+        whole = int(back)
+        share = back - whole
+        late = (1.0 - share) * past[(i - whole) % 4096] + share * past[(i - whole - 1) % 4096]
+        keep = np.exp(-2.0 * np.pi * _FASTEST * speed / window / INNER_RATE_HZ)
+        once = keep * once + (1.0 - keep) * late
+        twice = keep * twice + (1.0 - keep) * once
+        bent = np.tanh(flue / speed * growth * twice / half - aim)
+        push = drive * jet[i] * (bent - before) + noise[i]
+        push -= 0.5 * _DENSITY * velocity * abs(velocity) / _SEPARATION**2
+        before = bent
+        total = 0.0
+        for n in range(len(turns)):
+            state[n] = turns[n] * state[n] + pushes[n] * push
+            flow = 2.0 * state[n].real
+            total += flow
+            for k in range(len(weights)):
+                flows[k, i] += weights[k, n] * flow
+        velocity = total / (window * width)
+        past[(i + 1) % 4096] = velocity
+        if i % KEEP_EVERY == 0:
+            kept[:, i // KEEP_EVERY] = state
+    return flows, kept
+
+
+# --- the player and the room -------------------------------------------------------------------------
+
+
+def _breath(curve: Curve, random: np.random.Generator) -> Reals:
+    """Return the breath pressure at the inner rate: the curve's, wandering slowly by about three per cent."""
+    times, values = zip(*curve, strict=True)
+    count = round(times[-1] * INNER_RATE_HZ)
+    now = np.arange(count) / INNER_RATE_HZ
+    return np.asarray(np.interp(now, times, values) * (1.0 + 0.03 * _wander(count, 0.5, random)))
+
+
+def _wander(count: int, seconds: float, random: np.random.Generator) -> Reals:
+    """Return a smooth random curve of unit rms whose values forget each other within about `seconds`."""
+    knots = int(count / INNER_RATE_HZ / (0.35 * seconds)) + 6
+    values = np.convolve(random.standard_normal(knots + 2), [0.5, 0.7, 0.5], mode="valid")
+    places = np.linspace(0.0, knots - 3.001, count) + 1.0
+    left = places.astype(int)
+    t = places - left
+    a, b, c, d = (values[np.clip(left + k, 0, knots - 1)] for k in (-1, 0, 1, 2))
+    return np.asarray(b + 0.5 * t * (c - a + t * (2 * a - 5 * b + 4 * c - d + t * (3 * (b - c) + d - a))))
+
+
+def _microphone(
+    build: FluteBuild,
+    openness: Reals,
+    flows: Reals,
+    noise: Reals,
+    microphone: Microphone,
+    random: np.random.Generator,
+) -> Reals:
+    """Return the pressure at the microphone in Pa: small sources in the open, the jet's own noise, the room."""
+    places = [mm for (mm, _), s in zip(build.tube.holes_mm, openness, strict=True) if s > 0.0]
+    places = [0.0, *places, build.tube.length_mm]
+    heard = np.zeros(flows.shape[1])
+    for index, (place, flow) in enumerate(zip(places, flows, strict=True)):
+        along = place / build.tube.length_mm
+        distance = microphone.head_m + along * (microphone.foot_m - microphone.head_m)
+        sign = -1.0 if index == 0 else 1.0
+        heard += _late(sign * _DENSITY / (4.0 * pi * distance) * _slope(flow), distance)
+    heard += _late(_hiss_heard(build, noise, microphone), microphone.head_m)
+    return heard + microphone.room_pa * _room(len(heard), random)
+
+
+def _hiss_heard(build: FluteBuild, noise_pa: Reals, microphone: Microphone) -> Reals:
+    """Return the turbulence's own sound: the force on the edge as a compact dipole, F'/(4π r c)."""
+    area = build.window_mm * build.window_width_mm * 1e-6
+    return _slope(noise_pa) * area / (4.0 * pi * microphone.head_m * 343.0)
+
+
+def _slope(values: Reals) -> Reals:
+    return np.diff(values, prepend=values[:1]) * INNER_RATE_HZ
+
+
+def _late(values: Reals, distance_m: float) -> Reals:
+    lag = round(distance_m / 343.0 * INNER_RATE_HZ)
+    return np.concatenate([np.zeros(lag), values[: len(values) - lag]])
+
+
+def _room(count: int, random: np.random.Generator) -> Reals:
+    """Return room noise of unit rms: power falling as 1/f above 40 Hz."""
+    spectrum = np.fft.rfft(random.standard_normal(count))
+    frequency = np.fft.rfftfreq(count, 1.0 / INNER_RATE_HZ)
+    shaped = np.fft.irfft(spectrum / np.sqrt(np.maximum(frequency, 40.0)), count)
+    return np.asarray(shaped / np.std(shaped))
+
+
+def _resampled(values: Reals, rate_hz: int) -> Reals:
+    """Return values at another rate, by cutting the spectrum (the recording begins and ends in silence)."""
+    count = round(len(values) * rate_hz / INNER_RATE_HZ)
+    return np.asarray(np.fft.irfft(np.fft.rfft(values)[: count // 2 + 1], count) * count / len(values))
+
+
+# --- the truth ---------------------------------------------------------------------------------------
+
+_FRAME = 110  # kept samples: 10 ms
+_KEPT_RATE_HZ = INNER_RATE_HZ / KEEP_EVERY
+_SHORTEST_S = 0.25
+_LOUD = 0.02  # flow velocity in the sound hole over the jet's: far above what turbulence alone stirs
+_PRESENT = 0.2  # of the strongest mode: the lowest mode above it carries the tone
+
+
+def _truth(build: FluteBuild, kept: Complexes, jet_m_per_s: Reals) -> tuple[SimulatedTone, ...]:
+    """Return the tones in the modes' states."""
+    size = _frames(np.abs(kept))
+    area = build.window_mm * build.window_width_mm * 1e-6
+    strongest = size.max(axis=0)
+    loud = 2.0 * strongest / area > _LOUD * np.maximum(_frames(jet_m_per_s[None, :])[0], 5.0)
+    register = np.where(loud, 1 + np.argmax(size > _PRESENT * strongest, axis=0), 0)
+    tones = (_tone(kept, size[r - 1], r, a, b) for r, a, b in _runs(register) if r)
+    return tuple(tone for tone in tones if tone is not None)
+
+
+def _frames(values: Reals) -> Reals:
+    whole = values.shape[1] // _FRAME
+    return np.asarray(values[:, : whole * _FRAME].reshape(len(values), whole, _FRAME).mean(axis=2))
+
+
+def _runs(labels: npt.NDArray[np.int64]) -> list[tuple[int, int, int]]:
+    """Return (label, first, after last) of each run of equal labels."""
+    edges = [0, *(np.flatnonzero(np.diff(labels)) + 1), len(labels)]
+    return [(int(labels[a]), int(a), int(b)) for a, b in zip(edges, edges[1:], strict=False)]
+
+
+def _tone(kept: Complexes, size: Reals, register: int, first: int, last: int) -> SimulatedTone | None:
+    """Return the tone in frames first to last without its attack and release, or None if it is too short."""
+    level = np.median(size[first:last])
+    even = np.flatnonzero(np.abs(np.log(size[first:last] / level)) < np.log(10.0 ** (2.0 / 20.0)))
+    if not len(even):
+        return None
+    a, b = (first + int(even[0])) * _FRAME, (first + int(even[-1]) + 1) * _FRAME
+    if (b - a) / _KEPT_RATE_HZ < _SHORTEST_S:
+        return None
+    frequency = _mean_frequency(kept[register - 1, a:b])
+    flow = kept[:, a:b].sum(axis=0).real
+    return SimulatedTone(
+        start_s=a / _KEPT_RATE_HZ,
+        end_s=b / _KEPT_RATE_HZ,
+        frequency_hz=frequency,
+        register=register,
+        purity=_purity(flow, frequency),
+    )
+
+
+def _mean_frequency(state: Complexes) -> float:
+    """Return the mean frequency in Hz: turns of the mode's own phase over time, ends averaged over 20 ms."""
+    phase = np.unwrap(np.angle(state))
+    end = min(2 * _FRAME, len(phase) // 4)
+    ramp = (phase[-1] - phase[0]) / (len(phase) - 1)
+    rest = phase - ramp * np.arange(len(phase))
+    turn = ramp + (rest[-end:].mean() - rest[:end].mean()) / (len(phase) - end)
+    return float(turn * _KEPT_RATE_HZ / (2.0 * pi))
+
+
+def _purity(flow: Reals, frequency_hz: float) -> float:
+    power = np.abs(np.fft.rfft(flow * np.hanning(len(flow)))) ** 2
+    axis = np.fft.rfftfreq(len(flow), 1.0 / _KEPT_RATE_HZ)
+    near = np.abs(axis / frequency_hz - np.round(axis / frequency_hz)) < 0.06
+    return float(power[near & (axis > 0.5 * frequency_hz)].sum() / power.sum())
