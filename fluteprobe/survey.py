@@ -11,14 +11,23 @@ from math import log2, sqrt
 from os import cpu_count
 from pathlib import Path
 
+from fluteprobe.flute.bumps import Bump
 from fluteprobe.flute.fingering import Breath, Fingering
-from fluteprobe.flute.register import REGISTERS, Register, RegisterCall, Sounding, decide, registers_of
+from fluteprobe.flute.register import (
+    REGISTERS,
+    Register,
+    RegisterCall,
+    Sounding,
+    register_alone,
+    registers_of,
+)
 from fluteprobe.flute.tuning import A4_HZ, nearest_note, temperature_shift_cents
 from fluteprobe.session import FluteFacts, Problem, Session, Sitting, Take, read_session
 from fluteprobe.sound.recording import RecordingError, open_recording
 from fluteprobe.sound.tone import Tone, read_tones
 
 _FEW_TAKES = 3
+_NO_CALL = RegisterCall(register=None, probability=dict.fromkeys(REGISTERS, 1.0 / 3.0))
 
 Progress = Callable[[int, int], None]
 
@@ -80,7 +89,7 @@ def hear(path: Path | str, *, a4_hz: float = A4_HZ, name: str | None = None) -> 
     recording = open_recording(Path(path))
     tones = _with_cautions(read_tones(recording), recording.cautions)
     sitting = Sitting(a4_hz=a4_hz)
-    return tuple(_reading(name or str(path), None, tone, sitting, decide(())) for tone in tones)
+    return tuple(_reading(name or str(path), None, tone, sitting, _call_alone(tone)) for tone in tones)
 
 
 def measure(folder: Path | str, *, on_take: Progress | None = None) -> Survey:
@@ -169,14 +178,27 @@ def _calls(holes: int, heard: Sequence[tuple[Take, Tone]]) -> list[RegisterCall]
     sounding = [i for i, (_, tone) in enumerate(heard) if tone.frequency_hz is not None]
     decided = registers_of(holes, [_sounding(*heard[i]) for i in sounding])
     calls = dict(zip(sounding, decided, strict=True))
-    none = RegisterCall(register=None, probability=dict.fromkeys(REGISTERS, 1.0 / 3.0))
-    return [calls.get(i, none) for i in range(len(heard))]
+    return [calls.get(i, _NO_CALL) for i in range(len(heard))]
+
+
+def _call_alone(tone: Tone) -> RegisterCall:
+    return _NO_CALL if tone.frequency_hz is None else register_alone(_bumps(tone))
 
 
 def _sounding(take: Take, tone: Tone) -> Sounding:
     return Sounding(
-        take=take.name, fingering=take.fingering, breath=take.breath, pitch_cents=_pitch_cents(tone)
+        take=take.name,
+        fingering=take.fingering,
+        breath=take.breath,
+        pitch_cents=_pitch_cents(tone),
+        bumps=_bumps(tone),
     )
+
+
+def _bumps(tone: Tone) -> tuple[Bump, ...]:
+    """Return the breath resonances as ratios to the tone's own frequency, with their prominence."""
+    own = tone.frequency_hz or 1.0
+    return tuple((bump.frequency_hz / own, bump.prominence_db) for bump in tone.breath_resonances)
 
 
 def _pitch_cents(tone: Tone) -> float:

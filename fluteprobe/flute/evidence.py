@@ -18,7 +18,7 @@ Register = Literal[1, 2, 3]
 REGISTERS: tuple[Register, ...] = (1, 2, 3)
 
 SURE = 0.9
-PRIOR: Mapping[Register, float] = MappingProxyType({1: 0.5, 2: 0.35, 3: 0.15})
+PRIOR: Mapping[Register, float] = MappingProxyType({1: 0.5, 2: 0.38, 3: 0.12})
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

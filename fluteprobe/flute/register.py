@@ -11,23 +11,30 @@ returns a `Clue` and call it from `_own_clues`.
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
+from fluteprobe.flute.bumps import Bump, bump_clue
 from fluteprobe.flute.evidence import PRIOR, REGISTERS, Clue, Evidence, Register, RegisterCall, decide
 from fluteprobe.flute.fingering import Breath, Fingering
 from fluteprobe.flute.ladder import Ladder, companion_clue, known_ladder, ladder_clue
 
-__all__ = ["REGISTERS", "Evidence", "Register", "RegisterCall", "Sounding", "decide", "registers_of"]
+__all__ = ["REGISTERS", "Evidence", "Register", "RegisterCall", "Sounding", "register_alone", "registers_of"]
 
 SAME_PITCH_CENTS = 120.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Sounding:
-    """What is known of one tone: the take it is in, how it was fingered and blown, and its pitch."""
+    """What is known of one tone: its take, fingering and breath, its pitch, its breath resonances."""
 
     take: str
     fingering: Fingering
     breath: Breath
     pitch_cents: float
+    bumps: tuple[Bump, ...] = ()
+
+
+def register_alone(bumps: Sequence[Bump]) -> RegisterCall:
+    """Decide the register of one tone of which nothing is known but its breath resonances."""
+    return decide([bump_clue(bumps)])
 
 
 def registers_of(holes: int, soundings: Sequence[Sounding]) -> list[RegisterCall]:
@@ -42,9 +49,9 @@ def registers_of(holes: int, soundings: Sequence[Sounding]) -> list[RegisterCall
 
 
 def _own_clues(flute: Ladder, sounding: Sounding, soundings: Sequence[Sounding]) -> list[Clue]:
-    """Return what a tone's own pitch and its take's name say."""
+    """Return what a tone's breath resonances, its pitch and its take's name say."""
     clue = ladder_clue(flute, sounding.fingering, sounding.pitch_cents)
-    clues = [] if clue is None else [clue]
+    clues = [bump_clue(sounding.bumps)] if clue is None else [bump_clue(sounding.bumps), clue]
     highest = max(other.pitch_cents for other in soundings if other.take == sounding.take)
     if sounding.breath != "over" or sounding.pitch_cents > highest - SAME_PITCH_CENTS:
         clues.append(breath_clue(sounding.breath))

@@ -17,7 +17,7 @@ A fan's hiss and a room's reverberation have no bumps as narrow as an air column
 """
 
 from dataclasses import dataclass
-from math import erfc, sqrt
+from math import erfc, log10, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -38,6 +38,8 @@ _PEAK = 1
 _GAP = 2
 _FLANK = 5
 _FEWEST_LINES = 3
+_CORE = 0.03
+_VALLEY = (0.14, 0.36)
 # Hann-windowed segments with half overlap: 0.95 of them count as independent; of neighbouring lines, 1 / 1.5
 # (Percival & Walden, Spectral Analysis for Physical Applications, 1993, secs. 6.10, 6.17).
 _SEGMENT_SHARE = 0.95
@@ -115,8 +117,42 @@ def breath_resonances(
     noisy = spectrum.variation > _STEADY_CV
     if room is not None:
         noisy &= spectrum.power > _ROOM_MARGIN * room.power
+    under = _under_partials(spectrum, np.asarray(ratio), noisy)
     chance = np.where(usable & noisy, np.minimum(chance * max(int(usable.sum() * _LINE_SHARE), 1), 1.0), 1.0)
-    return tuple(_bump(spectrum, line, prominence, chance) for line in _peaks(prominence, chance))
+    between = [_bump(spectrum, line, prominence, chance) for line in _peaks(prominence, chance)]
+    return tuple(sorted([*between, *under], key=lambda bump: bump.frequency_hz))
+
+
+def _under_partials(
+    spectrum: NoiseSpectrum, ratio: Floats, noisy: NDArray[np.bool_]
+) -> list[BreathResonance]:
+    """Find the resonances that partials 1 to 3 stand on, from the noise on both of their skirts.
+
+    The lines nearest to the partial are left out, where what is left of it may be; the skirts' quieter side
+    is held against the louder of the two valleys, so that a slope is no skirt. Their width is not told.
+    """
+    found = []
+    freedom = 2.0 * _SEGMENT_SHARE * spectrum.segments * _LINE_SHARE
+    for order in (1, 2, 3):
+        offset = ratio - order
+        sides = [noisy & (side * offset > _CORE) & (side * offset <= PARTIAL_REACH) for side in (-1, 1)]
+        valleys = [noisy & (side * offset > _VALLEY[0]) & (side * offset < _VALLEY[1]) for side in (-1, 1)]
+        if min(int(part.sum()) for part in (*sides, *valleys)) < _FEWEST_LINES:
+            continue
+        skirt = min(float(spectrum.power[side].mean()) for side in sides)
+        floor = max(float(spectrum.power[valley].mean()) for valley in valleys)
+        lines = [np.array([min(float(part.sum()) for part in parts)]) for parts in (sides, valleys)]
+        chance = float(_f_tail(np.array([skirt / floor]), freedom * lines[0], freedom * lines[1])[0])
+        if chance < CHANCE:
+            found.append(
+                BreathResonance(
+                    frequency_hz=order * float(spectrum.line_hz / ratio[1]),
+                    width_hz=2.0 * PARTIAL_REACH * float(spectrum.line_hz / ratio[1]),
+                    prominence_db=10.0 * log10(skirt / floor),
+                    chance=chance,
+                )
+            )
+    return found
 
 
 def _prominence(spectrum: NoiseSpectrum, usable: NDArray[np.bool_]) -> tuple[Floats, Floats]:

@@ -43,8 +43,8 @@ _SHORT_S = 0.4
 _NOISY_DB = 12.0
 _UNSTEADY_CENTS = 12.0
 _DRIFTING_CENTS = 20.0
+_GLIDING_CENTS = 80.0
 _QUIET_DB = -50.0
-_CLIPPED_SHARE = 0.001
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -71,19 +71,27 @@ class Tone:
 def read_tones(recording: Recording) -> tuple[Tone, ...]:
     """Find and measure every steady tone of a recording; a recording without one gives the breath alone."""
     spans = find_spans(recording)
-    tones = [_read_tone(recording, span) for span in spans if span.frequency_hz is not None]
+    stops = [0, *(span.stop for span in spans[:-1])]
+    starts = [*(span.start for span in spans[1:]), recording.frames]
+    tones = [
+        _read_tone(recording, span, (stop, start))
+        for span, stop, start in zip(spans, stops, starts, strict=True)
+        if span.frequency_hz is not None
+    ]
     found = tuple(tone for tone in tones if tone is not None and tone.kind != "breath only")
     return found or (_breath_alone(recording, spans),)
 
 
-def _read_tone(recording: Recording, span: Span) -> Tone | None:
-    """Measure one span: settle the octave, trim the edges, follow the phase, weigh the partials."""
+def _read_tone(recording: Recording, span: Span, between: tuple[int, int]) -> Tone | None:
+    """Measure one span between its neighbours: octave, edges, phase, partials, breath; None if unsteady."""
     assert span.frequency_hz is not None  # noqa: S101  (spans without pitch are sorted out before)
-    steady = _steady_part(recording, span, span.frequency_hz)
+    steady = _steady_part(recording, span, span.frequency_hz, between)
     if steady.stop - steady.start < SHORTEST_TONE_S * recording.rate_hz:
         return None
     samples = recording.read(steady.start, steady.stop)
     measured = _measured(samples, recording.rate_hz, steady.frequency_hz)
+    if abs(measured.pitch.drift_cents) > _GLIDING_CENTS:
+        return None
     cycles = _whole_cycles(measured.pitch.vibrato, len(samples), recording.rate_hz)
     if cycles < len(samples):
         steady = replace(steady, start=steady.start + (len(samples) - cycles) // 2)
@@ -103,13 +111,13 @@ class _Steady:
     attack_ms: float | None
 
 
-def _steady_part(recording: Recording, span: Span, coarse_hz: float) -> _Steady:
+def _steady_part(recording: Recording, span: Span, coarse_hz: float, between: tuple[int, int]) -> _Steady:
     """Trim a span to where the partials have risen and have not yet fallen, and the pitch has settled."""
     rate, margin = recording.rate_hz, int(_MARGIN_S * recording.rate_hz)
     stop = min(span.stop, span.start + int(LONGEST_TONE_S * rate))
     frequency_hz = settle_octave(recording.read(span.start, stop), rate, coarse_hz)
-    first = max(span.start - margin, 0)
-    around = recording.read(first, min(stop + margin, recording.frames))
+    first = min(max(span.start - margin, between[0]), span.start)
+    around = recording.read(first, max(min(stop + margin, between[1]), stop))
     guide = demodulate(around, rate, frequency_hz, orders_below_nyquist(rate, frequency_hz, GUIDES))
     inside = slice((span.start - first) // guide.hop, max((stop - first) // guide.hop, 1))
     low, high, attack = _edges(guide, inside)
@@ -216,10 +224,7 @@ def _resonances(measured: _Measured, rate_hz: int) -> tuple[BreathResonance, ...
 def _cautions(samples: Samples, rate_hz: int, pitch: Pitch, harmonic_to_noise_db: float) -> list[str]:
     """Say in plain words what makes this tone's numbers less sure."""
     cautions = []
-    peak = float(np.max(np.abs(samples)))
     level_db = 20.0 * np.log10(float(np.sqrt(np.mean(samples.astype(np.float64) ** 2))) + 1e-20)
-    if peak > 0.5 and float(np.mean(np.abs(samples) >= 0.999 * peak)) > _CLIPPED_SHARE * 10:
-        cautions.append("clipped: record with less gain or from farther away")
     if level_db < _QUIET_DB:
         cautions.append(f"very quiet ({level_db:.0f} dB under full scale): record closer")
     if harmonic_to_noise_db < _NOISY_DB:
