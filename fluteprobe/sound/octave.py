@@ -23,6 +23,7 @@ _PARTS = {2: (8, np.array([0.5, 1.5, 2.5])), 3: (9, np.array([1 / 3, 2 / 3, 4 / 
 _LEAST_DB = -50.0
 _ALONE = 6.0
 _GATHERED = 0.5
+_SAME_DB = 8.0
 _SURE = 1e-6
 _LIKELY = 1e-3
 
@@ -81,3 +82,18 @@ def _multiple(tracks: Tracks) -> float | None:
 
 def _power(tracks: Tracks) -> Floats:
     return np.asarray(np.mean(np.abs(tracks.phasors) ** 2, axis=0))
+
+
+def is_one_tone(before: Samples, after: Samples, rate_hz: int, lower_hz: float) -> bool:
+    """Whether two neighbouring stretches, read an octave or a twelfth apart, hold the same lines.
+
+    The lower of the two pitches has lines that the higher has not. If they are as strong (within 8 dB)
+    against the rest on both sides, nothing broke: it is one tone, whose octave a short stretch hid.
+    """
+    orders = orders_below_nyquist(rate_hz, lower_hz, _ORDERS)
+    shares = []
+    for samples in (before, after):
+        power = _power(demodulate(samples, rate_hz, lower_hz, orders))
+        extra = power[(orders % 2 != 0) & (orders % 3 != 0)].sum()
+        shares.append(10.0 * np.log10((extra + 1e-20) / (power.sum() + 1e-20)))
+    return bool(abs(shares[0] - shares[1]) < _SAME_DB)

@@ -4,6 +4,7 @@ Conventions: times in seconds from the start of the recording; frequencies in Hz
 against the strongest partial of the same tone; `uncertainty_cents` is a standard uncertainty (k = 1).
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import Literal
 
@@ -11,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fluteprobe.sound.breath import BreathResonance, breath_resonances, noise_spectrum
-from fluteprobe.sound.octave import settle_octave
+from fluteprobe.sound.octave import is_one_tone, settle_octave
 from fluteprobe.sound.partials import (
     Partial,
     Samples,
@@ -34,6 +35,8 @@ Floats = NDArray[np.float64]
 LONGEST_TONE_S = 30.0
 
 _MARGIN_S = 0.15
+_GAP_S = 0.08
+_SAME_CENTS = 40.0
 _EDGE_DB = 3.0
 _ATTACK_DB = 20.0
 _EDGE_REFERENCE_S = 0.2
@@ -71,21 +74,59 @@ class Tone:
 def read_tones(recording: Recording) -> tuple[Tone, ...]:
     """Find and measure every steady tone of a recording; a recording without one gives the breath alone."""
     spans = find_spans(recording)
-    stops = [0, *(span.stop for span in spans[:-1])]
-    starts = [*(span.start for span in spans[1:]), recording.frames]
+    settled = _rejoined(
+        recording, [_settled(recording, span) for span in spans if span.frequency_hz is not None]
+    )
+    earliest = [0, *((span.start + span.stop) // 2 for span in settled)]
+    latest = [*(span.start for span in settled[1:]), recording.frames]
     tones = [
-        _read_tone(recording, span, (stop, start))
-        for span, stop, start in zip(spans, stops, starts, strict=True)
-        if span.frequency_hz is not None
+        _read_tone(recording, span, bounds) for span, *bounds in zip(settled, earliest, latest, strict=False)
     ]
     found = tuple(tone for tone in tones if tone is not None and tone.kind != "breath only")
     return found or (_breath_alone(recording, spans),)
 
 
-def _read_tone(recording: Recording, span: Span, between: tuple[int, int]) -> Tone | None:
-    """Measure one span between its neighbours: octave, edges, phase, partials, breath; None if unsteady."""
+def _settled(recording: Recording, span: Span) -> Span:
+    """Settle a span's octave; a long one is cut to what is measured."""
     assert span.frequency_hz is not None  # noqa: S101  (spans without pitch are sorted out before)
-    steady = _steady_part(recording, span, span.frequency_hz, between)
+    stop = min(span.stop, span.start + int(LONGEST_TONE_S * recording.rate_hz))
+    samples = recording.read(span.start, stop)
+    return replace(span, stop=stop, frequency_hz=settle_octave(samples, recording.rate_hz, span.frequency_hz))
+
+
+def _rejoined(recording: Recording, spans: list[Span]) -> list[Span]:
+    """Join neighbours that are one tone: cut apart by a doubt about the octave, or by a moment's noise."""
+    joined: list[Span] = []
+    for span in spans:
+        if joined and _is_continued(recording, joined[-1], span):
+            before = joined.pop()
+            longer = max(before, span, key=lambda part: part.stop - part.start)
+            joined.append(_settled(recording, replace(longer, start=before.start, stop=span.stop)))
+        else:
+            joined.append(span)
+    return joined
+
+
+def _is_continued(recording: Recording, before: Span, after: Span) -> bool:
+    """Whether the sound goes on without a break from one span into the next."""
+    assert before.frequency_hz is not None and after.frequency_hz is not None  # noqa: S101, PT018
+    if after.start - before.stop > _GAP_S * recording.rate_hz:
+        return False
+    ratio = max(before.frequency_hz, after.frequency_hz) / min(before.frequency_hz, after.frequency_hz)
+    off_cents = 1200.0 * abs(np.log2(ratio / round(ratio)))
+    if off_cents > _SAME_CENTS or round(ratio) > 3:
+        return False
+    if round(ratio) == 1:
+        return True
+    lower_hz = min(before.frequency_hz, after.frequency_hz)
+    parts = [recording.read(span.start, span.stop) for span in (before, after)]
+    return is_one_tone(parts[0], parts[1], recording.rate_hz, lower_hz)
+
+
+def _read_tone(recording: Recording, span: Span, bounds: Sequence[int]) -> Tone | None:
+    """Measure one span within bounds that its neighbours set; None if it is too short or glides."""
+    assert span.frequency_hz is not None  # noqa: S101  (spans without pitch are sorted out before)
+    steady = _steady_part(recording, span, span.frequency_hz, bounds)
     if steady.stop - steady.start < SHORTEST_TONE_S * recording.rate_hz:
         return None
     samples = recording.read(steady.start, steady.stop)
@@ -111,13 +152,12 @@ class _Steady:
     attack_ms: float | None
 
 
-def _steady_part(recording: Recording, span: Span, coarse_hz: float, between: tuple[int, int]) -> _Steady:
+def _steady_part(recording: Recording, span: Span, frequency_hz: float, bounds: Sequence[int]) -> _Steady:
     """Trim a span to where the partials have risen and have not yet fallen, and the pitch has settled."""
     rate, margin = recording.rate_hz, int(_MARGIN_S * recording.rate_hz)
-    stop = min(span.stop, span.start + int(LONGEST_TONE_S * rate))
-    frequency_hz = settle_octave(recording.read(span.start, stop), rate, coarse_hz)
-    first = min(max(span.start - margin, between[0]), span.start)
-    around = recording.read(first, max(min(stop + margin, between[1]), stop))
+    stop = span.stop
+    first = min(max(span.start - margin, bounds[0]), span.start)
+    around = recording.read(first, max(min(stop + margin, bounds[1]), stop))
     guide = demodulate(around, rate, frequency_hz, orders_below_nyquist(rate, frequency_hz, GUIDES))
     inside = slice((span.start - first) // guide.hop, max((stop - first) // guide.hop, 1))
     low, high, attack = _edges(guide, inside)
@@ -143,7 +183,7 @@ def _edges(guide: Tracks, inside: slice) -> tuple[int, int, float | None]:
     high = len(level) - 1 - _last_below(fallen, float(np.median(end)) - _EDGE_DB)
     quiet = _last_below(level[:low], float(np.median(risen)) - _ATTACK_DB)
     attack = (low - quiet) * guide.hop_s * 1000.0 if quiet else None
-    return _settled(guide, low, high), high, attack
+    return _at_rest(guide, low, high), high, attack
 
 
 def _last_below(level: Floats, threshold: float) -> int:
@@ -152,7 +192,7 @@ def _last_below(level: Floats, threshold: float) -> int:
     return int(below[-1]) + 1 if len(below) else 0
 
 
-def _settled(guide: Tracks, low: int, high: int) -> int:
+def _at_rest(guide: Tracks, low: int, high: int) -> int:
     """Return the first frame from which the pitch is near that of the next moments."""
     strongest = int(np.argmax(np.sum(np.abs(guide.phasors[low:high]) ** 2, axis=0)))
     phasors = guide.phasors[low:high, strongest]
