@@ -26,6 +26,7 @@ SCALES = {
 
 _LOW_TRIES = (1.0, 0.8, 1.25)
 _UPPER_TRIES = (1.0, 1.3, 1.7, 2.3, 3.2, 4.4)
+_PAUSE_S = 0.25
 _ROUNDS = 14
 _LEAST_WOOD_MM = 5.0
 
@@ -34,8 +35,9 @@ _LEAST_WOOD_MM = 5.0
 class Plan:
     """A take to play: the fingering, the breath in its name, its number, and the registers aimed at in turn.
 
-    `force` multiplies the breath pressure. A wet flue throws the jet off the edge and roughens it: mostly
-    nothing speaks.
+    `force` multiplies the breath pressure. Tongued, the tones have a short pause between them; otherwise the
+    register breaks in mid-breath, while the low tone first rises in pitch. A wet flue throws
+    the jet off the edge and roughens it: mostly nothing speaks.
     """
 
     fingering: Fingering
@@ -43,6 +45,7 @@ class Plan:
     number: int = 1
     aims: tuple[int, ...] = (1,)
     force: float = 1.0
+    tongued: bool = True
     wet_flue: bool = False
 
     @property
@@ -133,9 +136,11 @@ def breath_curve(build: FluteBuild, openness: Sequence[float], plan: Plan, blow_
     """Return the breath curve of a plan: the registers aimed at, in equal shares of the time."""
     share = blow_s / len(plan.aims) * (1.0 if len(plan.aims) == 1 else 1.2)
     pressures: list[float] = []
+    blows: list[tuple[float, float]] = []
     for aim in plan.aims:
-        pressures.append(sought_pressure_pa(build, openness, aim, pressures))
-    return steps([(plan.force * pressure, share) for pressure in pressures])
+        pressures.append(sought_pressure_pa(build, openness, aim, () if plan.tongued else pressures))
+        blows += [(plan.force * pressures[-1], share), *([(0.0, _PAUSE_S)] if plan.tongued else [])]
+    return steps(blows[:-1] if plan.tongued else blows)
 
 
 def sought_pressure_pa(
@@ -199,7 +204,7 @@ def _drawn(random: np.random.Generator) -> FluteBuild:
         window_mm=window,
         window_width_mm=width,
         flue_mm=window * random.uniform(0.19, 0.25),
-        aim=random.uniform(-0.45, 0.45),
+        aim=random.choice([-1.0, 1.0]) * random.uniform(0.05, 0.35),
         hiss=0.006 * 10.0 ** random.uniform(-0.3, 0.4),
     )
 

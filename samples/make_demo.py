@@ -1,7 +1,7 @@
 """Makes the demo flutes' session folders anew: flute.toml, takes/ and truth.json.
 
-Run it from anywhere: `python samples/make_demo.py [FOLDER]`. The same files come out each time. The flutes, their
-names and makers are invented; the recordings are simulated (see simulation.py).
+Run it from anywhere: `python samples/make_demo.py [FOLDER]`. The same files come out each time. The flutes,
+their names and makers are invented; the recordings are simulated (see simulation.py).
 """
 
 import json
@@ -12,7 +12,7 @@ from pathlib import Path
 import numpy as np
 import soundfile
 from builds import Plan, head_correction_mm, lay_out, play
-from simulation import FluteBuild, Microphone, Simulated
+from simulation import FluteBuild, Simulated
 
 from fluteprobe.flute.fingering import Fingering, ladder
 from fluteprobe.flute.tube import Tube
@@ -20,7 +20,7 @@ from fluteprobe.flute.tuning import Note
 from fluteprobe.session import FluteFacts, Sitting, facts_text
 
 HERE = Path(__file__).parent
-RATE_HZ = 44_100
+_WINDOW, _WINDOW_WIDTH = 0.235, 0.58  # of the bore
 _LOUDEST = 0.7  # sample value of the loudest take of a flute
 
 
@@ -38,21 +38,15 @@ class Demo:
 
 def heron() -> Demo:
     """Return the six-hole mid-range flute."""
-    build = _build(
-        bore_mm=19.0,
-        wall_mm=4.0,
-        sizes_mm=(8.0, 8.0, 5.0, 8.5, 8.5, 9.0),
-        lowest=Note(67),
-        scale=(0, 3, 5, 7, 8, 10, 12),
-        deviations_cents=(8.0, 12.0, -6.0, 8.0, -4.0, 16.0, 19.0),
-        temperature_c=22.0,
-        aim=0.25,
-    )
+    tube = _tube(bore_mm=19.0, wall_mm=4.0, sizes_mm=(8.0, 8.0, 5.0, 8.5, 8.5, 9.0), temperature_c=22.0)
+    off_cents = (8.0, 12.0, -6.0, 8.0, -4.0, 16.0, 19.0)
+    tube = lay_out(tube, Note(67).frequency_hz(), (0, 3, 5, 7, 8, 10, 12), off_cents)
+    build = _voiced(tube, aim=0.18)
     plans = (
         *(Plan(fingering=each) for each in ladder(6)),
         _plan("xxxxxx", number=2, force=1.12),
         _plan("xxxxxx", "over", aims=(1, 2)),
-        _plan("xxxxxx", "over", number=2, aims=(3,)),
+        _plan("xxvxxx", "over", aims=(3,)),
         _plan("xxxxxo", "over", aims=(2,)),
         _plan("xxxxoo", "over", aims=(2,)),
         _plan("oxxxxx", "over", aims=(2,)),
@@ -71,16 +65,10 @@ def heron() -> Demo:
 
 def bittern() -> Demo:
     """Return the five-hole low flute."""
-    build = _build(
-        bore_mm=25.0,
-        wall_mm=4.5,
-        sizes_mm=(10.0, 10.5, 10.0, 11.0, 11.5),
-        lowest=Note(57),
-        scale=(0, 3, 5, 7, 10, 12),
-        deviations_cents=(4.0, 9.0, 14.0, 5.0, -8.0, 21.0),
-        temperature_c=19.0,
-        aim=-0.2,
-    )
+    tube = _tube(bore_mm=25.0, wall_mm=4.5, sizes_mm=(10.0, 10.5, 10.0, 11.0, 11.5), temperature_c=19.0)
+    off_cents = (4.0, 9.0, 14.0, 5.0, -8.0, 21.0)
+    tube = lay_out(tube, Note(57).frequency_hz(), (0, 3, 5, 7, 10, 12), off_cents)
+    build = _voiced(tube, aim=-0.2)
     plans = (
         *(Plan(fingering=each) for each in ladder(5)),
         _plan("xxxxx", number=2, force=0.9),
@@ -110,7 +98,7 @@ def make(demo: Demo, where: Path) -> None:
     gain = _LOUDEST / max(float(np.abs(take.samples).max()) for take in takes.values())
     for name, take in takes.items():
         samples = np.round(take.samples * gain * 32767.0).astype(np.int16)
-        soundfile.write(folder / "takes" / f"{name}.flac", samples, RATE_HZ, subtype="PCM_16")
+        soundfile.write(folder / "takes" / f"{name}.flac", samples, take.rate_hz, subtype="PCM_16")
     truth = {f"takes/{name}.flac": _tones(take) for name, take in takes.items()}
     (folder / "truth.json").write_text(json.dumps(truth, indent=1) + "\n", encoding="utf-8")
 
@@ -127,29 +115,23 @@ def _plan(word: str, breath: str = "normal", **wishes: object) -> Plan:
     return replace(Plan(fingering=Fingering(word)), breath=breath, **wishes)  # type: ignore[arg-type]
 
 
-def _build(
-    *,
-    bore_mm: float,
-    wall_mm: float,
-    sizes_mm: tuple[float, ...],
-    lowest: Note,
-    scale: tuple[int, ...],
-    deviations_cents: tuple[float, ...],
-    temperature_c: float,
-    aim: float,
-) -> FluteBuild:
-    window, width = 0.235 * bore_mm, 0.58 * bore_mm
-    holes = tuple((100.0 * (k + 1), size) for k, size in enumerate(sizes_mm))
-    tube = Tube(
+def _tube(*, bore_mm: float, wall_mm: float, sizes_mm: tuple[float, ...], temperature_c: float) -> Tube:
+    """Return a tube with its holes anywhere, for `lay_out` to place."""
+    return Tube(
         bore_mm=bore_mm,
-        length_mm=100.0 * (len(holes) + 1),
+        length_mm=100.0 * (len(sizes_mm) + 1),
         wall_mm=wall_mm,
-        holes_mm=holes,
-        head_correction_mm=head_correction_mm(bore_mm, window, width),
+        holes_mm=tuple((100.0 * (k + 1), size) for k, size in enumerate(sizes_mm)),
+        head_correction_mm=head_correction_mm(bore_mm, _WINDOW * bore_mm, _WINDOW_WIDTH * bore_mm),
         temperature_c=temperature_c,
     )
-    tube = lay_out(tube, lowest.frequency_hz(), scale, deviations_cents)
-    return FluteBuild(tube=tube, window_mm=window, window_width_mm=width, flue_mm=0.22 * window, aim=aim)
+
+
+def _voiced(tube: Tube, aim: float) -> FluteBuild:
+    window, width = _WINDOW * tube.bore_mm, _WINDOW_WIDTH * tube.bore_mm
+    return FluteBuild(
+        tube=tube, window_mm=window, window_width_mm=width, flue_mm=0.22 * window, aim=aim, hiss=0.004
+    )
 
 
 def _facts(build: FluteBuild, **words: str) -> FluteFacts:
@@ -160,7 +142,7 @@ def _facts(build: FluteBuild, **words: str) -> FluteFacts:
         bore_mm=tube.bore_mm,
         wall_mm=tube.wall_mm,
         holes_mm=holes,
-        **words,  # type: ignore[arg-type]
+        **words,
     )
 
 

@@ -1,9 +1,9 @@
 """A duct flute that is blown: the modes of the tube model, driven by a jet, and a microphone before it.
 
 Nothing is added at chosen frequencies. The air column is its modes (frequency, width and strength from
-`fluteprobe.flute.tube`); the jet crosses the sound hole in a finite time, is carried in and out by the column's
-own flow, and drives it through a saturating curve; the jet's turbulence pushes every mode. Registers, breaks
-between them and the bumps in the breath noise follow.
+`fluteprobe.flute.tube`); the jet crosses the sound hole in a finite time, is carried in and out by the
+column's own flow, and drives it through a saturating curve; the jet's turbulence pushes every mode.
+Registers, breaks between them and the bumps in the breath noise follow.
 
 Equations (Verge, Hirschberg & Caussé, JASA 101, 2914 (1997); Auvray, Fabre et al., JASA 131, 1574 (2012)):
 jet speed      U = √(2p/ρ)
@@ -11,13 +11,15 @@ deflection     η(t) = (h/U) exp(0.4 W/h) v(t − W/(0.5 U)), v the flow's veloc
 drive          Δp = ρ δ b U/W · d/dt tanh((η − y0)/b), δ = (4/π)√(2hW), b = 2h/5
 losses         Δp = −½ρ (v/0.6)² sign(v), the flow separating at the edge
 turbulence     Δp = ρU²/2 · share · noise, first-order low-pass at 0.3 U/W
-W length of the sound hole from flue to edge, h height of the flue, y0 how far the edge is off the jet's middle.
+W length of the sound hole from flue to edge, h height of the flue, y0 how far the edge is off the jet's
+middle. The deflection passes two first-order low-passes at 0.2 U/W, where a jet's growth ends.
 
 Units are in the names; the random numbers come from the seeds, so the same call gives the same samples.
 """
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 from math import pi
 from typing import Any
 
@@ -50,8 +52,8 @@ _STROUHAL_NORMAL = 0.08  # f W / U where a tone speaks well: a quarter period's 
 class FluteBuild:
     """A flute to be blown: its tube and its voicing.
 
-    `window_mm` is from the flue to the edge, `window_width_mm` across it, `flue_mm` the flue's height, `aim` the
-    edge's distance from the jet's middle in jet half-widths, `hiss` the turbulence's share of ρU²/2.
+    `window_mm` is from the flue to the edge, `window_width_mm` across it, `flue_mm` the flue's height, `aim`
+    the edge's distance from the jet's middle in jet half-widths, `hiss` the turbulence's share of ρU²/2.
     """
 
     tube: Tube
@@ -64,16 +66,17 @@ class FluteBuild:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Microphone:
-    """Where and in what room it is heard.
+    """Where, in what room and how it is heard.
 
-    Distances in m from the sound hole and from the foot's side; `room_pa` is the room noise's rms, and
-    `full_scale_pa` the pressure of sample value 1.
+    Distances in m from the sound hole and from the foot; `room_pa` is the room noise's rms, `full_scale_pa`
+    the pressure of sample value 1, `rate_hz` the recording's.
     """
 
     head_m: float = 0.45
     foot_m: float = 0.60
     room_pa: float = 1e-3
     full_scale_pa: float = 4.0
+    rate_hz: int = 44_100
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -111,11 +114,16 @@ def steady(pressure_pa: float, duration_s: float, attack_s: float = 0.05, silenc
 
 
 def steps(blows: Sequence[tuple[float, float]], attack_s: float = 0.05, silence_s: float = 0.2) -> Curve:
-    """Return a breath curve that goes through several (pressure in Pa, duration in s) without a pause."""
-    curve, now = [(0.0, 0.0), (silence_s, 0.0)], silence_s
+    """Return a breath curve through several (pressure in Pa, duration in s).
+
+    A pressure follows the one before it within 20 ms, in the same breath. A pressure of 0 is a pause: what
+    comes after it is tongued anew.
+    """
+    curve, now, before = [(0.0, 0.0), (silence_s, 0.0)], silence_s, 0.0
     for pressure, duration in blows:
-        curve += [(now + attack_s, pressure), (now + duration, pressure)]
-        now += duration
+        change_s = attack_s if before == 0.0 else 0.02
+        curve += [(now + change_s, pressure), (now + duration, pressure)]
+        now, before = now + duration, pressure
     return [*curve, (now + 0.06, 0.0), (now + silence_s, 0.0)]
 
 
@@ -135,7 +143,6 @@ def blow(
     curve: Curve,
     *,
     seed: int,
-    rate_hz: int = 44_100,
     microphone: Microphone | None = None,
 ) -> Simulated:
     """Blow a flute and record it.
@@ -150,8 +157,6 @@ def blow(
         Breath pressure: (time in s, Pa) breakpoints; the last one ends the recording.
     seed
         For breath, turbulence and room.
-    rate_hz
-        Of the recording.
     microphone
         Where it is heard; the default is half a metre away in a quiet room.
     """
@@ -162,16 +167,40 @@ def blow(
     random = np.random.default_rng(seed)
     modes = _modes(build.tube, openness)
     pressure = _breath(curve, random)
-    flows, kept, noise = _run(build, openness, modes, pressure, random)
-    heard = _microphone(build, openness, flows, noise, microphone, random)
-    samples = _resampled(heard, rate_hz) / microphone.full_scale_pa
-    jet = np.sqrt(2.0 * pressure[::KEEP_EVERY] / _DENSITY)
+    blown = _blown(build, openness, modes, pressure, random)
+    heard = _heard(build, blown, microphone)
+    heard += microphone.room_pa * _room(len(heard), random)
+    samples = _resampled(heard, microphone.rate_hz) / microphone.full_scale_pa
     return Simulated(
-        samples=samples.astype(np.float32), rate_hz=rate_hz, truth=_truth(build, kept, jet), modes=modes
+        samples=samples.astype(np.float32),
+        rate_hz=microphone.rate_hz,
+        truth=_truth(build, blown, curve),
+        modes=modes,
     )
 
 
 # --- the column --------------------------------------------------------------------------------------
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Blown:
+    """What went on in the flute: at the inner rate, but for `states`, which keeps every KEEP_EVERYth.
+
+    `flows` are into the sound hole and out of each opening, in m³/s, whose places are `places_mm`; `noise_pa`
+    is the turbulence; `states` are the modes', shape (modes, kept).
+    """
+
+    jet_m_per_s: Reals
+    noise_pa: Reals
+    flows: Reals
+    places_mm: tuple[float, ...]
+    states: Complexes
+
+
+def mode_poles(modes: Resonances) -> Complexes:
+    """Return each mode's pole in rad/s; its real part is −π times the width."""
+    decay = pi * modes.width_hz
+    return np.asarray(-decay + 1j * np.sqrt((2.0 * pi * modes.frequency_hz) ** 2 - decay**2))
 
 
 def _modes(tube: Tube, openness: Reals) -> Resonances:
@@ -184,49 +213,50 @@ def _modes(tube: Tube, openness: Reals) -> Resonances:
     )
 
 
-def _poles(modes: Resonances) -> Complexes:
-    """Return each mode's pole in rad/s: its real part is −π width."""
-    decay = pi * modes.width_hz
-    return np.asarray(-decay + 1j * np.sqrt((2.0 * pi * modes.frequency_hz) ** 2 - decay**2))
-
-
 def _pushes(modes: Resonances, poles: Complexes, impedance: float) -> Complexes:
     """Return what a pressure held for one inner sample adds to each mode's state.
 
-    A mode's admittance jω a/(ω0² − ω² + jω 2π width), a = strength 2π width / impedance, as its pole's residue.
+    A mode's admittance is jω a/(ω0² − ω² + jω 2π width) with a = strength 2π width / impedance; this is its
+    residue at the pole.
     """
     residue = modes.strength * 2.0 * pi * modes.width_hz / impedance * poles / (2j * poles.imag)
     return np.asarray(residue * np.expm1(poles / INNER_RATE_HZ) / poles)
 
 
-def _run(
+def _blown(
     build: FluteBuild, openness: Reals, modes: Resonances, pressure_pa: Reals, random: np.random.Generator
-) -> tuple[Reals, Complexes, Reals]:
-    """Return flows in m³/s (head, then openings; shape (openings + 1, samples)), states kept, and the noise."""
+) -> _Blown:
     tube = build.tube
     speed = speed_of_sound_m_per_s(tube.temperature_c)
-    poles = _poles(modes)
+    poles = mode_poles(modes)
     pushes = _pushes(modes, poles, _DENSITY * speed / (pi * tube.radius_m**2))
-    weights = outflows(tube, openness, modes.frequency_hz).real
-    weights = np.vstack([np.ones(len(poles)), weights[:-1][openness > 0.0], weights[-1:]])
+    uncovered = np.append(openness > 0.0, True)
+    weights = outflows(tube, openness, modes.frequency_hz).real[uncovered]
     jet = np.sqrt(2.0 * pressure_pa / _DENSITY)
     noise = _turbulence(jet, build, random)
-    voicing = np.array(
-        [build.window_mm / 1000.0, build.window_width_mm / 1000.0, build.flue_mm / 1000.0, build.aim]
+    lengths = np.array([build.window_mm, build.window_width_mm, build.flue_mm]) / 1000.0
+    flows, states = _time_loop(
+        np.array([np.exp(poles / INNER_RATE_HZ), pushes]),
+        np.vstack([np.ones(len(poles)), weights]),
+        np.array([jet, noise]),
+        lengths,
+        build.aim,
     )
-    flows, kept = _time_loop(np.exp(poles / INNER_RATE_HZ), pushes, weights, jet, noise, voicing)
-    return flows, kept, noise
+    places = np.array([*(place for place, _ in tube.holes_mm), tube.length_mm])[uncovered]
+    return _Blown(
+        jet_m_per_s=jet, noise_pa=noise, flows=flows, places_mm=(0.0, *places.tolist()), states=states
+    )
 
 
 def _turbulence(jet_m_per_s: Reals, build: FluteBuild, random: np.random.Generator) -> Reals:
-    """Return the turbulence's pressure in Pa: unit-power noise, low-passed at 0.3 U/W, times share · ρU²/2."""
+    """Return the turbulence's pressure in Pa: unit noise, low-passed at 0.3 U/W, times its share of ρU²/2."""
     corner = 0.3 * np.maximum(jet_m_per_s, 1.0) / (build.window_mm / 1000.0)
     keep = np.exp(-2.0 * pi * corner / INNER_RATE_HZ)
     unit = _low_passed(random.standard_normal(len(jet_m_per_s)), keep)
     return build.hiss * 0.5 * _DENSITY * jet_m_per_s**2 * unit
 
 
-@numba.njit(cache=False)  # type: ignore[untyped-decorator]
+@numba.njit(cache=False)
 def _low_passed(white: Reals, keep: Reals) -> Reals:
     out = np.empty_like(white)
     state = 0.0
@@ -236,12 +266,16 @@ def _low_passed(white: Reals, keep: Reals) -> Reals:
     return out
 
 
-@numba.njit(cache=False)  # type: ignore[untyped-decorator]
-def _time_loop(
-    turns: Complexes, pushes: Complexes, weights: Reals, jet: Reals, noise: Reals, voicing: Reals
-) -> Any:
-    """Step the modes and the jet at INNER_RATE_HZ; return all flows and every KEEP_EVERYth state."""
-    window, width, flue, aim = voicing
+@numba.njit(cache=False)
+def _time_loop(modes: Complexes, weights: Reals, breath: Reals, lengths: Reals, aim: float) -> Any:
+    """Step modes and jet at INNER_RATE_HZ; return the flows and every KEEP_EVERYth state of the modes.
+
+    `modes` holds each mode's turn per step and push per Pa, `weights` each opening's flow per unit flow of a
+    mode (modes along the rows), `breath` jet speed and noise, `lengths` window, its width and flue in m.
+    """
+    turns, pushes = modes[0], modes[1]
+    jet, noise = breath[0], breath[1]
+    window, width, flue = lengths
     half = 0.4 * flue
     growth = np.exp(_GROWTH * window / flue)
     drive = _DENSITY * (4.0 / np.pi) * np.sqrt(2.0 * flue * window) * half / window * INNER_RATE_HZ
@@ -300,25 +334,15 @@ def _wander(count: int, seconds: float, random: np.random.Generator) -> Reals:
     return np.asarray(b + 0.5 * t * (c - a + t * (2 * a - 5 * b + 4 * c - d + t * (3 * (b - c) + d - a))))
 
 
-def _microphone(
-    build: FluteBuild,
-    openness: Reals,
-    flows: Reals,
-    noise: Reals,
-    microphone: Microphone,
-    random: np.random.Generator,
-) -> Reals:
-    """Return the pressure at the microphone in Pa: small sources in the open, the jet's own noise, the room."""
-    places = [mm for (mm, _), s in zip(build.tube.holes_mm, openness, strict=True) if s > 0.0]
-    places = [0.0, *places, build.tube.length_mm]
-    heard = np.zeros(flows.shape[1])
-    for index, (place, flow) in enumerate(zip(places, flows, strict=True)):
+def _heard(build: FluteBuild, blown: _Blown, microphone: Microphone) -> Reals:
+    """Return the pressure at the microphone in Pa: openings as small sources in the open, and the hiss."""
+    heard = _late(_hiss_heard(build, blown.noise_pa, microphone), microphone.head_m)
+    for index, (place, flow) in enumerate(zip(blown.places_mm, blown.flows, strict=True)):
         along = place / build.tube.length_mm
         distance = microphone.head_m + along * (microphone.foot_m - microphone.head_m)
-        sign = -1.0 if index == 0 else 1.0
-        heard += _late(sign * _DENSITY / (4.0 * pi * distance) * _slope(flow), distance)
-    heard += _late(_hiss_heard(build, noise, microphone), microphone.head_m)
-    return heard + microphone.room_pa * _room(len(heard), random)
+        outward = flow if index else -flow
+        heard += _late(_DENSITY / (4.0 * pi * distance) * _slope(outward), distance)
+    return heard
 
 
 def _hiss_heard(build: FluteBuild, noise_pa: Reals, microphone: Microphone) -> Reals:
@@ -357,17 +381,33 @@ _KEPT_RATE_HZ = INNER_RATE_HZ / KEEP_EVERY
 _SHORTEST_S = 0.25
 _LOUD = 0.02  # flow velocity in the sound hole over the jet's: far above what turbulence alone stirs
 _PRESENT = 0.2  # of the strongest mode: the lowest mode above it carries the tone
+_MANY = 100  # more than there are modes
+_EVEN_DB = 2.0
+_EVEN_CENTS = 12.0
 
 
-def _truth(build: FluteBuild, kept: Complexes, jet_m_per_s: Reals) -> tuple[SimulatedTone, ...]:
-    """Return the tones in the modes' states."""
-    size = _frames(np.abs(kept))
-    area = build.window_mm * build.window_width_mm * 1e-6
+def _truth(build: FluteBuild, blown: _Blown, curve: Curve) -> tuple[SimulatedTone, ...]:
+    """Return the tones in the modes' states, each within one stretch of steady pressure."""
+    size = _frames(np.abs(blown.states))
+    jet = _frames(blown.jet_m_per_s[None, ::KEEP_EVERY])[0]
     strongest = size.max(axis=0)
-    loud = 2.0 * strongest / area > _LOUD * np.maximum(_frames(jet_m_per_s[None, :])[0], 5.0)
-    register = np.where(loud, 1 + np.argmax(size > _PRESENT * strongest, axis=0), 0)
-    tones = (_tone(kept, size[r - 1], r, a, b) for r, a, b in _runs(register) if r)
+    area = build.window_mm * build.window_width_mm * 1e-6
+    loud = 2.0 * strongest / area > _LOUD * np.maximum(jet, 5.0)
+    register = 1 + np.argmax(size > _PRESENT * strongest, axis=0)
+    stretch = _stretches(curve, len(jet))
+    label = np.where(loud & (stretch > 0), _MANY * stretch + register, 0)
+    tones = (_tone(blown.states, key % _MANY, a, b) for key, a, b in _runs(label) if key)
     return tuple(tone for tone in tones if tone is not None)
+
+
+def _stretches(curve: Curve, frames: int) -> npt.NDArray[np.int64]:
+    """Return, for each frame, the number from 1 of the stretch of steady pressure it lies in, or 0."""
+    middle = (np.arange(frames) + 0.5) * _FRAME / _KEPT_RATE_HZ
+    numbers = np.zeros(frames, dtype=np.int64)
+    for number, ((start, before), (end, after)) in enumerate(pairwise(curve), start=1):
+        if before == after > 0.0:
+            numbers[(middle > start) & (middle < end)] = number
+    return numbers
 
 
 def _frames(values: Reals) -> Reals:
@@ -378,27 +418,34 @@ def _frames(values: Reals) -> Reals:
 def _runs(labels: npt.NDArray[np.int64]) -> list[tuple[int, int, int]]:
     """Return (label, first, after last) of each run of equal labels."""
     edges = [0, *(np.flatnonzero(np.diff(labels)) + 1), len(labels)]
-    return [(int(labels[a]), int(a), int(b)) for a, b in zip(edges, edges[1:], strict=False)]
+    return [(int(labels[a]), int(a), int(b)) for a, b in pairwise(edges)]
 
 
-def _tone(kept: Complexes, size: Reals, register: int, first: int, last: int) -> SimulatedTone | None:
+def _tone(states: Complexes, register: int, first: int, last: int) -> SimulatedTone | None:
     """Return the tone in frames first to last without its attack and release, or None if it is too short."""
-    level = np.median(size[first:last])
-    even = np.flatnonzero(np.abs(np.log(size[first:last] / level)) < np.log(10.0 ** (2.0 / 20.0)))
-    if not len(even):
+    even = _even(states[register - 1, first * _FRAME : last * _FRAME])
+    if len(even) < _SHORTEST_S * _KEPT_RATE_HZ / _FRAME:
         return None
     a, b = (first + int(even[0])) * _FRAME, (first + int(even[-1]) + 1) * _FRAME
-    if (b - a) / _KEPT_RATE_HZ < _SHORTEST_S:
-        return None
-    frequency = _mean_frequency(kept[register - 1, a:b])
-    flow = kept[:, a:b].sum(axis=0).real
+    frequency = _mean_frequency(states[register - 1, a:b])
     return SimulatedTone(
         start_s=a / _KEPT_RATE_HZ,
         end_s=b / _KEPT_RATE_HZ,
         frequency_hz=frequency,
         register=register,
-        purity=_purity(flow, frequency),
+        purity=_purity(states[:, a:b].sum(axis=0).real, frequency),
     )
+
+
+def _even(state: Complexes) -> npt.NDArray[np.int64]:
+    """Return the frames in which a mode's level and frequency are near their medians."""
+    size = _frames(np.abs(state)[None, :])[0]
+    turn = np.angle(state[1:] * np.conj(state[:-1]))
+    pace = np.pad(_frames(np.append(turn, turn[-1])[None, :])[0], 2, mode="edge")
+    pace = np.convolve(pace, np.full(5, 0.2), mode="valid")
+    level_db = 20.0 * np.log10(size / np.median(size))
+    cents = 1200.0 * np.log2(np.maximum(pace / np.median(pace), 1e-3))
+    return np.flatnonzero((np.abs(level_db) < _EVEN_DB) & (np.abs(cents) < _EVEN_CENTS))
 
 
 def _mean_frequency(state: Complexes) -> float:
