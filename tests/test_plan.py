@@ -89,11 +89,12 @@ def test_no_order_within_a_group_moves_fewer_fingers(holes: int, edition: str, s
 
 
 @all_holes
-def test_larger_groups_stay_near_the_least_that_any_order_needs(holes: int) -> None:
+def test_cross_fingerings_stay_near_the_least_that_any_order_needs(holes: int) -> None:
     """Each step moves a finger, and going to another open hole over closed ones moves a second one."""
     for order in groups(take_plan(holes, "full")):
         open_over_closed = {fingering.states.rfind("ox") for fingering in order}
-        assert moves(order) <= (len(order) - 1) + (len(open_over_closed) - 1) + 4, order
+        if -1 not in open_over_closed:
+            assert moves(order) <= (len(order) - 1) + (len(open_over_closed) - 1) + 4, order
 
 
 @all_holes
