@@ -154,6 +154,8 @@ def _reading(name: str, take: Take | None, tone: Tone, sitting: Sitting, call: R
         (None, None) if tone.frequency_hz is None else nearest_note(tone.frequency_hz, sitting.a4_hz)
     )
     shift = _reference_shift_cents(sitting)
+    if call.caution is not None:
+        tone = replace(tone, cautions=(*tone.cautions, call.caution))
     return Reading(
         take=name,
         fingering=take.fingering if take else None,

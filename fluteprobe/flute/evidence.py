@@ -8,7 +8,7 @@ all three equally likely beforehand.
 A clue is what one observation says; clues that share an observation are one clue.
 """
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from math import exp, log
 from types import MappingProxyType
@@ -18,6 +18,8 @@ Register = Literal[1, 2, 3]
 REGISTERS: tuple[Register, ...] = (1, 2, 3)
 
 SURE = 0.9
+CONTRADICTION = 12.0
+_FIRM = 1.0
 PRIOR: Mapping[Register, float] = MappingProxyType({1: 0.5, 2: 0.38, 3: 0.12})
 
 
@@ -45,11 +47,15 @@ class Evidence:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class RegisterCall:
-    """The decision on one tone: a register or undecided, with probabilities and all the reasons."""
+    """The decision on one tone: a register or undecided, with probabilities and all the reasons.
+
+    `caution` says which reasons contradict one another; None where they agree.
+    """
 
     register: Register | None
     probability: Mapping[Register, float]
     evidence: tuple[Evidence, ...] = field(default=())
+    caution: str | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -59,6 +65,10 @@ class Clue:
     source: str
     likelihood: Mapping[Register, float]
     detail: str
+
+    def speaks_against(self, register: Register) -> bool:
+        """Whether another register is likelier by this clue by the factor that makes a contradiction."""
+        return max(self.likelihood.values()) > CONTRADICTION * self.likelihood[register]
 
     @property
     def evidence(self) -> Evidence:
@@ -70,7 +80,11 @@ class Clue:
 
 
 def decide(clues: Iterable[Clue], prior: Mapping[Register, float] = PRIOR) -> RegisterCall:
-    """Combine independent clues by Bayes' rule; undecided unless one register reaches probability `SURE`."""
+    """Combine independent clues by Bayes' rule.
+
+    Undecided unless one register reaches probability `SURE` and no clue speaks against it by a factor of
+    `CONTRADICTION`: where two clues contradict each other, one of them is wrong, and which is not known.
+    """
     told = tuple(clues)
     logs = {
         register: log(prior[register]) + sum(log(max(clue.likelihood[register], 1e-300)) for clue in told)
@@ -81,8 +95,17 @@ def decide(clues: Iterable[Clue], prior: Mapping[Register, float] = PRIOR) -> Re
     total = sum(weights.values())
     probability = {register: weight / total for register, weight in weights.items()}
     best = max(REGISTERS, key=lambda register: probability[register])
+    against = [clue for clue in told if clue.speaks_against(best)]
     return RegisterCall(
-        register=best if probability[best] >= SURE else None,
+        register=best if probability[best] >= SURE and not against else None,
         probability=MappingProxyType(probability),
         evidence=tuple(clue.evidence for clue in told),
+        caution=_contradiction(told) if against else None,
     )
+
+
+def _contradiction(clues: Sequence[Clue]) -> str:
+    """Name the clues that contradict one another."""
+    told = [clue.evidence for clue in clues]
+    sides = ", ".join(f"{reason.source} for {reason.favours}" for reason in told if reason.log_odds > _FIRM)
+    return f"register undecided: the evidence disagrees ({sides})"

@@ -74,7 +74,7 @@ class Tube:
 
     @property
     def effective_length_m(self) -> float:
-        """Length with both end corrections, in m: about half a wavelength of the all-closed first register."""
+        """Length with both end corrections, in m: half a wavelength of the all-closed first register."""
         return (self.length_mm + self.head_correction_mm) / 1000.0 + FOOT_CORRECTION * self.radius_m
 
 
@@ -151,9 +151,8 @@ def resonances(tube: Tube, fingerings: Sequence[Fingering] | Reals, count: int =
     states = fingerings if isinstance(fingerings, np.ndarray) else openness_of(fingerings)
     _require_holes(tube, states)
     grid_hz = _grid(tube, count)
-    parts = [
-        _chunk_peaks(tube, states[i : i + _CHUNK], grid_hz, count) for i in range(0, len(states), _CHUNK)
-    ]
+    starts = range(0, len(states), _CHUNK)
+    parts = [_chunk_peaks(tube, states[i : i + _CHUNK], grid_hz, count) for i in starts]
     frequency, width, strength = (np.concatenate(column) for column in zip(*parts, strict=True))
     return Resonances(frequency_hz=frequency, width_hz=width, strength=strength)
 

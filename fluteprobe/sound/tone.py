@@ -23,7 +23,16 @@ from fluteprobe.sound.partials import (
     partials_of,
     without_partials,
 )
-from fluteprobe.sound.pitch import GUIDES, Pitch, Vibrato, measure_pitch, phase_track, refined
+from fluteprobe.sound.pitch import (
+    CENTS,
+    GUIDES,
+    Pitch,
+    Vibrato,
+    guide_phase,
+    measure_pitch,
+    phase_track,
+    refined,
+)
 from fluteprobe.sound.recording import Recording
 from fluteprobe.sound.spans import SHORTEST_TONE_S, Span, find_spans
 
@@ -40,8 +49,13 @@ _SAME_CENTS = 40.0
 _EDGE_DB = 3.0
 _ATTACK_DB = 20.0
 _EDGE_REFERENCE_S = 0.2
-_SETTLING_S = 0.1
-_SETTLED_CENTS = 20.0
+_STEP_S = 0.025
+_NARROWINGS = 3
+_FEWEST_STEPS = 6
+_GLIDE_CENTS = 10.0
+_GLIDE_RATIO = 4.0
+_PASSING_DB = 8.0
+_PASSING_S = 0.45
 _SHORT_S = 0.4
 _NOISY_DB = 12.0
 _UNSTEADY_CENTS = 12.0
@@ -82,8 +96,15 @@ def read_tones(recording: Recording) -> tuple[Tone, ...]:
     tones = [
         _read_tone(recording, span, bounds) for span, *bounds in zip(settled, earliest, latest, strict=False)
     ]
-    found = tuple(tone for tone in tones if tone is not None and tone.kind != "breath only")
-    return found or (_breath_alone(recording, spans),)
+    found = [tone for tone in tones if tone is not None and tone.kind != "breath only"]
+    clear = [tone for tone in found if not _is_passing(tone)]
+    return tuple(clear or found) or (_breath_alone(recording, spans),)
+
+
+def _is_passing(tone: Tone) -> bool:
+    """Whether a tone is but a moment on the way to another: short, and hardly over the noise."""
+    noisy = tone.harmonic_to_noise_db is not None and tone.harmonic_to_noise_db < _PASSING_DB
+    return noisy and tone.end_s - tone.start_s < _PASSING_S
 
 
 def _settled(recording: Recording, span: Span) -> Span:
@@ -183,7 +204,8 @@ def _edges(guide: Tracks, inside: slice) -> tuple[int, int, float | None]:
     high = len(level) - 1 - _last_below(fallen, float(np.median(end)) - _EDGE_DB)
     quiet = _last_below(level[:low], float(np.median(risen)) - _ATTACK_DB)
     attack = (low - quiet) * guide.hop_s * 1000.0 if quiet else None
-    return _at_rest(guide, low, high), high, attack
+    low, high = _at_rest(guide, low, high)
+    return low, high, attack
 
 
 def _last_below(level: Floats, threshold: float) -> int:
@@ -192,16 +214,34 @@ def _last_below(level: Floats, threshold: float) -> int:
     return int(below[-1]) + 1 if len(below) else 0
 
 
-def _at_rest(guide: Tracks, low: int, high: int) -> int:
-    """Return the first frame from which the pitch is near that of the next moments."""
-    strongest = int(np.argmax(np.sum(np.abs(guide.phasors[low:high]) ** 2, axis=0)))
-    phasors = guide.phasors[low:high, strongest]
-    steps = np.angle(phasors[1:] * phasors[:-1].conj()) / (2 * np.pi * guide.hop_s * guide.orders[strongest])
-    cents = 1731.0 * steps / guide.frequency_hz
-    look = max(round(_SETTLING_S / guide.hop_s), 1)
-    if len(cents) < 4 * look:
-        return low
-    return low + _last_below(-np.abs(cents[:look] - np.median(cents[look : 3 * look])), -_SETTLED_CENTS)
+def _at_rest(guide: Tracks, low: int, high: int) -> tuple[int, int]:
+    """Narrow frames low to high to where the pitch has settled: without the glides into and out of a tone.
+
+    A glide leaves the tone's middle by more than four times the usual distance from it, so that vibrato and a
+    slow drift, whose usual distance is large, stay.
+    """
+    cents = _pitch_steps(guide, low, high)
+    first, last = 0, len(cents)
+    for _ in range(_NARROWINGS):
+        if last - first < _FEWEST_STEPS:
+            break
+        away = np.abs(cents - np.median(cents[first:last]))
+        limit = max(_GLIDE_CENTS, _GLIDE_RATIO * float(np.median(away[first:last])))
+        at_rest = first + np.flatnonzero(away[first:last] < limit)
+        first, last = int(at_rest[0]), int(at_rest[-1]) + 1
+    step = _step_frames(guide)
+    return (low + first * step if first else low), (low + last * step if last < len(cents) else high)
+
+
+def _step_frames(guide: Tracks) -> int:
+    return max(round(_STEP_S / guide.hop_s), 1)
+
+
+def _pitch_steps(guide: Tracks, low: int, high: int) -> Floats:
+    """Return the pitch of frames low to high against the guide's, in cents, in steps of about 25 ms."""
+    step = _step_frames(guide)
+    phase = guide_phase(replace(guide, phasors=guide.phasors[low : high + 1]))[::step]
+    return np.asarray(CENTS * np.diff(phase) / (2.0 * np.pi * guide.hop_s * step * guide.frequency_hz))
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
