@@ -98,7 +98,7 @@ def decide(clues: Iterable[Clue], prior: Mapping[Register, float] = PRIOR) -> Re
     against = [clue for clue in told if clue.speaks_against(best)]
     return RegisterCall(
         register=best if probability[best] >= SURE and not against else None,
-        probability=MappingProxyType(probability),
+        probability=probability,
         evidence=tuple(clue.evidence for clue in told),
         caution=_contradiction(told) if against else None,
     )

@@ -7,7 +7,6 @@ all holes closed, then one more open from the foot each time. Its rungs are numb
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from math import erf, exp, sqrt
-from types import MappingProxyType
 
 from fluteprobe.flute.evidence import REGISTERS, Clue, Register
 from fluteprobe.flute.fingering import Fingering, ladder
@@ -69,7 +68,7 @@ def known_ladder(holes: int, lowest: Mapping[Fingering, float]) -> Ladder:
     runs: list[_Run] = [()]
     for k, pitch in heard:
         runs.append((*_longest([run for run in runs if not run or _rises(run[-1], (k, pitch))]), (k, pitch)))
-    return Ladder(holes, MappingProxyType(dict(_longest(runs))))
+    return Ladder(holes, dict(_longest(runs)))
 
 
 def _longest(runs: Sequence[_Run]) -> _Run:

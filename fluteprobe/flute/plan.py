@@ -22,8 +22,8 @@ _SHORT_RUNGS = 8  # a longer ladder goes by every second rung in the short editi
 _STANDARD_LEAKS = 3  # with so many holes at the foot open or fewer, a cracked top hole is tried
 
 _PRACTICE = "common practice, no source"
-_COLUMN = "Fletcher & Rossing, The Physics of Musical Instruments, ch. 16"
-_CROSS = "Wolfe & Smith, J. Acoust. Soc. Am. 114, 2263 (2003)"
+_COLUMN = "Fletcher & Rossing, Physics of Musical Instruments, ch. 16"
+_CROSS = "Wolfe & Smith, J. Acoust. Soc. Am. 114, 2263, 2003"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -206,7 +206,7 @@ def _overblown_ladder_group(rungs: Sequence[Fingering]) -> _Group:
 def _leak_group(holes: int) -> _Group:
     rest = _rests(holes)[0]
     return _Group(
-        title="The top hole leaks, the others closed",
+        title="Top hole leaking, the others closed",
         why="A leak at the top hole weakens the first register; the second speaks instead, near the octave.",
         basis=_PRACTICE, breath="over", fingerings=tuple(Fingering(state + rest) for state in "vho"),
     )  # fmt: skip
@@ -215,7 +215,7 @@ def _leak_group(holes: int) -> _Group:
 def _top_group(state: str, rests: Sequence[str]) -> _Group:
     how = {"v": "cracked", "h": "half-holed", "o": "open"}[state]
     return _Group(
-        title=f"The top hole {how}, lower holes opened one by one",
+        title=f"Top hole {how}, others opened from the foot",
         why="The second-register scale that many flutes play.",
         basis=_PRACTICE, breath="over", fingerings=tuple(Fingering(state + rest) for rest in rests),
     )  # fmt: skip
@@ -233,7 +233,7 @@ def _cross_group(crossed: Sequence[Fingering], breath: Breath) -> _Group:
 def _top_and_another_group(holes: int) -> _Group:
     crossed = _crossed(holes - 1, closed=range(1, holes - 1))
     return _Group(
-        title="The top hole and another open",
+        title="Top hole and another open",
         why="Two open holes with closed ones between them and below: more upper notes.",
         basis=_PRACTICE, breath="over", fingerings=tuple(Fingering(f"o{fingering}") for fingering in crossed),
     )  # fmt: skip

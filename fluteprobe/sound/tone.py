@@ -55,6 +55,8 @@ _FEWEST_STEPS = 6
 _GLIDE_CENTS = 10.0
 _GLIDE_RATIO = 4.0
 _PASSING_DB = 8.0
+_EVEN = 0.55
+_EVEN_DB = 10.0
 _PASSING_S = 0.45
 _SHORT_S = 0.4
 _NOISY_DB = 12.0
@@ -220,6 +222,9 @@ def _at_rest(guide: Tracks, low: int, high: int) -> tuple[int, int]:
     A glide leaves the tone's middle by more than four times the usual distance from it, so that vibrato and a
     slow drift, whose usual distance is large, stay.
     """
+    step = _step_frames(guide)
+    if high - low < 2 * step:
+        return low, high
     cents = _pitch_steps(guide, low, high)
     first, last = 0, len(cents)
     for _ in range(_NARROWINGS):
@@ -229,7 +234,6 @@ def _at_rest(guide: Tracks, low: int, high: int) -> tuple[int, int]:
         limit = max(_GLIDE_CENTS, _GLIDE_RATIO * float(np.median(away[first:last])))
         at_rest = first + np.flatnonzero(away[first:last] < limit)
         first, last = int(at_rest[0]), int(at_rest[-1]) + 1
-    step = _step_frames(guide)
     return (low + first * step if first else low), (low + last * step if last < len(cents) else high)
 
 
@@ -246,12 +250,23 @@ def _pitch_steps(guide: Tracks, low: int, high: int) -> Floats:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class _Measured:
-    """Pitch, partial amplitudes (orders,) and what is left without the partials (samples,)."""
+    """Pitch, partial amplitudes (orders,), what is left without the partials (samples,), and evenness.
+
+    `evenness` is the strongest partial's level that nine tenths of its frames exceed, over its median: near 1
+    for a tone, 0.39 for a resonance that only noise stirs (its level is Rayleigh distributed).
+    """
 
     pitch: Pitch
     orders: Floats
     amplitude: Floats
     residual: Samples
+    evenness: float
+
+    @property
+    def sounds(self) -> bool:
+        """Whether there is a tone: a partial that noise alone would not make."""
+        uneven = self.evenness < _EVEN and self.harmonic_to_noise_db < _EVEN_DB
+        return bool(np.any(self.amplitude > 0.0)) and not uneven
 
     @property
     def harmonic_to_noise_db(self) -> float:
@@ -265,7 +280,14 @@ def _measured(samples: Samples, rate_hz: int, frequency_hz: float) -> _Measured:
     pitch = measure_pitch(phase_track(tracks))
     amplitude = amplitudes(tracks, pitch.curve.phase(tracks.time_s))
     residual = without_partials(samples, tracks, pitch.curve.phase, amplitude > 0.0)
-    return _Measured(pitch=pitch, orders=tracks.orders, amplitude=amplitude, residual=residual)
+    level = np.abs(tracks.phasors[:, int(np.argmax(amplitude))])
+    return _Measured(
+        pitch=pitch,
+        orders=tracks.orders,
+        amplitude=amplitude,
+        residual=residual,
+        evenness=float(np.percentile(level, 10.0) / (np.median(level) + 1e-20)),
+    )
 
 
 def _whole_cycles(vibrato: Vibrato | None, length: int, rate_hz: int) -> int:
@@ -278,7 +300,7 @@ def _whole_cycles(vibrato: Vibrato | None, length: int, rate_hz: int) -> int:
 
 def _tone(recording: Recording, steady: _Steady, samples: Samples, measured: _Measured) -> Tone:
     pitch, rate = measured.pitch, recording.rate_hz
-    sounds = bool(np.any(measured.amplitude > 0.0))
+    sounds = measured.sounds
     hnr = measured.harmonic_to_noise_db
     return Tone(
         start_s=steady.start / rate,
