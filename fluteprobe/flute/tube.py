@@ -220,7 +220,7 @@ def _impedance(tube: Tube, states: Reals, frequency_hz: Reals) -> Complexes:
     for index in range(len(tube.holes_mm) - 1, -1, -1):
         place_mm = tube.holes_mm[index][0]
         z = _through_bore(z, (below_mm - place_mm) / 1000.0, air)
-        series, shunt = _hole(tube, index, states[:, index : index + 1], air)
+        series, shunt = _holes_alike(tube, index, states[:, index], air)
         z = z + series / 2.0
         z = z / (1.0 + z * shunt) + series / 2.0
         below_mm = place_mm
@@ -245,6 +245,15 @@ def _head_impedance(tube: Tube, air: _Air) -> Complexes:
     """Return the sound hole's: a mass, and the resistance (ka)²/4 of a small source in the open."""
     mass = 1j * air.k * tube.head_correction_mm / 1000.0
     return np.asarray(mass + 0.25 * (air.k * tube.radius_m) ** 2)
+
+
+def _holes_alike(tube: Tube, index: int, openness: Reals, air: _Air) -> tuple[Complexes, Complexes]:
+    """Return `_hole` of each fingering, working out equal ones once where all share their frequencies."""
+    if air.k.ndim > 1:
+        return _hole(tube, index, openness[:, None], air)
+    levels, which = np.unique(openness, return_inverse=True)
+    series, shunt = _hole(tube, index, levels[:, None], air)
+    return series[which], shunt[which]
 
 
 def _hole(tube: Tube, index: int, openness: Reals, air: _Air) -> tuple[Complexes, Complexes]:
