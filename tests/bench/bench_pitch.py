@@ -1,7 +1,7 @@
 """Pitch: error, bound, gross errors, coverage and time, ours beside general-purpose trackers.
 
 Conventions: errors in cents, rms over cases without gross errors; a gross error is over 30 cents, an octave
-error one of them within 50 cents of a low multiple or part of the truth; a missed tone is one not found at all.
+error one of them within 50 cents of a low multiple or part of the truth; a missed tone is not found at all.
 The bound is Cramér and Rao's for the whole tone. "Ours" is the whole way from samples to tone: span, octave,
 pitch, partials and breath, so that its time holds more than pitch. The real-time factor is time over the
 tone's length: smaller is quicker. Everything is drawn from fixed seeds.
@@ -85,7 +85,13 @@ def side_by_side(rounds: int) -> str:
             rows[-1] += [_faults(heard[name]) for name in names]
             for name in names:
                 everything[name] += heard[name]
-    titles = ["noise", "Hz", "bound", *(f"{name} rms" for name in names), *(f"{name} faults" for name in names)]
+    titles = [
+        "noise",
+        "Hz",
+        "bound",
+        *(f"{name} rms" for name in names),
+        *(f"{name} faults" for name in names),
+    ]
     return "\n\n".join([table(titles, rows), _summary(everything)])
 
 
@@ -97,12 +103,13 @@ def _all_heard(base_hz: float, snr_db: float, rounds: int) -> dict[str, list[Hea
             frequency_hz = base_hz * 2.0 ** (rng.uniform(-50, 50) / 1200.0)
             made = make_tone(frequency_hz, 1.0, timbre, snr_db, rng)
             made = _quieter(made)
-            heard["ours"].append(_ours(made, frequency_hz, Path(folder)))
+            bound = bound_cents(made, frequency_hz)
+            heard["ours"].append(_ours(made, frequency_hz, Path(folder), bound))
             for name, tracker in TRACKERS.items():
                 start = perf_counter()
                 told_hz = tracker(made.samples, RATE_HZ)
                 taken_s = perf_counter() - start
-                heard[name].append(_heard(told_hz, None, made, frequency_hz, taken_s))
+                heard[name].append(_heard(told_hz / frequency_hz, None, made, bound, taken_s))
     return heard
 
 
@@ -112,28 +119,21 @@ def _quieter(made: Made) -> Made:
     return Made(samples=made.samples * gain, amplitudes=made.amplitudes, noise=made.noise)
 
 
-def _ours(made: Made, frequency_hz: float, folder: Path, bound: float | None = None) -> Heard:
+def _ours(made: Made, frequency_hz: float, folder: Path, bound: float) -> Heard:
     recording = as_recording(folder, made.samples)
     start = perf_counter()
     tones = [tone for tone in read_tones(recording) if tone.frequency_hz is not None]
     taken_s = perf_counter() - start
     longest = max(tones, key=lambda tone: tone.end_s - tone.start_s) if tones else None
     told_hz = float("nan") if longest is None or longest.frequency_hz is None else longest.frequency_hz
-    return _heard(told_hz, longest, made, frequency_hz, taken_s, bound)
+    return _heard(told_hz / frequency_hz, longest, made, bound, taken_s)
 
 
-def _heard(
-    told_hz: float,
-    tone: Tone | None,
-    made: Made,
-    frequency_hz: float,
-    taken_s: float,
-    bound: float | None = None,
-) -> Heard:
-    error = cents(told_hz / frequency_hz)
+def _heard(ratio: float, tone: Tone | None, made: Made, bound: float, taken_s: float) -> Heard:
+    error = cents(ratio)
     return Heard(
         error_cents=error,
-        bound_cents=bound_cents(made, frequency_hz) if bound is None else bound,
+        bound_cents=bound,
         covered=tone is not None and abs(error) < 2.0 * (tone.uncertainty_cents or 0.0),
         taken_s=taken_s,
         tone_s=len(made.samples) / RATE_HZ,
@@ -246,8 +246,8 @@ def _random_case(
     colour = colour or str(rng.choice(COLOURS))
     clean = make_tone(frequency_hz, duration_s, timbre, 400.0, rng)
     n, noise = len(clean.samples), 10.0 ** (-snr_db / 20.0)
-    hertz = np.fft.rfftfreq(n, 1.0 / RATE_HZ)
-    shape = np.ones(len(hertz)) if colour == "white" else _breath_shape(hertz, frequency_hz, rng)
+    hertz = np.asarray(np.fft.rfftfreq(n, 1.0 / RATE_HZ), np.float64)
+    shape: Floats = np.ones(len(hertz)) if colour == "white" else _breath_shape(hertz, frequency_hz, rng)
     shape /= np.sqrt(np.mean(shape**2))
     sound = np.fft.irfft(np.fft.rfft(rng.standard_normal(n)) * shape, n)
     made = Made(
@@ -263,7 +263,9 @@ def _breath_shape(hertz: Floats, frequency_hz: float, rng: np.random.Generator) 
     fall = rng.uniform(0.5, 1.0)
     slope = (np.maximum(hertz, 300.0) / 300.0) ** -fall
     width = rng.uniform(0.01, 0.05) * frequency_hz
-    bump = 10.0 ** (rng.uniform(5.0, 20.0) / 20.0) / np.sqrt(1.0 + ((hertz - 0.5 * frequency_hz) / width) ** 2)
+    bump = 10.0 ** (rng.uniform(5.0, 20.0) / 20.0) / np.sqrt(
+        1.0 + ((hertz - 0.5 * frequency_hz) / width) ** 2
+    )
     return np.asarray(slope * np.sqrt(1.0 + bump**2))
 
 
@@ -336,7 +338,9 @@ def _wander_cell(memory_s: float, length_s: float, cases: int) -> str:
         frequency_hz = rng.uniform(200.0, 1500.0)
         knots = _wander(rng, memory_s, spread, round(length_s / _STEP_S) + 1)
         movement = np.interp(time_s, _STEP_S * np.arange(len(knots)), knots)
-        made = make_tone(frequency_hz, length_s, "plain", rng.uniform(20.0, 40.0), rng, movement_cents=movement)
+        made = make_tone(
+            frequency_hz, length_s, "plain", rng.uniform(20.0, 40.0), rng, movement_cents=movement
+        )
         pitch = _estimated(made.samples, frequency_hz)
         errors.append(cents(pitch.frequency_hz / frequency_hz))
         stated.append(pitch.uncertainty_cents)

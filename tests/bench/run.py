@@ -1,7 +1,7 @@
-"""Run the benchmarks: `python tests/bench/run.py [pitch] [speed] [registers] [--quick]`; all of them by default.
+"""Run the benchmarks: `python tests/bench/run.py [pitch] [speed] [registers] [--quick]`, or all of them.
 
-The tables go to stdout, in Markdown; what is being done goes to stderr. `--quick` takes a small sample, to see
-that everything runs. Nothing here is collected by pytest.
+The tables go to stdout, in Markdown; what is being done goes to stderr. `--quick` takes a small sample, to
+see that everything runs. Nothing here is collected by pytest.
 """
 
 import argparse

@@ -4,6 +4,7 @@ import platform
 from collections.abc import Sequence
 from datetime import date
 from importlib.metadata import version
+from math import isnan
 from os import cpu_count
 
 VERSIONS_OF = ("numpy", "soundfile", "librosa", "numba", "praat-parselmouth")
@@ -32,7 +33,7 @@ def made_with() -> str:
 
 def cents_text(value: float) -> str:
     """Return a number of cents to three digits, a dash where there is none."""
-    return "–" if value != value else f"{value:.3g}" if value < 1000.0 else f"{value:.0f}"
+    return "–" if isnan(value) else f"{value:.3g}" if value < 1000.0 else f"{value:.0f}"
 
 
 def share_text(part: int, whole: int) -> str:
