@@ -24,8 +24,7 @@ SCALES = {
     6: ((0, 2, 4, 5, 7, 9, 11), (0, 3, 5, 7, 8, 10, 12), (0, 2, 3, 5, 7, 9, 10), (0, 2, 4, 6, 7, 9, 11)),
 }
 
-_LOW_TRIES = (1.0, 0.8, 1.25)
-_UPPER_TRIES = (1.0, 1.3, 1.7, 2.3, 3.2, 4.4)
+_TRIES = (1.0, 1.3, 1.7, 2.3, 3.2, 4.4)
 _PAUSE_S = 0.25
 _ROUNDS = 14
 _LEAST_WOOD_MM = 5.0
@@ -121,6 +120,12 @@ def usual_takes(build: FluteBuild, seed: int) -> tuple[Plan, ...]:
     return tuple(plans)
 
 
+def spoken_takes(build: FluteBuild, seed: int) -> Iterator[tuple[Plan, Simulated]]:
+    """Yield the usual takes of a flute, played, with what truly sounded."""
+    for number, plan in enumerate(usual_takes(build, seed)):
+        yield plan, play(build, plan, 1000 * seed + number)
+
+
 def play(build: FluteBuild, plan: Plan, seed: int, microphone: Microphone | None = None) -> Simulated:
     """Return a planned take, played with a finger's usual luck on half-holed and vented holes."""
     random = np.random.default_rng([seed, 3])
@@ -148,11 +153,11 @@ def sought_pressure_pa(
 ) -> float:
     """Return a pressure at which that register speaks, found by trying, as a player does.
 
-    It must speak twice, after the pressures that come before it. Where nothing tried makes it speak, the
-    pressure at which it should is returned.
+    The first register needs no trying. A higher one must speak twice, after the pressures that come before
+    it; where nothing tried makes it speak, the pressure at which it should is returned.
     """
     expected = speaking_pressure_pa(build, openness, register)
-    for factor in _UPPER_TRIES if register > 1 else _LOW_TRIES:
+    for factor in _TRIES if register > 1 else ():
         curve = steps([(pressure, 0.6) for pressure in (*before_pa, factor * expected)])
         trials = (blow(build, openness, curve, seed=seed).truth for seed in (0, 1))
         if all(tones and tones[-1].register == register for tones in trials):
