@@ -1,11 +1,13 @@
 """The printed fingering chart of one flute: every fingering, its note, how far off and how sure.
 
-It reads like a page of music. A register is a row of upright flutes from low to high; one rule over them is
-one note, with its alternatives after it, best first. Below each flute its deviation stands on a scale (up is
-sharp, the band is the tolerance) and under that its numbers. Upper registers come first and are drawn larger.
+It reads like a page of music. A register is a row of upright flutes from low to high, with its notes on a
+staff above; one rule over several flutes is one note, with its alternatives after it, best first. Below each
+flute its deviation stands on a scale (up is sharp, the band is the tolerance) and under that its numbers.
+Upper registers come first and are drawn larger. A card for the flute's case has the same rows, with one
+fingering for each note.
 
-Conventions: lengths in millimetres, deviations in cents. Drawings shrink together until all fits on as few
-pages as it can; type never does.
+Conventions: lengths in millimetres of the page as it is drawn on (see `Page`), deviations in cents. Drawings
+shrink together until all fits on as few pages as it can; type never does.
 """
 
 from collections.abc import Callable, Sequence
@@ -17,38 +19,95 @@ from pathlib import Path
 from matplotlib.figure import Figure
 
 from fluteprobe.pages.contents import Aside, Contents, chart_contents
-from fluteprobe.pages.glyphs import Scale, draw_deviation, draw_hole, draw_scale
+from fluteprobe.pages.glyphs import FluteSize, Scale, draw_deviation, draw_hole, draw_scale, draw_share
 from fluteprobe.pages.paper import (
     ACCENT,
+    CARDS,
     HAIRLINE,
+    HEADING,
     LABEL,
-    LEFT_MM,
-    MARGIN_MM,
+    NOTE,
+    NOTE_SMALL,
+    PNG_DOTS_PER_INCH,
     QUIET,
     SMALL,
     SUBTITLE,
     TITLE_SIZES_PT,
     Page,
     Type,
+    gutter_mm,
     house_style,
+    margin_mm,
     paper_size_mm,
     save_pages,
     shortened,
     width_mm,
     wrapped,
 )
-from fluteprobe.pages.rows import LABEL_GAP_MM, Row, draw_row, look_for, rows_of
+from fluteprobe.pages.rows import (
+    LABEL_GAP_MM,
+    NARROWEST_COLUMN_MM,
+    Look,
+    Row,
+    draw_row,
+    rows_of,
+    word_voice,
+)
 from fluteprobe.survey import Entry, Survey
 
 LEAST_SCALE = 2.5  # the deviation scale reaches at least this many tolerances
 WIDEST_SCALE_CENTS = 60.0  # no deviation from the nearest note is beyond 50
 SIZES = 20  # tried between roomy and tight
 MOST_ASIDE_LINES = 12
+LARGE_PRINT = 1.3  # how much larger everything is, to be read from a music stand
+CARD_PRINT = 0.875  # and on a card: the smallest type there, 8 points, becomes 7
 
 _LINE_MM = 3.6
+_KEY_LINE_MM = 6.0
 _FOOT_MM = 4.0
 _TITLE_LINE_MM = 8.0
+_SUBTITLE_LINE_MM = 5.0
 _WIDEST_GAP_MM = 8.0
+_NARROWEST_CARD_COLUMN_MM = 10.4
+_CARD_TITLES_PT = (20.0, 17.0, 14.0)
+_CARD_NOTE = Type(size_pt=14.0)
+_CARD_HEADING = Type(size_pt=12.0, italic=True)
+_CARD_SUBTITLE = Type(size_pt=9.0, italic=True)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Edition:
+    """What the chart is printed on, how large, and how far off still counts as tuned."""
+
+    paper: str
+    magnified: float
+    tolerance_cents: float
+
+    @property
+    def is_card(self) -> bool:
+        """Whether this is a card: the best fingering of each note, and little else."""
+        return self.paper.lower() in CARDS
+
+    @property
+    def across_mm(self) -> float:
+        """The width of the drawings."""
+        width_mm, _ = self._inner_mm()
+        return width_mm - gutter_mm(self.paper)
+
+    @property
+    def down_mm(self) -> float:
+        """The height between the margins, without the foot."""
+        _, height_mm = self._inner_mm()
+        return height_mm - _FOOT_MM
+
+    def page(self) -> Page:
+        """Return an empty page."""
+        return Page(self.paper, magnified=self.magnified)
+
+    def _inner_mm(self) -> tuple[float, float]:
+        width, height = paper_size_mm(self.paper)
+        margins = 2.0 * margin_mm(self.paper)
+        return (width - margins) / self.magnified, (height - margins) / self.magnified
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -62,30 +121,59 @@ class Block:
 Book = list[list[Block]]
 
 
-def write_chart(survey: Survey, target: Path, *, paper: str = "a4", tolerance_cents: float = 10.0) -> None:
-    """Write a flute's chart as PDF, PNG or SVG, by the target's suffix.
+def write_chart(  # noqa: PLR0913 - what a maker may choose about the page
+    survey: Survey,
+    target: Path,
+    *,
+    paper: str = "a4",
+    large: bool = False,
+    tolerance_cents: float = 10.0,
+    dots_per_inch: float = PNG_DOTS_PER_INCH,
+) -> tuple[Path, ...]:
+    """Write a flute's chart as PDF, PNG or SVG, by the target's suffix, and return the files written.
 
     A chart that needs a second page gets it: in the same PDF, or as a further picture with `-2` in its name.
 
     Raises
     ------
     ValueError
-        If the paper or the suffix is not known, or the tolerance is not above 0.
+        If the paper or the suffix is not known, the tolerance is not above 0, or a card is to be large.
     """
-    contents = chart_contents(survey, tolerance_cents)
-    figures = _figures(contents, paper, tolerance_cents)
-    save_pages(figures, target, title=f"{contents.title}: fingering chart", author=contents.maker)
+    edition = edition_of(paper, large=large, tolerance_cents=tolerance_cents)
+    contents = chart_contents(survey, tolerance_cents, best_only=edition.is_card)
+    title = f"{contents.title}: fingering chart"
+    figures = _figures(contents, edition)
+    return save_pages(figures, target, title=title, author=contents.maker, dots_per_inch=dots_per_inch)
 
 
-def chart_figures(survey: Survey, *, paper: str = "a4", tolerance_cents: float = 10.0) -> list[Figure]:
+def chart_figures(
+    survey: Survey, *, paper: str = "a4", large: bool = False, tolerance_cents: float = 10.0
+) -> list[Figure]:
     """Return the pages of a flute's chart as figures.
 
     Raises
     ------
     ValueError
-        If the paper is not known or the tolerance is not above 0.
+        If the paper is not known, the tolerance is not above 0, or a card is to be large.
     """
-    return _figures(chart_contents(survey, tolerance_cents), paper, tolerance_cents)
+    edition = edition_of(paper, large=large, tolerance_cents=tolerance_cents)
+    return _figures(chart_contents(survey, tolerance_cents, best_only=edition.is_card), edition)
+
+
+def edition_of(paper: str, *, large: bool, tolerance_cents: float) -> Edition:
+    """Return what a chart is printed on and how large.
+
+    Raises
+    ------
+    ValueError
+        If the paper is not known, or a card is to be large.
+    """
+    paper_size_mm(paper)
+    card = paper.lower() in CARDS
+    if card and large:
+        raise ValueError(f"large print needs a larger paper than {paper}")
+    magnified = CARD_PRINT if card else LARGE_PRINT if large else 1.0
+    return Edition(paper=paper, magnified=magnified, tolerance_cents=tolerance_cents)
 
 
 def scale_limit_cents(entries: Sequence[Entry], tolerance_cents: float) -> float:
@@ -95,54 +183,79 @@ def scale_limit_cents(entries: Sequence[Entry], tolerance_cents: float) -> float
     return max(LEAST_SCALE * tolerance_cents, 10.0 * ceil(min(widest, WIDEST_SCALE_CENTS) / 10.0))
 
 
-def _figures(contents: Contents, paper: str, tolerance_cents: float) -> list[Figure]:
+def _figures(contents: Contents, edition: Edition) -> list[Figure]:
     with house_style():
-        book = _fitted(contents, paper, tolerance_cents)
-        return [_draw_page(contents, paper, book, k) for k in range(len(book))]
+        book = _fitted(contents, edition)
+        return [_draw_page(contents, edition, book, k) for k in range(len(book))]
 
 
-def _fitted(contents: Contents, paper: str, tolerance_cents: float) -> Book:
+def _fitted(contents: Contents, edition: Edition) -> Book:
     """Return the blocks page by page: as few pages as can be, and on those as roomy as can be."""
     books = []
     for step in range(SIZES + 1):
-        books.append(_book(contents, paper, tolerance_cents, 1.0 - step / SIZES))
+        books.append(_book(contents, edition, 1.0 - step / SIZES))
         if len(books[-1]) == 1:
             break
     return min(books, key=len)
 
 
-def _book(contents: Contents, paper: str, tolerance_cents: float, roomy: float) -> Book:
-    width, height = paper_size_mm(paper)
-    across, room = width - MARGIN_MM - LEFT_MM, height - 2.0 * MARGIN_MM - _FOOT_MM
-    blocks = _blocks(contents, across, tolerance_cents, roomy)
+def _book(contents: Contents, edition: Edition, roomy: float) -> Book:
     book: Book = [[]]
-    left = room - _header(contents, first=True, room_mm=across).height_mm
-    for block in blocks:
+    left = edition.down_mm - _header(contents, edition, first=True).height_mm
+    for block in _blocks(contents, edition, roomy):
         if book[-1] and block.height_mm > left:
             book.append([])
-            left = room - _header(contents, first=False, room_mm=across).height_mm
+            left = edition.down_mm - _header(contents, edition, first=False).height_mm
         book[-1].append(block)
         left -= block.height_mm
     return book
 
 
-def _blocks(contents: Contents, room_mm: float, tolerance_cents: float, roomy: float) -> list[Block]:
+def _blocks(contents: Contents, edition: Edition, roomy: float) -> list[Block]:
     entries = [entry for section in contents.sections for entry in section.entries]
-    limit = scale_limit_cents(entries, tolerance_cents)
+    limit = scale_limit_cents(entries, edition.tolerance_cents)
     rows: list[Row] = []
-    for section in contents.sections:
-        look = look_for(section.register > 1, roomy, limit, tolerance_cents)
-        rows += rows_of(section, look, contents.holes, room_mm, contents.reference_label)
+    for upper in (True, False):
+        sections = [
+            section
+            for section in contents.sections
+            if (section.register > 1) == upper and (section.groups or not edition.is_card)
+        ]
+        look = _look(edition, contents.holes, limit, upper=upper, roomy=roomy)
+        rows += rows_of(sections, look, contents.holes, edition.across_mm, contents.reference_label)
     blocks = [Block(height_mm=row.height_mm, draw=partial(draw_row, row)) for row in rows]
-    return [*blocks, _closing(contents, room_mm, tolerance_cents)]
+    return [*blocks, _closing(contents, edition)]
 
 
-def _draw_page(contents: Contents, paper: str, book: Book, number: int) -> Figure:
-    page = Page(paper)
-    header = _header(contents, first=number == 0, room_mm=page.right_mm - LEFT_MM)
-    header.draw(page, MARGIN_MM)
+def _look(edition: Edition, holes: int, limit_cents: float, *, upper: bool, roomy: float) -> Look:
+    """Return the look of the upper registers or of the first, from 0 (tight) to 1 (roomy)."""
+
+    def between(tight: float, wide: float) -> float:
+        return tight + roomy * (wide - tight)
+
+    card = edition.is_card
+    hole = between(1.9 if card else 2.7 if upper else 2.4, 5.6 if upper else 4.0)
+    height = between(7.0 if card else 12.0 if upper else 9.0, 28.0 if upper else 20.0)
+    word = SMALL if card else word_voice(holes)
+    narrowest = _NARROWEST_CARD_COLUMN_MM if card else NARROWEST_COLUMN_MM
+    return Look(
+        flute=FluteSize(hole_mm=hole, pitch_mm=between(1.22, 1.36) * hole, hands_apart_mm=0.4 * hole),
+        scale=Scale(height_mm=height, limit_cents=limit_cents, tolerance_cents=edition.tolerance_cents),
+        space_mm=between(1.15, 1.6 if upper else 1.4),
+        heading=_CARD_HEADING if card else HEADING,
+        note=_CARD_NOTE if card else NOTE if upper else NOTE_SMALL,
+        word=word,
+        narrowest_mm=max(narrowest, width_mm("x" * holes, word) + 0.9),
+        detailed=not card,
+    )
+
+
+def _draw_page(contents: Contents, edition: Edition, book: Book, number: int) -> Figure:
+    page = edition.page()
+    header = _header(contents, edition, first=number == 0)
+    header.draw(page, page.margin_mm)
     blocks, last = book[number], number == len(book) - 1
-    top, bottom = MARGIN_MM + header.height_mm, page.bottom_mm - _FOOT_MM
+    top, bottom = page.margin_mm + header.height_mm, page.bottom_mm - _FOOT_MM
     spare = bottom - top - sum(block.height_mm for block in blocks)
     for block in blocks[:-1] if last else blocks:
         block.draw(page, top)
@@ -154,7 +267,7 @@ def _draw_page(contents: Contents, paper: str, book: Book, number: int) -> Figur
 
 
 def _draw_foot(page: Page, number: int, pages: int) -> None:
-    page.text(LEFT_MM, page.bottom_mm, "measured and drawn with fluteprobe", LABEL, colour=QUIET)
+    page.text(page.left_mm, page.bottom_mm, "measured and drawn with fluteprobe", LABEL, colour=QUIET)
     if pages > 1:
         words = f"page {number} of {pages}"
         page.text(page.right_mm, page.bottom_mm, words, LABEL, align="right", colour=QUIET)
@@ -163,11 +276,15 @@ def _draw_foot(page: Page, number: int, pages: int) -> None:
 # --- the header --------------------------------------------------------------------------------------------
 
 
-def _header(contents: Contents, *, first: bool, room_mm: float) -> Block:
+def _header(contents: Contents, edition: Edition, *, first: bool) -> Block:
+    if edition.is_card:
+        return Block(height_mm=17.0, draw=partial(_draw_card_header, contents))
     if not first:
         return Block(height_mm=13.0, draw=partial(_draw_running_header, contents))
-    lines, voice = _title_lines(contents.title, room_mm)
+    lines, voice = _title_lines(contents.title, edition.across_mm)
     height = 26.0 + _TITLE_LINE_MM * (len(lines) - 1)
+    if not _fit_beside(contents, edition.across_mm):
+        height += _SUBTITLE_LINE_MM
     return Block(height_mm=height, draw=partial(_draw_header, contents, lines, voice))
 
 
@@ -181,30 +298,59 @@ def _title_lines(title: str, room_mm: float) -> tuple[list[str], Type]:
     return [first, *([shortened(" ".join(rest), voices[-1], room_mm)] if rest else [])], voices[-1]
 
 
+def _fit_beside(contents: Contents, room_mm: float) -> bool:
+    """Whether the subtitle and the summary fit on one line."""
+    return width_mm(contents.subtitle, SUBTITLE) + width_mm(contents.summary, SUBTITLE) + 5.0 <= room_mm
+
+
 def _draw_header(contents: Contents, lines: Sequence[str], voice: Type, page: Page, top: float) -> None:
+    left, room = page.left_mm, page.right_mm - page.left_mm
     for k, line in enumerate(lines):
-        page.text(LEFT_MM, top + 9.0 + _TITLE_LINE_MM * k, line, voice)
+        page.text(left, top + 9.0 + _TITLE_LINE_MM * k, line, voice)
     y = top + 15.8 + _TITLE_LINE_MM * (len(lines) - 1)
-    beside = page.right_mm - LEFT_MM - width_mm(contents.summary, SUBTITLE) - 5.0
-    page.text(LEFT_MM, y, shortened(contents.subtitle, SUBTITLE, beside), SUBTITLE, colour=QUIET)
-    page.text(page.right_mm, y, contents.summary, SUBTITLE, align="right", colour=QUIET)
-    page.line((LEFT_MM, y + 3.4), (LEFT_MM + 14.0, y + 3.4), colour=ACCENT, pt=1.6)
+    page.text(left, y, shortened(contents.subtitle, SUBTITLE, room), SUBTITLE, colour=QUIET)
+    if _fit_beside(contents, room):
+        page.text(page.right_mm, y, contents.summary, SUBTITLE, align="right", colour=QUIET)
+    else:
+        y += _SUBTITLE_LINE_MM
+        page.text(left, y, contents.summary, SUBTITLE, colour=QUIET)
+    page.line((left, y + 3.4), (left + 14.0, y + 3.4), colour=ACCENT, pt=1.6)
 
 
 def _draw_running_header(contents: Contents, page: Page, top: float) -> None:
-    words = shortened(contents.title, SUBTITLE, page.right_mm - LEFT_MM)
-    page.text(LEFT_MM, top + 3.5, words, SUBTITLE, colour=QUIET)
-    page.line((LEFT_MM, top + 6.0), (LEFT_MM + 14.0, top + 6.0), colour=ACCENT, pt=1.6)
+    words = shortened(contents.title, SUBTITLE, page.right_mm - page.left_mm)
+    page.text(page.left_mm, top + 3.5, words, SUBTITLE, colour=QUIET)
+    page.line((page.left_mm, top + 6.0), (page.left_mm + 14.0, top + 6.0), colour=ACCENT, pt=1.6)
+
+
+def _draw_card_header(contents: Contents, page: Page, top: float) -> None:
+    """Write the name, and beside it what kind of flute it is as far as there is room."""
+    left, room = page.margin_mm, page.right_mm - page.margin_mm
+    voices = [Type(size_pt=size) for size in _CARD_TITLES_PT]
+    voice = next((v for v in voices if width_mm(contents.title, v) <= room), voices[-1])
+    title = shortened(contents.title, voice, room)
+    page.text(left, top + 6.0, title, voice)
+    page.line((left, top + 11.6), (left + 10.0, top + 11.6), colour=ACCENT, pt=1.4)
+    words = shortened(contents.subtitle, _CARD_SUBTITLE, room - 12.0)
+    page.text(page.right_mm, top + 12.4, words, _CARD_SUBTITLE, align="right", colour=QUIET)
 
 
 # --- what closes the chart: lists, key and conditions ------------------------------------------------------
 
 
-def _closing(contents: Contents, room_mm: float, tolerance_cents: float) -> Block:
-    key = Block(height_mm=16.5, draw=partial(_draw_key, tolerance_cents))
-    lists = [_listed(aside, room_mm) for aside in contents.asides]
-    conditions = _listed(Aside(label="conditions", items=contents.conditions), room_mm)
-    blocks = [*lists, key, conditions]
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Sign:
+    """A sign of the key: how wide it is, how it is drawn from its left end and middle, and what it means."""
+
+    width_mm: float
+    draw: Callable[[Page, float, float], None]
+    words: str
+
+
+def _closing(contents: Contents, edition: Edition) -> Block:
+    blocks = [_listed(aside, edition) for aside in contents.asides]
+    blocks.append(_key(contents, edition))
+    blocks.append(_listed(Aside(label="conditions", items=contents.conditions), edition))
     return Block(height_mm=sum(block.height_mm for block in blocks), draw=partial(_draw_stacked, blocks))
 
 
@@ -214,52 +360,101 @@ def _draw_stacked(blocks: Sequence[Block], page: Page, top: float) -> None:
         top += block.height_mm
 
 
-def _listed(aside: Aside, room_mm: float) -> Block:
-    lines = wrapped(aside.items, SMALL, room_mm, between="  ·  ")
-    if len(lines) > MOST_ASIDE_LINES:
-        lines = [*lines[: MOST_ASIDE_LINES - 1], "… and more, in the measurements"]
-    return Block(height_mm=_LINE_MM * len(lines) + 1.2, draw=partial(_draw_list, aside.label, lines))
+def _listed(aside: Aside, edition: Edition) -> Block:
+    lines = wrapped(aside.items, SMALL, edition.across_mm, between="  ·  ")
+    most = 1 if edition.is_card else MOST_ASIDE_LINES
+    if len(lines) > most:
+        lines = [*lines[: most - 1], "… and more, in the measurements"] if most > 1 else lines[:1]
+    label = "" if edition.is_card else aside.label
+    return Block(height_mm=_LINE_MM * len(lines) + 1.2, draw=partial(_draw_list, label, lines))
 
 
 def _draw_list(label: str, lines: Sequence[str], page: Page, top: float) -> None:
-    page.text(LEFT_MM - LABEL_GAP_MM, top + 3.2, label, LABEL, align="right", colour=QUIET)
+    page.text(page.left_mm - LABEL_GAP_MM, top + 3.2, label, LABEL, align="right", colour=QUIET)
     for k, line in enumerate(lines):
-        page.text(LEFT_MM, top + 3.2 + _LINE_MM * k, line, SMALL)
+        page.text(page.left_mm, top + 3.2 + _LINE_MM * k, line, SMALL)
 
 
-def _draw_key(tolerance_cents: float, page: Page, top: float) -> None:
-    page.line((LEFT_MM, top + 1.5), (page.right_mm, top + 1.5), colour=HAIRLINE)
-    page.text(LEFT_MM - LABEL_GAP_MM, top + 6.3, "key", LABEL, align="right", colour=QUIET)
-    _draw_hole_key(page, LEFT_MM, top + 5.3)
-    _draw_deviation_key(page, LEFT_MM, top + 11.3, tolerance_cents)
-    page.line((LEFT_MM, top + 15.2), (page.right_mm, top + 15.2), colour=HAIRLINE)
+def _key(contents: Contents, edition: Edition) -> Block:
+    lines: list[list[Sign]] = [[]]
+    left = edition.across_mm
+    for sign in _signs(contents, edition):
+        if lines[-1] and _width_mm(sign) > left:
+            lines.append([])
+            left = edition.across_mm
+        lines[-1].append(sign)
+        left -= _width_mm(sign) + 5.0
+    height = _KEY_LINE_MM * len(lines) + 4.5
+    return Block(height_mm=height, draw=partial(_draw_key, lines, height))
 
 
-def _draw_hole_key(page: Page, x: float, y: float) -> None:
-    for state, word in (("x", "closed"), ("o", "open"), ("h", "half-holed"), ("v", "vented, barely cracked")):
-        draw_hole(page, x + 1.9, y, 3.4, state)
-        x = _key_words(page, x + 6.0, y, f"{state}  {word}")
-    _key_words(page, x, y, "the mouth end is up")
+def _width_mm(sign: Sign) -> float:
+    return sign.width_mm + width_mm(sign.words, SMALL)
 
 
-def _draw_deviation_key(page: Page, x: float, y: float, tolerance_cents: float) -> None:
-    scale = Scale(height_mm=5.0, limit_cents=3.0 * tolerance_cents, tolerance_cents=tolerance_cents)
-    within, off, wide = 0.0, 2.2 * tolerance_cents, 1.1 * tolerance_cents
-    marks = (
-        (within, 0.0, f"within {tolerance_cents:g} cents"),
-        (off, 0.0, "sharper"),
-        (-off, 0.0, "flatter"),
-        (within, wide, "its uncertainty (standard, k = 1)"),
-    )
-    for cents, uncertainty, words in marks:
-        draw_scale(page, x, x + 3.8, y, scale)
-        draw_deviation(page, (x + 1.9, y), scale, cents, uncertainty)
-        x = _key_words(page, x + 6.0, y, words)
-    page.text(x, y + 1.0, "or", LABEL, colour=QUIET)
-    _key_words(page, x + 4.5, y, "for the same note, best first")
+def _draw_key(lines: Sequence[Sequence[Sign]], height: float, page: Page, top: float) -> None:
+    bottom = top + height - 1.3
+    page.line((page.left_mm, top + 1.5), (page.right_mm, top + 1.5), colour=HAIRLINE)
+    if page.gutter_mm > 12.0:
+        page.text(page.left_mm - LABEL_GAP_MM, top + 6.3, "key", LABEL, align="right", colour=QUIET)
+    for k, line in enumerate(lines):
+        x, y = page.left_mm, top + 5.3 + _KEY_LINE_MM * k
+        for sign in line:
+            sign.draw(page, x, y)
+            page.text(x + sign.width_mm, y + 1.0, sign.words, SMALL)
+            x += _width_mm(sign) + 5.0
+    page.line((page.left_mm, bottom), (page.right_mm, bottom), colour=HAIRLINE)
 
 
-def _key_words(page: Page, x: float, y: float, words: str) -> float:
-    """Write beside a symbol whose middle is at y, and return where the next symbol starts."""
-    page.text(x, y + 1.0, words, SMALL)
-    return x + width_mm(words, SMALL) + 5.0
+def _signs(contents: Contents, edition: Edition) -> list[Sign]:
+    used = {state for s in contents.sections for entry in s.entries for state in str(entry.fingering)}
+    states = {"x": "closed", "o": "open", "h": "half-holed", "v": "barely cracked"}
+    shown = [state for state in states if state in used or not edition.is_card]
+    holes = [Sign(width_mm=6.0, draw=partial(_draw_state, s), words=f"{s}  {states[s]}") for s in shown]
+    mouth = Sign(width_mm=5.4, draw=_draw_mouth, words="mouth end")
+    return [mouth, *holes, *_deviation_signs(edition), *([] if edition.is_card else _other_signs())]
+
+
+def _draw_state(state: str, page: Page, x: float, y: float) -> None:
+    draw_hole(page, x + 1.9, y, 3.4, state)
+
+
+def _deviation_signs(edition: Edition) -> list[Sign]:
+    tolerance = edition.tolerance_cents
+    scale = Scale(height_mm=5.0, limit_cents=3.0 * tolerance, tolerance_cents=tolerance)
+    marks = [
+        (0.0, 0.0, f"within {tolerance:g} cents"),
+        (2.2 * tolerance, 0.0, "sharper"),
+        (-2.2 * tolerance, 0.0, "flatter"),
+        (0.0, 1.1 * tolerance, "uncertainty" if edition.is_card else "uncertainty (k = 1)"),
+    ]
+    return [
+        Sign(width_mm=6.0, draw=partial(_draw_mark, scale, (cents, doubt)), words=words)
+        for cents, doubt, words in marks
+    ]
+
+
+def _draw_mark(scale: Scale, mark: tuple[float, float], page: Page, x: float, y: float) -> None:
+    draw_scale(page, x, x + 3.8, y, scale)
+    draw_deviation(page, (x + 1.9, y), scale, *mark)
+
+
+def _other_signs() -> list[Sign]:
+    alternative, share = partial(_draw_word, "or"), partial(_draw_half, "1 of 2")
+    return [
+        Sign(width_mm=4.5, draw=alternative, words="same note, best first"),
+        Sign(width_mm=9.5, draw=share, words="takes that spoke"),
+    ]
+
+
+def _draw_mouth(page: Page, x: float, y: float) -> None:
+    page.box((x + 0.2, y - 0.45), (3.4, 0.9), QUIET)
+
+
+def _draw_word(word: str, page: Page, x: float, y: float) -> None:
+    page.text(x, y + 1.0, word, LABEL, colour=QUIET)
+
+
+def _draw_half(word: str, page: Page, x: float, y: float) -> None:
+    page.text(x, y + 0.6, word, SMALL)
+    draw_share(page, (x + 3.5, y + 2.0), 7.0, 0.5)

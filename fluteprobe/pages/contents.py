@@ -66,8 +66,8 @@ class Contents:
     reference_label: str | None
 
 
-def chart_contents(survey: Survey, tolerance_cents: float = 10.0) -> Contents:
-    """Return what a survey's chart says.
+def chart_contents(survey: Survey, tolerance_cents: float = 10.0, *, best_only: bool = False) -> Contents:
+    """Return what a survey's chart says; with `best_only` one fingering for each note, and no lists.
 
     Raises
     ------
@@ -76,17 +76,16 @@ def chart_contents(survey: Survey, tolerance_cents: float = 10.0) -> Contents:
     """
     if not (isfinite(tolerance_cents) and tolerance_cents > 0.0):
         raise ValueError(f"a tolerance is above 0 cents, not {tolerance_cents}")
-    heard: list[Register] = [3] if any(entry.register == 3 for entry in survey.entries) else []
+    entries = _best_of_each_note(survey.entries, tolerance_cents) if best_only else survey.entries
+    heard: list[Register] = [3] if any(entry.register == 3 for entry in entries) else []
     return Contents(
         title=clean(survey.flute.name) or "A flute without a name",
         subtitle=_subtitle(survey),
-        summary=_summary(survey.entries),
+        summary=_summary(entries),
         maker=clean(survey.flute.maker or "") or None,
         holes=survey.flute.holes,
-        sections=tuple(_section(survey.entries, r, tolerance_cents) for r in (*heard, 2, 1)),
-        asides=tuple(
-            aside for aside in (_silent(survey), _undecided(survey), _unused(survey)) if aside.items
-        ),
+        sections=tuple(_section(entries, r, tolerance_cents) for r in (*heard, 2, 1)),
+        asides=() if best_only else _asides(survey),
         conditions=_conditions(survey),
         reference_label=_reference_label(survey),
     )
@@ -97,12 +96,25 @@ def note_text(note: str) -> str:
     return note[:1] + note[1:].replace("#", "♯").replace("b", "♭")
 
 
-def cents_text(cents: float | None) -> str:
-    """Return a deviation in whole cents, always with its sign: `+4`, `−12`, `0`."""
+def cents_text(cents: float | None, tolerance_cents: float | None = None) -> str:
+    """Return a deviation in whole cents, always with its sign: `+4`, `−12`, `0`.
+
+    Given a tolerance, a deviation gets as many decimals as it takes to stand on the same side of it in print:
+    with a tolerance of 10 cents 10.3 is `+10.3` and not `+10`.
+    """
     if cents is None or not isfinite(cents):
         return "?"
-    whole = round(cents)
-    return "0" if whole == 0 else f"{'+' if whole > 0 else MINUS}{abs(whole)}"
+    digits = 0
+    while tolerance_cents is not None and digits < 3 and _misleads(cents, tolerance_cents, digits):
+        digits += 1
+    number = f"{abs(cents):.{digits}f}"
+    sign = "+" if cents > 0.0 else MINUS
+    return number if float(number) == 0.0 else f"{sign}{number}"
+
+
+def _misleads(cents: float, tolerance_cents: float, digits: int) -> bool:
+    """Whether a rounded deviation is on the other side of a tolerance than the deviation itself."""
+    return (round(abs(cents), digits) > tolerance_cents) != (abs(cents) > tolerance_cents)
 
 
 def uncertainty_text(cents: float | None) -> str:
@@ -112,9 +124,11 @@ def uncertainty_text(cents: float | None) -> str:
     return f"±{cents:.1f}" if cents < 9.95 else f"±{cents:.0f}"
 
 
-def share_text(share: float) -> str:
-    """Return a share from 0 to 1 in per cent."""
-    return f"{100.0 * share:.0f} %"
+def spoke_text(entry: Entry) -> str:
+    """Return in how many takes a fingering spoke: `3`, or where others did not `3 of 4`."""
+    spoke = len(entry.takes)
+    tried = round(spoke / entry.reliability) if entry.reliability > 0.0 else spoke
+    return f"{spoke} of {tried}" if entry.reliability < 1.0 else f"{spoke}"
 
 
 def best_first(entries: Iterable[Entry], tolerance_cents: float) -> tuple[Entry, ...]:
@@ -135,6 +149,14 @@ def best_first(entries: Iterable[Entry], tolerance_cents: float) -> tuple[Entry,
         )
 
     return tuple(sorted(entries, key=rank))
+
+
+def _best_of_each_note(entries: Sequence[Entry], tolerance_cents: float) -> tuple[Entry, ...]:
+    """Return one fingering for each note, the best in whichever register it is."""
+    notes = dict.fromkeys(entry.note for entry in entries)
+    return tuple(
+        best_first((entry for entry in entries if entry.note == note), tolerance_cents)[0] for note in notes
+    )
 
 
 def _section(entries: Sequence[Entry], register: Register, tolerance_cents: float) -> Section:

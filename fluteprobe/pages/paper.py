@@ -9,7 +9,7 @@ import os
 import unicodedata
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache
 from pathlib import Path as File
 from typing import Any, Literal
@@ -25,14 +25,25 @@ from matplotlib.text import Text
 from matplotlib.textpath import text_to_path
 from matplotlib.transforms import Affine2D
 
+from fluteprobe.pages.language import pdf_in_language, svg_in_language
+
 MM_PER_INCH = 25.4
 MM_PER_POINT = MM_PER_INCH / 72.0
-PAPERS_MM = {"a4": (210.0, 297.0), "letter": (215.9, 279.4)}  # ISO 216; ANSI/ASME Y14.1 size A
+PAPERS_MM = {
+    "a4": (210.0, 297.0),  # ISO 216, and A6
+    "letter": (215.9, 279.4),  # ANSI/ASME Y14.1 size A: 8.5 by 11 in
+    "a6": (105.0, 148.0),
+    "4x6": (101.6, 152.4),  # inches: the size of an index card
+}
+CARDS = ("a6", "4x6")  # small enough for a flute's case
 MARGIN_MM = 13.0
+CARD_MARGIN_MM = 6.0
 GUTTER_MM = 19.0  # left of the drawings, where their lines are named
+CARD_GUTTER_MM = 9.5
 LEFT_MM = MARGIN_MM + GUTTER_MM
 SMALLEST_TYPE_PT = 7.0
 PNG_DOTS_PER_INCH = 200
+LANGUAGE = "en"
 SUFFIXES = (".pdf", ".png", ".svg")
 
 # One accent on warm greys. Meaning is carried by shape and place; these only support it.
@@ -96,6 +107,9 @@ class Page:
     ----------
     paper
         A key of PAPERS_MM, in any case.
+    magnified
+        How much larger everything is printed than it is asked for, type included: the page is that much
+        smaller to draw on, and every length here is of that smaller page.
 
     Raises
     ------
@@ -103,31 +117,41 @@ class Page:
         If the paper is not known.
     """
 
-    def __init__(self, paper: str = "a4") -> None:
-        self.width_mm, self.height_mm = paper_size_mm(paper)
+    def __init__(self, paper: str = "a4", *, magnified: float = 1.0) -> None:
+        printed_mm = paper_size_mm(paper)
+        self.width_mm, self.height_mm = (length / magnified for length in printed_mm)
+        self.margin_mm = margin_mm(paper) / magnified
+        self.gutter_mm = gutter_mm(paper)
+        self.magnified = magnified
         self.figure = Figure(
-            figsize=(self.width_mm / MM_PER_INCH, self.height_mm / MM_PER_INCH), facecolor=WHITE
+            figsize=(printed_mm[0] / MM_PER_INCH, printed_mm[1] / MM_PER_INCH), facecolor=WHITE
         )
         from_millimetres = Affine2D().scale(1.0 / self.width_mm, -1.0 / self.height_mm).translate(0.0, 1.0)
         self._transform = from_millimetres + self.figure.transFigure
 
     @property
+    def left_mm(self) -> float:
+        """Where the gutter ends and the drawings begin."""
+        return self.margin_mm + self.gutter_mm
+
+    @property
     def right_mm(self) -> float:
         """Where the right margin begins."""
-        return self.width_mm - MARGIN_MM
+        return self.width_mm - self.margin_mm
 
     @property
     def bottom_mm(self) -> float:
         """Where the bottom margin begins."""
-        return self.height_mm - MARGIN_MM
+        return self.height_mm - self.margin_mm
 
     def text(  # noqa: PLR0913 - a word's place, voice and colour are all of them needed
         self, x_mm: float, y_mm: float, words: str, voice: Type, *, align: Align = "left", colour: str = INK
     ) -> None:
         """Set one line of text on the baseline y."""
         words, families = printable(words, voice)
+        printed = replace(voice, size_pt=self.magnified * voice.size_pt)
         label = Text(
-            x_mm, y_mm, words, color=colour, ha=align, va="baseline", fontproperties=_font(voice, families),
+            x_mm, y_mm, words, color=colour, ha=align, va="baseline", fontproperties=_font(printed, families),
             parse_math=False, usetex=False, transform=self._transform,
         )  # fmt: skip
         self._add(label)
@@ -153,7 +177,7 @@ class Page:
     def path(self, outline: Path, *, fill: str = "none", edge: str = "none", pt: float = HAIR_PT) -> None:
         """Draw a path in page millimetres."""
         patch = PathPatch(outline, facecolor=fill, edgecolor=edge, transform=self._transform)
-        patch.set_linewidth(0.0 if edge == "none" else pt)
+        patch.set_linewidth(0.0 if edge == "none" else self.magnified * pt)
         patch.set_capstyle("butt")
         patch.set_joinstyle("miter")
         self._add(patch)
@@ -175,6 +199,16 @@ def paper_size_mm(paper: str) -> tuple[float, float]:
         return PAPERS_MM[paper.lower()]
     except KeyError:
         raise ValueError(f"paper is one of {', '.join(PAPERS_MM)}, not {paper!r}") from None
+
+
+def margin_mm(paper: str) -> float:
+    """Return how wide a paper's margins are."""
+    return CARD_MARGIN_MM if paper.lower() in CARDS else MARGIN_MM
+
+
+def gutter_mm(paper: str) -> float:
+    """Return how wide the gutter is on a paper, however magnified."""
+    return CARD_GUTTER_MM if paper.lower() in CARDS else GUTTER_MM
 
 
 def clean(words: str) -> str:
@@ -239,10 +273,18 @@ def house_style() -> Iterator[None]:
         yield
 
 
-def save_pages(pages: Sequence[Figure], target: File, *, title: str, author: str | None) -> tuple[File, ...]:
+def save_pages(
+    pages: Sequence[Figure],
+    target: File,
+    *,
+    title: str,
+    author: str | None,
+    dots_per_inch: float = PNG_DOTS_PER_INCH,
+) -> tuple[File, ...]:
     """Write the pages and return the files written: one PDF, or a PNG or SVG for each page (`-2`, `-3` …).
 
-    Each file is written beside its place first and then put there whole.
+    Each file is written beside its place first and then put there whole. Further pages that an earlier,
+    longer set left behind are removed.
 
     Raises
     ------
@@ -258,7 +300,8 @@ def save_pages(pages: Sequence[Figure], target: File, *, title: str, author: str
             return (target,)
         targets = tuple(_numbered(target, k) for k in range(1, len(pages) + 1))
         for page, place in zip(pages, targets, strict=True):
-            _save_picture(page, place, title, author)
+            _save_picture(page, place, title, author, dots_per_inch)
+        _remove_further(target, len(pages) + 1)
         return targets
 
 
@@ -266,19 +309,23 @@ def _save_pdf(pages: Sequence[Figure], target: File, title: str, author: str | N
     facts: dict[str, Any] = {"Title": title, "Creator": "fluteprobe", "CreationDate": None}
     if author:
         facts["Author"] = author
-    with _put_whole(target) as draft, PdfPages(draft, metadata=facts) as book:
-        for page in pages:
-            book.savefig(page)
+    with _put_whole(target) as draft:
+        with PdfPages(draft, metadata=facts) as book:
+            for page in pages:
+                book.savefig(page)
+        draft.write_bytes(pdf_in_language(draft.read_bytes(), LANGUAGE))
 
 
-def _save_picture(page: Figure, target: File, title: str, author: str | None) -> None:
+def _save_picture(page: Figure, target: File, title: str, author: str | None, dots_per_inch: float) -> None:
     kind = target.suffix.lower().lstrip(".")
     creator, by = ("Software", "Author") if kind == "png" else ("Creator", "Contributor")
     facts: dict[str, Any] = {"Title": title, creator: "fluteprobe"} | ({by: author} if author else {})
     if kind == "svg":
         facts["Date"] = None
     with _put_whole(target) as draft:
-        page.savefig(draft, format=kind, dpi=PNG_DOTS_PER_INCH if kind == "png" else 72, metadata=facts)
+        page.savefig(draft, format=kind, dpi=dots_per_inch if kind == "png" else 72, metadata=facts)
+        if kind == "svg":
+            draft.write_bytes(svg_in_language(draft.read_bytes(), LANGUAGE, title))
 
 
 @contextmanager
@@ -293,6 +340,13 @@ def _put_whole(target: File) -> Iterator[File]:
 
 def _numbered(target: File, number: int) -> File:
     return target if number == 1 else target.with_name(f"{target.stem}-{number}{target.suffix}")
+
+
+def _remove_further(target: File, number: int) -> None:
+    """Remove pages from that number on, as far as they are numbered without a gap."""
+    while (further := _numbered(target, number)).is_file():
+        further.unlink()
+        number += 1
 
 
 def _font(voice: Type, families: Sequence[str]) -> FontProperties:
