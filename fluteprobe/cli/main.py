@@ -15,6 +15,7 @@ from fluteprobe.cli.begin import begin
 from fluteprobe.cli.chart import chart
 from fluteprobe.cli.hear import hear
 from fluteprobe.cli.measure import measure
+from fluteprobe.cli.sheet import sheet
 
 
 class Unusable(click.ClickException):
@@ -54,7 +55,7 @@ class Door(click.Group):
 
 @click.group(
     cls=Door,
-    commands=[begin, hear, measure, chart],
+    commands=[begin, sheet, hear, measure, chart],
     context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 88, "color": False},
 )
 @click.version_option(__version__, "-V", "--version", prog_name="fluteprobe")

@@ -47,6 +47,11 @@ class PlannedTake:
         breath = "" if self.breath == "normal" else f"-{self.breath}"
         return f"{self.fingering}{breath}{'' if self.number == 1 else f'-{self.number}'}"
 
+    @property
+    def file_name(self) -> str:
+        """The take's file name as a WAV file: `oxxxxx-over-2.wav`."""
+        return f"{self.stem}.wav"
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class _Group:
