@@ -1,7 +1,7 @@
 """Registers on simulated flutes of random build that tuned nothing: seeds 200 up; constants came from others.
 
-Truth is the mode that carries the tone in the simulation (samples/simulation.py). Takes whose tone is not clean by
-that truth (two registers at once) are not judged. The full size is in tests/bench/.
+Truth is the mode that carries the tone in the simulation (samples/simulation.py). Takes whose tone is not
+clean by that truth (two registers at once) are not judged. The full size is in tests/bench/.
 """
 
 from collections import Counter
