@@ -393,11 +393,19 @@ def _truth(build: FluteBuild, blown: _Blown, curve: Curve) -> tuple[SimulatedTon
     strongest = size.max(axis=0)
     area = build.window_mm * build.window_width_mm * 1e-6
     loud = 2.0 * strongest / area > _LOUD * np.maximum(jet, 5.0)
-    register = 1 + np.argmax(size > _PRESENT * strongest, axis=0)
+    register = _settled(1 + np.argmax(size > _PRESENT * strongest, axis=0))
     stretch = _stretches(curve, len(jet))
     label = np.where(loud & (stretch > 0), _MANY * stretch + register, 0)
     tones = (_tone(blown.states, key % _MANY, a, b) for key, a, b in _runs(label) if key)
     return tuple(tone for tone in tones if tone is not None)
+
+
+def _settled(labels: npt.NDArray[np.int64]) -> npt.NDArray[np.int64]:
+    """Return the labels' running median over 110 ms: a mode that flares up for a moment is no new tone."""
+    half = 5
+    padded = np.pad(labels, half, mode="edge")
+    around = np.lib.stride_tricks.sliding_window_view(padded, 2 * half + 1)
+    return np.asarray(np.median(around, axis=1), dtype=np.int64)
 
 
 def _stretches(curve: Curve, frames: int) -> npt.NDArray[np.int64]:
