@@ -1,14 +1,41 @@
-"""`fluteprobe chart`: the printed page."""
+"""`fluteprobe chart`: the printed pages."""
 
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
 from fluteprobe.cli.measure import measured
 from fluteprobe.cli.options import FOLDER, out_option, reports_folder
 
+if TYPE_CHECKING:
+    from fluteprobe.survey import Survey
+
 FORMATS = ("pdf", "png", "svg")
-PAPERS = ("a4", "letter")
+PAPERS = ("a4", "letter", "a6", "4x6")
+CARDS = ("a6", "4x6")
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Wish:
+    """How the pages are to look."""
+
+    paper: str
+    large: bool
+    tolerance_cents: float
+    dots_per_inch: float
+
+    @property
+    def name(self) -> str:
+        """What the chart's file is called, so that a card or large print does not replace the chart."""
+        return "card" if self.paper in CARDS else "chart-large" if self.large else "chart"
+
+    @property
+    def has_map(self) -> bool:
+        """Whether the register map goes with it."""
+        return self.name == "chart"
 
 
 def _formats(ctx: click.Context, param: click.Parameter, given: tuple[str, ...]) -> tuple[str, ...]:
@@ -35,8 +62,9 @@ def _formats(ctx: click.Context, param: click.Parameter, given: tuple[str, ...])
     "--paper",
     type=click.Choice(PAPERS, case_sensitive=False),
     default="a4",
-    help="What it is printed on.  [default: a4]",
+    help="What it is printed on: a6 and 4x6 (inches) are cards for the flute's case.  [default: a4]",
 )
+@click.option("--large", is_flag=True, help="Large print, for a music stand.")
 @click.option(
     "--tolerance",
     "tolerance_cents",
@@ -45,6 +73,14 @@ def _formats(ctx: click.Context, param: click.Parameter, given: tuple[str, ...])
     metavar="CENTS",
     help="How far off still counts as tuned.  [default: 10]",
 )
+@click.option(
+    "--resolution",
+    "dots_per_inch",
+    type=click.FloatRange(40.0, 1200.0),
+    default=200.0,
+    metavar="DPI",
+    help="How fine a PNG is, in dots per inch.  [default: 200]",
+)
 @out_option
 @click.pass_context
 def chart(  # noqa: PLR0913, PLR0917  (click passes every option by name)
@@ -52,13 +88,17 @@ def chart(  # noqa: PLR0913, PLR0917  (click passes every option by name)
     folder: Path,
     formats: tuple[str, ...],
     paper: str,
+    large: bool,
     tolerance_cents: float,
+    dots_per_inch: float,
     out: Path | None,
 ) -> None:
     """Measure every take of a session folder and draw the flute's fingering chart.
 
-    Writes chart.pdf (or the formats asked for), measurements.json and measurements.csv, and prints
-    where. A take that cannot be used is named, and the chart is drawn from all others.
+    Writes chart.pdf and map.pdf, the map of its registers (or the formats asked for),
+    measurements.json and measurements.csv, and prints where. A card is card.pdf, with the best
+    fingering of each note; large print is chart-large.pdf. A take that cannot be used is named,
+    and the chart is drawn from all others.
 
     \b
     Example:
@@ -67,16 +107,31 @@ def chart(  # noqa: PLR0913, PLR0917  (click passes every option by name)
     from fluteprobe.cli import screen
     from fluteprobe.results import write_results
 
+    if large and paper in CARDS:
+        raise click.UsageError(f"--large needs a larger paper than {paper}: a4 or letter.")
+    wish = Wish(paper=paper, large=large, tolerance_cents=tolerance_cents, dots_per_inch=dots_per_inch)
     survey = measured(folder)
     target = reports_folder(folder, out)
-    written = list(write_results(survey, target))
-
-    from fluteprobe.pages.chart import write_chart
-
-    for suffix in formats:
-        written.append(target / f"chart.{suffix}")
-        write_chart(survey, written[-1], paper=paper, tolerance_cents=tolerance_cents)
+    written = [*write_results(survey, target), *_drawn(survey, target, formats, wish)]
     screen.tell_cautions(survey.readings)
     screen.tell_problems(survey.problems)
     screen.tell_written(written, as_result=True)
     ctx.exit(1 if survey.problems else 0)
+
+
+def _drawn(survey: "Survey", target: Path, formats: Sequence[str], wish: Wish) -> Iterator[Path]:
+    """Draw the pages in every format, and name the files written."""
+    from fluteprobe.pages.chart import write_chart
+    from fluteprobe.pages.map import write_map
+
+    for suffix in formats:
+        yield from write_chart(
+            survey,
+            target / f"{wish.name}.{suffix}",
+            paper=wish.paper,
+            large=wish.large,
+            tolerance_cents=wish.tolerance_cents,
+            dots_per_inch=wish.dots_per_inch,
+        )
+        if wish.has_map:
+            yield from write_map(survey, target / f"map.{suffix}", paper=wish.paper)

@@ -68,7 +68,7 @@ _FOOT_MM = 4.0
 _TITLE_LINE_MM = 8.0
 _SUBTITLE_LINE_MM = 5.0
 _WIDEST_GAP_MM = 8.0
-_NARROWEST_CARD_COLUMN_MM = 10.4
+_NARROWEST_CARD_COLUMN_MM = 9.6
 _CARD_TITLES_PT = (20.0, 17.0, 14.0)
 _CARD_NOTE = Type(size_pt=14.0)
 _CARD_HEADING = Type(size_pt=12.0, italic=True)
@@ -191,24 +191,29 @@ def _figures(contents: Contents, edition: Edition) -> list[Figure]:
 
 def _fitted(contents: Contents, edition: Edition) -> Book:
     """Return the blocks page by page: as few pages as can be, and on those as roomy as can be."""
-    books = []
+    books: list[Book] = []
     for step in range(SIZES + 1):
-        books.append(_book(contents, edition, 1.0 - step / SIZES))
-        if len(books[-1]) == 1:
+        book, fits = _book(contents, edition, 1.0 - step / SIZES)
+        if fits or step == SIZES:
+            books.append(book)
+        if fits and len(book) == 1:
             break
     return min(books, key=len)
 
 
-def _book(contents: Contents, edition: Edition, roomy: float) -> Book:
+def _book(contents: Contents, edition: Edition, roomy: float) -> tuple[Book, bool]:
+    """Return the blocks page by page, and whether each of them fits its page."""
     book: Book = [[]]
     left = edition.down_mm - _header(contents, edition, first=True).height_mm
+    fits = True
     for block in _blocks(contents, edition, roomy):
         if book[-1] and block.height_mm > left:
             book.append([])
             left = edition.down_mm - _header(contents, edition, first=False).height_mm
         book[-1].append(block)
         left -= block.height_mm
-    return book
+        fits = fits and left >= 0.0
+    return book, fits
 
 
 def _blocks(contents: Contents, edition: Edition, roomy: float) -> list[Block]:
