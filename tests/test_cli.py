@@ -152,8 +152,10 @@ def python(code: str, folder: Path, **environment: str) -> "subprocess.Completed
         (["begin", "new", "--holes", "11"], "11 is not in the range 1<=x<=10."),
         (["begin", "new", "--temperature", "70"], "70.0 is not in the range -20.0<=x<=50.0."),
         (["chart", "heron", "--format", "pdf,doc"], "'doc' is not one of pdf, png, svg."),
-        (["chart", "heron", "--paper", "a3"], "'a3' is not one of 'a4', 'letter'."),
+        (["chart", "heron", "--paper", "a3"], "'a3' is not one of 'a4', 'letter', 'a6', '4x6'."),
         (["chart", "heron", "--tolerance", "0"], "0.0 is not in the range 0.0<x<=50.0."),
+        (["chart", "heron", "--resolution", "2"], "2.0 is not in the range 40.0<=x<=1200.0."),
+        (["chart", "heron", "--paper", "a6", "--large"], "--large needs a larger paper than a6"),
     ],
 )
 def test_wrong_usage_is_exit_code_2(here: Path, arguments: list[str], words: str) -> None:
@@ -379,26 +381,44 @@ def test_a_session_without_a_usable_take_is_told(here: Path, command: str) -> No
 def test_chart_prints_the_files_it_wrote(here: Path, measured: Survey) -> None:
     result = run("chart", "heron", "--format", "svg,pdf", "--format", "svg", "--paper", "letter")
     assert result.exit_code == 0, result.output
-    names = ["measurements.json", "measurements.csv", "chart.svg", "chart.pdf"]
+    names = ["measurements.json", "measurements.csv", "chart.svg", "map.svg", "chart.pdf", "map.pdf"]
     assert result.stdout.splitlines() == [str(Path("reports/heron") / name) for name in names]
     assert sorted(path.name for path in Path("reports/heron").iterdir()) == sorted(names)
     assert Path("reports/heron/chart.pdf").read_bytes().startswith(b"%PDF")
 
 
-def test_chart_hands_on_paper_and_tolerance(
-    here: Path, measured: Survey, monkeypatch: pytest.MonkeyPatch
-) -> None:
+def test_chart_hands_on_what_is_wished(here: Path, measured: Survey, monkeypatch: pytest.MonkeyPatch) -> None:
     asked: list[tuple[Any, ...]] = []
 
-    def fake(survey: Survey, target: Path, *, paper: str, tolerance_cents: float) -> None:
-        asked.append((survey is measured, target, paper, tolerance_cents))
+    def fake(survey: Survey, target: Path, **wished: Any) -> tuple[Path, ...]:
+        asked.append((survey is measured, target, *wished.values()))
+        return (target, target.with_name("more"))
 
     monkeypatch.setattr("fluteprobe.pages.chart.write_chart", fake)
-    run("chart", "heron", "--paper", "Letter", "--tolerance", "5", "--out", "out")
-    run("chart", "heron", "--out", "out", "--format", "PNG")
+    monkeypatch.setattr("fluteprobe.pages.map.write_map", fake)
+    words = ["--paper", "Letter", "--tolerance", "5", "--resolution", "150", "--out", "out"]
+    result = run("chart", "heron", *words)
     assert asked == [
-        (True, Path("out/chart.pdf"), "letter", 5.0), (True, Path("out/chart.png"), "a4", 10.0),
+        (True, Path("out/chart.pdf"), "letter", False, 5.0, 150.0), (True, Path("out/map.pdf"), "letter"),
     ]  # fmt: skip
+    assert result.stdout.splitlines()[2:] == [
+        str(Path("out") / name) for name in ("chart.pdf", "more", "map.pdf", "more")
+    ]
+
+
+def test_cards_and_large_print_get_names_of_their_own(
+    here: Path, measured: Survey, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    asked: list[tuple[str, str, bool]] = []
+
+    def fake(survey: Survey, target: Path, *, paper: str, large: bool, **_: Any) -> tuple[Path, ...]:
+        asked.append((target.name, paper, large))
+        return (target,)
+
+    monkeypatch.setattr("fluteprobe.pages.chart.write_chart", fake)
+    run("chart", "heron", "--paper", "4X6", "--format", "PNG", "--out", "out")
+    run("chart", "heron", "--large", "--out", "out")
+    assert asked == [("card.png", "4x6", False), ("chart-large.pdf", "a4", True)]
 
 
 # --- the screen --------------------------------------------------------------------------------------
