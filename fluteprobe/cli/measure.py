@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING
 import click
 
 from fluteprobe.cli.options import FOLDER, json_option, out_option, reports_folder
+from fluteprobe.cli.second import second_option
 
 if TYPE_CHECKING:
     from fluteprobe.survey import Survey
@@ -14,9 +15,10 @@ if TYPE_CHECKING:
 @click.command(short_help="Measure a flute: a table, measurements.json and .csv.")
 @click.argument("folder", type=FOLDER)
 @out_option
+@second_option
 @json_option
 @click.pass_context
-def measure(ctx: click.Context, folder: Path, out: Path | None, as_json: bool) -> None:
+def measure(ctx: click.Context, folder: Path, out: Path | None, second: bool, as_json: bool) -> None:
     """Measure every take of a session folder and print what each fingering gives.
 
     Also writes measurements.json and measurements.csv. A take that cannot be used is named, and all
@@ -27,14 +29,22 @@ def measure(ctx: click.Context, folder: Path, out: Path | None, as_json: bool) -
       fluteprobe measure heron
     """  # noqa: D301  (click reads the \b)
     from fluteprobe.cli import screen
-    from fluteprobe.results import json_text, survey_json, write_results
+    from fluteprobe.cli.second import asked, told, with_opinions
+    from fluteprobe.results import json_text, replace_file, survey_json, write_results
 
     survey = measured(folder)
     written = write_results(survey, reports_folder(folder, out))
+    values = survey_json(survey)
+    opinions = asked(survey.readings, folder) if second else None
+    if opinions is not None:
+        values = with_opinions(values, opinions)
+        replace_file(written[0], json_text(values).encode("utf-8"))
     if as_json:
-        click.echo(json_text(survey_json(survey)), nl=False)
+        click.echo(json_text(values), nl=False)
     else:
         screen.say(screen.survey_table(survey))
+        if opinions is not None:
+            screen.say("\n" + told(survey.readings, opinions))
         screen.tell_cautions(survey.readings)
     screen.tell_problems(survey.problems)
     screen.tell_written(written)
