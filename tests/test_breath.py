@@ -24,7 +24,7 @@ def noise(
 
 
 def found(samples: NDArray[np.float32]) -> tuple[breath.BreathResonance, ...]:
-    spectrum = breath.noise_spectrum(samples, RATE_HZ, TONE_HZ)
+    spectrum = breath.noise_spectrum(samples, RATE_HZ, breath.segment_length(len(samples), RATE_HZ, TONE_HZ))
     assert spectrum is not None
     return breath.breath_resonances(spectrum, TONE_HZ)
 
@@ -56,8 +56,9 @@ def test_a_steady_line_is_no_resonance() -> None:
 
 def test_what_the_room_has_when_nobody_plays_is_no_resonance() -> None:
     rng = np.random.default_rng(43)
-    spectrum = breath.noise_spectrum(noise(2.0, rng, bump_db=16.0), RATE_HZ, TONE_HZ)
-    room = breath.noise_spectrum(noise(2.0, rng, bump_db=16.0), RATE_HZ, TONE_HZ)
+    length = breath.segment_length(2 * RATE_HZ, RATE_HZ, TONE_HZ)
+    spectrum = breath.noise_spectrum(noise(2.0, rng, bump_db=16.0), RATE_HZ, length)
+    room = breath.noise_spectrum(noise(2.0, rng, bump_db=16.0), RATE_HZ, length)
     assert spectrum is not None
     assert breath.breath_resonances(spectrum, TONE_HZ)
     assert not breath.breath_resonances(spectrum, TONE_HZ, room)
@@ -73,4 +74,5 @@ def test_the_chance_is_the_upper_tail_of_the_f_distribution() -> None:
 
 
 def test_a_tone_too_short_for_a_spectrum_has_none() -> None:
-    assert breath.noise_spectrum(np.zeros(20, np.float32), RATE_HZ, TONE_HZ) is None
+    length = breath.segment_length(20, RATE_HZ, TONE_HZ)
+    assert breath.noise_spectrum(np.zeros(20, np.float32), RATE_HZ, length) is None

@@ -121,3 +121,29 @@ def test_cautions_in_plain_words(tmp_path: Path) -> None:
     (tone,) = read_tones(as_recording(tmp_path, noisy))
     assert tone.cautions[0].startswith("noisy: the tone stands only 8 dB") or "9 dB" in tone.cautions[0]
     assert tone.cautions[1].startswith("short: 0.2") or tone.cautions[1].startswith("short: 0.3")
+
+
+def test_two_tones_at_once_are_a_multiphonic(tmp_path: Path) -> None:
+    both = note(500.0, 2.0) + 0.4 * note(683.0, 2.0)
+    (tone,) = read_tones(as_recording(tmp_path, room(both)))
+    assert tone.kind == "multiphonic"
+    assert tone.cautions[0].startswith("two tones at once: 500 and 68")
+
+
+def test_a_whistle_that_follows_the_breath_is_an_edge_tone(tmp_path: Path) -> None:
+    """A bare, faint tone whose pitch swings slowly by tens of cents with no resonance at it (made, no source)."""
+    rng = np.random.default_rng(56)
+    time_s = np.arange(2 * RATE_HZ) / RATE_HZ
+    bend = 35.0 * np.sin(2 * np.pi * 0.9 * time_s) + 10.0 * np.sin(2 * np.pi * 1.7 * time_s)
+    phase = 2 * np.pi * np.cumsum(1130.0 * 2.0 ** (bend / 1200.0)) / RATE_HZ
+    whistle = 0.02 * np.cos(phase) + 0.006 * rng.standard_normal(len(time_s))
+    (tone,) = read_tones(as_recording(tmp_path, whistle.astype(np.float32)))
+    assert tone.kind == "edge tone"
+    assert tone.frequency_hz == pytest.approx(1130.0, rel=0.01)
+
+
+def test_a_tone_that_turns_between_registers_is_a_warble(tmp_path: Path) -> None:
+    parts = [note(392.0, 0.4), note(790.0, 0.4)] * 3
+    (tone,) = read_tones(as_recording(tmp_path, room(np.concatenate([pause(0.2), *parts, pause(0.2)]))))
+    assert tone.kind == "multiphonic"
+    assert tone.cautions == ("warbles between 392 and 790 Hz: steady the breath",)

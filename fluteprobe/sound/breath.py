@@ -46,6 +46,9 @@ _SEGMENT_SHARE = 0.95
 _LINE_SHARE = 1.0 / 1.5
 _STEADY_CV = 0.35
 _ROOM_MARGIN = 2.0
+_STANDING_OUT = 30.0
+_MAINS_HZ = (50.0, 60.0)
+_HIGHEST_HUM_HZ = 400.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -60,7 +63,11 @@ class BreathResonance:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class NoiseSpectrum:
-    """An averaged spectrum of breath noise: lines (lines,) at `line_hz` apart, from `segments` segments."""
+    """An averaged spectrum of noise: power (lines,) at `line_hz` apart, from `segments` segments.
+
+    `variation` is how much each line's power changes between segments, standard deviation over mean. A
+    sine of amplitude A has the power (A / 4 × segment length)² at its line.
+    """
 
     line_hz: float
     power: Floats
@@ -68,16 +75,17 @@ class NoiseSpectrum:
     segments: int
 
 
-def noise_spectrum(residual: Samples, rate_hz: int, frequency_hz: float) -> NoiseSpectrum | None:
-    """Average the spectrum of breath noise over segments of some forty periods; None if it is too short.
+def segment_length(count: int, rate_hz: int, frequency_hz: float) -> int:
+    """Return the length of the segments to average over: some forty periods, fewer in a short tone."""
+    longest = int(min(PERIODS * rate_hz / frequency_hz, 2.0 * count / (_FEWEST_SEGMENTS + 1)))
+    return _quick_length(max(longest, 1))
 
-    A short tone gets shorter segments, so that at least a few can be averaged.
-    """
-    longest = int(min(PERIODS * rate_hz / frequency_hz, 2.0 * len(residual) / (_FEWEST_SEGMENTS + 1)))
-    if longest < _SHORTEST:
-        return None
-    length = _quick_length(longest)
+
+def noise_spectrum(residual: Samples, rate_hz: int, length: int) -> NoiseSpectrum | None:
+    """Average the spectrum of noise over half-overlapping segments; None if it is too short for one."""
     hop = length // 2
+    if length < _SHORTEST or len(residual) < length:
+        return None
     starts = range(0, len(residual) - length + 1, hop)
     window = np.hanning(length + 2)[1:-1].astype(np.float32)
     segments = np.stack([residual[start : start + length] for start in starts]) * window
@@ -121,6 +129,29 @@ def breath_resonances(
     chance = np.where(usable & noisy, np.minimum(chance * max(int(usable.sum() * _LINE_SHARE), 1), 1.0), 1.0)
     between = [_bump(spectrum, line, prominence, chance) for line in _peaks(prominence, chance)]
     return tuple(sorted([*between, *under], key=lambda bump: bump.frequency_hz))
+
+
+def steady_lines(spectrum: NoiseSpectrum, frequency_hz: float) -> list[tuple[float, float]]:
+    """Return frequency and amplitude of steady lines away from the partials, strongest first; hum is none."""
+    power = spectrum.power
+    ratio = np.arange(len(power)) * spectrum.line_hz / frequency_hz
+    apart = (np.abs(ratio - np.round(ratio)) > PARTIAL_REACH) & (ratio > LOWEST_RATIO)
+    leads = np.zeros(len(power), bool)
+    leads[1:-1] = (power[1:-1] > power[:-2]) & (power[1:-1] >= power[2:])
+    beside = np.minimum(np.roll(power, 4), np.roll(power, -4))
+    steady = apart & leads & (spectrum.variation < _STEADY_CV) & (power > _STANDING_OUT * beside)
+    amplitude = 4.0 * np.sqrt(power) / (2.0 * (len(power) - 1))
+    found = [(_peak_hz(spectrum, int(i)), float(amplitude[i])) for i in np.flatnonzero(steady)]
+    return sorted(
+        (line for line in found if not _is_hum(line[0], spectrum.line_hz)), key=lambda line: -line[1]
+    )
+
+
+def _is_hum(frequency_hz: float, line_hz: float) -> bool:
+    multiples = [round(frequency_hz / mains) * mains for mains in _MAINS_HZ]
+    return frequency_hz < _HIGHEST_HUM_HZ and any(
+        abs(frequency_hz - hum) < 0.6 * line_hz for hum in multiples
+    )
 
 
 def _under_partials(
@@ -199,11 +230,16 @@ def _peaks(prominence: Floats, chance: Floats) -> list[int]:
     return np.flatnonzero(leading & (chance < CHANCE)).tolist()
 
 
-def _bump(spectrum: NoiseSpectrum, line: int, prominence: Floats, chance: Floats) -> BreathResonance:
-    """Return the bump at a line: centre by a parabola through three log powers, width at half power."""
+def _peak_hz(spectrum: NoiseSpectrum, line: int) -> float:
+    """Return where a parabola through the log powers of a line and its neighbours is highest."""
     lower, middle, upper = np.log(np.maximum(spectrum.power[line - 1 : line + 2], 1e-30))
     curvature = lower - 2.0 * middle + upper
     shift = float(np.clip(0.5 * (lower - upper) / curvature, -1.0, 1.0)) if curvature < 0.0 else 0.0
+    return (line + shift) * spectrum.line_hz
+
+
+def _bump(spectrum: NoiseSpectrum, line: int, prominence: Floats, chance: Floats) -> BreathResonance:
+    """Return the bump at a line, its width at half power."""
     half = spectrum.power[line - 1 : line + 2].max() / 2.0
     low = high = line
     while low > 0 and spectrum.power[low - 1] > half:
@@ -211,7 +247,7 @@ def _bump(spectrum: NoiseSpectrum, line: int, prominence: Floats, chance: Floats
     while high < len(spectrum.power) - 1 and spectrum.power[high + 1] > half:
         high += 1
     return BreathResonance(
-        frequency_hz=(line + shift) * spectrum.line_hz,
+        frequency_hz=_peak_hz(spectrum, line),
         width_hz=(high - low + 1) * spectrum.line_hz,
         prominence_db=float(10.0 / np.log(10.0) * prominence[line]),
         chance=float(chance[line]),
