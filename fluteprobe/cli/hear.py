@@ -1,59 +1,149 @@
 """`fluteprobe hear`: what is in single recordings."""
 
+from collections.abc import Sequence
+from itertools import count
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import click
 
-from fluteprobe.cli.options import A4_HZ, json_option
+from fluteprobe.cli.options import A4_HZ, FOLDER, json_option
 
 if TYPE_CHECKING:
     from fluteprobe.session import Problem
+    from fluteprobe.sound.recording import Recording
+    from fluteprobe.sound.view import TakeView
     from fluteprobe.survey import Reading
+
+PAGES_FOLDER = Path("reports", "takes")
+SLOW = "Second opinion: librosa looks at every tone too; the first run compiles, about 15 s"
 
 
 @click.command(short_help="Say what sounds in single recordings.")
 @click.argument("files", nargs=-1, required=True, type=click.Path(path_type=Path), metavar="FILE…")
 @click.option("--a4-hz", type=A4_HZ, default=440.0, metavar="HZ", help="What A4 is tuned to.  [default: 440]")
+@click.option("--page", is_flag=True, help="Draw a page for each recording: what was measured, and why.")
+@click.option(
+    "--second-opinion",
+    "second",
+    is_flag=True,
+    help="The page with pYIN's reading and librosa's constant-Q picture beside ours; takes a while.",
+)
+@click.option(
+    "--paper",
+    type=click.Choice(("a4", "letter"), case_sensitive=False),
+    default="a4",
+    help="What a page is printed on.  [default: a4]",
+)
+@click.option(
+    "--out", type=FOLDER, metavar="DIR", help=f"Where pages are written.  [default: {PAGES_FOLDER}]"
+)
 @json_option
 @click.pass_context
-def hear(ctx: click.Context, files: tuple[Path, ...], a4_hz: float, as_json: bool) -> None:
+def hear(  # noqa: PLR0913, PLR0917  (click passes every option by name)
+    ctx: click.Context,
+    files: tuple[Path, ...],
+    a4_hz: float,
+    page: bool,
+    second: bool,
+    paper: str,
+    out: Path | None,
+    as_json: bool,
+) -> None:
     """Say what sounds in single recordings: every steady tone, its note and how far off it is.
 
     No session folder is needed. FILE is a recording of any kind: WAV, AIFF, FLAC, Ogg, MP3 …
 
+    With --page a PDF shows what the numbers come from: waveform, pitch track, spectrum, breath
+    resonances, and the reasons for the register. Open it when a number looks wrong.
+
     \b
     Example:
-      fluteprobe hear heron/takes/oxxxxx.wav
+      fluteprobe hear --page heron/takes/oxxxxx.wav
     """  # noqa: D301  (click reads the \b)
     from fluteprobe.cli import screen
     from fluteprobe.results import heard_json, json_text
 
-    readings, problems = _heard(files, a4_hz)
+    heard, problems = _heard(files, a4_hz)
+    readings = [reading for _, mine in heard for reading in mine]
     if as_json:
         click.echo(json_text(heard_json(readings, problems, a4_hz=a4_hz)), nl=False)
     else:
         screen.say(screen.heard_table(readings, a4_hz))
         screen.tell_cautions(readings)
+    if page or second:
+        problems += _draw_pages(heard, out or PAGES_FOLDER, paper, second)
     screen.tell_problems(problems)
     ctx.exit(1 if problems else 0)
 
 
-def _heard(files: tuple[Path, ...], a4_hz: float) -> tuple[list["Reading"], list["Problem"]]:
+def _heard(
+    files: tuple[Path, ...], a4_hz: float
+) -> tuple[list[tuple[Path, tuple["Reading", ...]]], list["Problem"]]:
     """Hear every file; one that cannot be used becomes a problem, the others are heard all the same."""
     from fluteprobe import survey
     from fluteprobe.cli import screen
     from fluteprobe.session import Problem, printable
     from fluteprobe.sound.recording import RecordingError
 
-    readings: list[Reading] = []
+    heard: list[tuple[Path, tuple[Reading, ...]]] = []
     problems: list[Problem] = []
     with screen.progress("Listening") as on_take:
         for done, path in enumerate(files, start=1):
             name = printable(str(path))
             try:
-                readings += survey.hear(path, a4_hz=a4_hz, name=name)
+                heard.append((path, survey.hear(path, a4_hz=a4_hz, name=name)))
             except RecordingError as error:
                 problems.append(Problem(take=name, message=str(error)))
             on_take(done, len(files))
-    return readings, problems
+    return heard, problems
+
+
+def _draw_pages(
+    heard: Sequence[tuple[Path, tuple["Reading", ...]]], folder: Path, paper: str, second: bool
+) -> list["Problem"]:
+    """Draw a page for each recording, named after it; one that has changed since becomes a problem."""
+    from fluteprobe.cli import screen
+    from fluteprobe.pages.take import write_take
+    from fluteprobe.session import Problem
+    from fluteprobe.sound.recording import RecordingError, open_recording
+
+    problems: list[Problem] = []
+    taken: set[str] = set()
+    if second:
+        screen.say(
+            "Second opinion: librosa looks at every tone too; the first run compiles, about 15 s", err=True
+        )
+    folder.mkdir(parents=True, exist_ok=True)
+    for path, readings in heard:
+        try:
+            view = _looked_at(open_recording(path), readings, second)
+        except RecordingError as error:
+            problems.append(Problem(take=readings[0].take, message=str(error)))
+            continue
+        target = folder / f"{_page_name(path, taken)}.pdf"
+        screen.tell_written(write_take(view, readings, target, paper=paper))
+    return problems
+
+
+def _looked_at(recording: "Recording", readings: Sequence["Reading"], second: bool) -> "TakeView":
+    """Return what a page shows; without librosa's opinion where it cannot be had."""
+    from fluteprobe.cli import screen
+    from fluteprobe.session import printable
+    from fluteprobe.sound.second import SecondOpinionError
+    from fluteprobe.sound.view import look
+
+    tones = [reading.tone for reading in readings]
+    try:
+        return look(recording, tones, second=second)
+    except SecondOpinionError as error:
+        screen.say(f"Caution: {printable(readings[0].take)}: {printable(str(error))}", err=True)
+        return look(recording, tones)
+
+
+def _page_name(path: Path, taken: set[str]) -> str:
+    """Return a recording's name without its ending, numbered on where another file has it too."""
+    names = (path.stem if number == 1 else f"{path.stem}_{number}" for number in count(1))
+    name = next(name for name in names if name.lower() not in taken)
+    taken.add(name.lower())
+    return name
