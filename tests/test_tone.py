@@ -131,7 +131,7 @@ def test_two_tones_at_once_are_a_multiphonic(tmp_path: Path) -> None:
 
 
 def test_a_whistle_that_follows_the_breath_is_an_edge_tone(tmp_path: Path) -> None:
-    """A bare, faint tone whose pitch swings slowly by tens of cents with no resonance at it (made, no source)."""
+    """A bare, faint tone whose pitch swings by tens of cents with no resonance at it (made, no source)."""
     rng = np.random.default_rng(56)
     time_s = np.arange(2 * RATE_HZ) / RATE_HZ
     bend = 35.0 * np.sin(2 * np.pi * 0.9 * time_s) + 10.0 * np.sin(2 * np.pi * 1.7 * time_s)

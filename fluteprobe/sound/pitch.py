@@ -183,12 +183,12 @@ class _Points:
 
 
 def _thinned(track: PhaseTrack) -> _Points:
-    """Average the track over about 20 ms."""
+    """Average the track over about 20 ms; the noise is that of slow changes, the overlap counted."""
     group = max(round(_POINT_S / track.hop_s), 1)
     whole = len(track.phase_rad) // group * group
     spare = (len(track.phase_rad) - whole) // 2
     kept = slice(spare, spare + whole)
-    variance = track.noise_rad**2 / group * (1.0 + 2.0 * OVERLAP_CORRELATION * (1.0 - 1.0 / group))
+    variance = track.noise_rad**2 / group * (1.0 + 2.0 * OVERLAP_CORRELATION)
     return _Points(
         time_s=track.time_s[kept].reshape(-1, group).mean(axis=1),
         phase_rad=track.phase_rad[kept].reshape(-1, group).mean(axis=1),
