@@ -4,7 +4,7 @@ Conventions: pitches are in cents above 1 Hz inside; notes are spelt in ASCII wi
 ("C#5"); deviations are positive where the flute is sharp; `uncertainty_cents` is standard (k = 1).
 """
 
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
 from math import log2, sqrt
@@ -30,6 +30,8 @@ _FEW_TAKES = 3
 _NO_CALL = RegisterCall(register=None, probability=dict.fromkeys(REGISTERS, 1.0 / 3.0))
 
 Progress = Callable[[int, int], None]
+Heard = tuple[Tone, ...] | RecordingError
+MapTakes = Callable[[Callable[[Take], Heard], Sequence[Take]], Iterable[Heard]]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -92,22 +94,28 @@ def hear(path: Path | str, *, a4_hz: float = A4_HZ, name: str | None = None) -> 
     return tuple(_reading(name or str(path), None, tone, sitting, _call_alone(tone)) for tone in tones)
 
 
-def measure(folder: Path | str, *, on_take: Progress | None = None) -> Survey:
+def measure(
+    folder: Path | str, *, on_take: Progress | None = None, map_takes: MapTakes | None = None
+) -> Survey:
     """Return the survey of a session folder.
+
+    `map_takes` hears the takes elsewhere than on this machine's cores: see `fluteprobe.cluster`.
 
     Raises
     ------
     SessionError
         If the folder is no session; takes that cannot be used are problems of the survey instead.
     """
-    return survey_of(read_session(Path(folder)), on_take=on_take)
+    return survey_of(read_session(Path(folder)), on_take=on_take, map_takes=map_takes)
 
 
-def survey_of(session: Session, *, on_take: Progress | None = None) -> Survey:
+def survey_of(
+    session: Session, *, on_take: Progress | None = None, map_takes: MapTakes | None = None
+) -> Survey:
     """Hear every take of a session, decide every register and sum up every fingering."""
     heard: list[tuple[Take, Tone]] = []
     problems = list(session.problems)
-    for done, (take, result) in enumerate(_heard(session.takes), start=1):
+    for done, (take, result) in enumerate(_heard(session.takes, map_takes), start=1):
         if isinstance(result, RecordingError):
             problems.append(Problem(take=take.name, message=str(result)))
         else:
@@ -128,8 +136,11 @@ def survey_of(session: Session, *, on_take: Progress | None = None) -> Survey:
     )
 
 
-def _heard(takes: Sequence[Take]) -> "Iterator[tuple[Take, tuple[Tone, ...] | RecordingError]]":
+def _heard(takes: Sequence[Take], map_takes: MapTakes | None) -> Iterator[tuple[Take, Heard]]:
     """Hear all takes, on all cores where there are several: numpy's FFT and products release the lock."""
+    if map_takes is not None:
+        yield from zip(takes, map_takes(_hear_one, takes), strict=True)
+        return
     if len(takes) <= _FEW_TAKES:
         yield from ((take, _hear_one(take)) for take in takes)
         return
@@ -137,7 +148,7 @@ def _heard(takes: Sequence[Take]) -> "Iterator[tuple[Take, tuple[Tone, ...] | Re
         yield from zip(takes, pool.map(_hear_one, takes), strict=True)
 
 
-def _hear_one(take: Take) -> tuple[Tone, ...] | RecordingError:
+def _hear_one(take: Take) -> Heard:
     try:
         recording = open_recording(take.path)
         return _with_cautions(read_tones(recording), recording.cautions)
