@@ -201,3 +201,23 @@ def strange_words() -> Survey:
     return Survey(
         flute=facts, sitting=sitting, readings=heron().readings, entries=heron().entries, problems=(problem,)
     )
+
+
+def low_flute() -> Survey:
+    """Return a bass flute: its notes need the bass clef, and a mark where they are too low even for that."""
+    entries = [entry(f"{'x' * (5 - k)}{'o' * k}", 1, 28 + 3 * k, 4.0 - k) for k in range(6)]
+    upper = [entry("oxxxx", 2, 41, 8.0), entry("vxxxo", 2, 43, 10.3), entry("hxxxo", 3, 50, -10.02)]
+    return Survey(
+        flute=FluteFacts(name="Great Bittern", holes=5), sitting=Sitting(), readings=(),
+        entries=(*entries, *upper), problems=(),
+    )  # fmt: skip
+
+
+def high_flute() -> Survey:
+    """Return a flute whose notes are too high for a few ledger lines."""
+    entries = [entry(f"{'x' * (6 - k)}{'o' * k}", 1, 81 + 2 * k, 3.0 * k - 9.0) for k in range(7)]
+    upper = [entry("oxxxxx", 2, 94, 8.0), entry("oxxxxo", 2, 97, -3.0), entry("oxxxoo", 2, 107, 12.0)]
+    return Survey(
+        flute=FluteFacts(name="Firecrest", holes=6), sitting=Sitting(), readings=(),
+        entries=(*entries, *upper), problems=(),
+    )  # fmt: skip

@@ -11,7 +11,7 @@ from fluteprobe.pages.contents import (
     cents_text,
     chart_contents,
     note_text,
-    share_text,
+    spoke_text,
     uncertainty_text,
 )
 
@@ -118,6 +118,28 @@ def test_cents_carry_their_sign(cents: float | None, words: str) -> None:
 
 
 @pytest.mark.parametrize(
+    ("cents", "tolerance", "words"),
+    [
+        (10.3, 10.0, "+10.3"), (-10.3, 10.0, "−10.3"), (10.0, 10.0, "+10"), (9.7, 10.0, "+10"),
+        (10.04, 10.0, "+10.04"), (10.6, 10.0, "+11"), (5.2, 10.0, "+5"), (2.7, 2.5, "+3"), (2.5, 2.5, "+2"),
+        (0.4, 0.3, "+0.4"), (2.4, 2.3, "+2.4"), (nan, 10.0, "?"),
+    ],
+)  # fmt: skip
+def test_printed_cents_stand_on_their_own_side_of_the_tolerance(
+    cents: float, tolerance: float, words: str
+) -> None:
+    assert cents_text(cents, tolerance) == words
+
+
+@pytest.mark.parametrize("tolerance", [0.3, 2.5, 5.0, 10.0, 12.25])
+def test_print_and_mark_agree_around_any_tolerance(tolerance: float) -> None:
+    for k in range(-400, 401):
+        cents = tolerance + 0.01 * k
+        printed = float(cents_text(cents, tolerance).replace("−", "-"))
+        assert (abs(printed) > tolerance) == (abs(cents) > tolerance), cents
+
+
+@pytest.mark.parametrize(
     ("cents", "words"), [(0.62, "±0.6"), (9.94, "±9.9"), (9.96, "±10"), (40.2, "±40"), (nan, "±?")]
 )
 def test_uncertainty_has_one_decimal_under_ten_cents(cents: float, words: str) -> None:
@@ -126,7 +148,25 @@ def test_uncertainty_has_one_decimal_under_ten_cents(cents: float, words: str) -
 
 def test_notes_and_shares_in_print() -> None:
     assert [note_text(note) for note in ("C#5", "Bb4", "B4", "A-1")] == ["C♯5", "B♭4", "B4", "A-1"]
-    assert share_text(2 / 3) == "67 %"
+
+
+@pytest.mark.parametrize(
+    ("takes", "reliability", "words"),
+    [(1, 1.0, "1"), (3, 1.0, "3"), (3, 0.75, "3 of 4"), (2, 2 / 3, "2 of 3"), (1, 1 / 7, "1 of 7")],
+)
+def test_in_how_many_takes_it_spoke(takes: int, reliability: float, words: str) -> None:
+    assert spoke_text(entry("xo", 1, 60, 0.0, takes=takes, reliability=reliability)) == words
+
+
+def test_a_card_has_the_best_fingering_of_each_note_and_no_lists() -> None:
+    contents = chart_contents(heron(), best_only=True)
+    shown = [entry for section in contents.sections for entry in section.entries]
+    assert sorted(entry.note for entry in shown) == sorted({entry.note for entry in heron().entries})
+    everything = heron().entries
+    for best in shown:
+        assert best == best_first([e for e in everything if e.note == best.note], 10.0)[0]
+    assert contents.asides == ()
+    assert not any("carried" in words for words in contents.conditions)
 
 
 @pytest.mark.parametrize("tolerance", [0.0, -5.0, nan])

@@ -28,7 +28,7 @@ DPI = 300
 
 def inked_share(state: str) -> float:
     """Return how much of a hole's disc is dark, from 0 to 1, counted in pixels."""
-    page = Page()
+    page = Page("a6")
     draw_hole(page, 50.0, 50.0, 8.0, state)
     page.figure.set_dpi(DPI)
     canvas = FigureCanvasAgg(page.figure)

@@ -7,8 +7,11 @@ Contrast is checked against WCAG 2.1 (W3C Recommendation, 2018), success criteri
 from pathlib import Path
 
 import matplotlib as mpl
+import matplotlib.image
 import pytest
 from matplotlib.backends.backend_pdf import PdfPages
+from matplotlib.patches import PathPatch
+from matplotlib.text import Text
 
 from fluteprobe.pages import paper
 from fluteprobe.pages.paper import (
@@ -69,11 +72,27 @@ def test_no_voice_is_smaller_than_seven_points() -> None:
 
 
 def test_paper_sizes() -> None:
-    """ISO 216 A4 is 210 by 297 mm; US Letter is 8.5 by 11 in."""
+    """ISO 216 A4 is 210 by 297 mm, A6 105 by 148 mm; US Letter is 8.5 by 11 in."""
     assert paper_size_mm("A4") == (210.0, 297.0)
     assert paper_size_mm("letter") == pytest.approx((8.5 * 25.4, 11.0 * 25.4))
-    with pytest.raises(ValueError, match="paper is one of a4, letter, not 'a5'"):
+    assert paper_size_mm("a6") == (105.0, 148.0)
+    assert paper_size_mm("4x6") == pytest.approx((4.0 * 25.4, 6.0 * 25.4))
+    with pytest.raises(ValueError, match="paper is one of a4, letter, a6, 4x6, not 'a5'"):
         Page("a5")
+
+
+def test_a_magnified_page_has_less_room_and_prints_larger() -> None:
+    plain, large = Page(), Page(magnified=1.25)
+    assert (large.width_mm, large.height_mm) == pytest.approx((168.0, 237.6))
+    assert large.figure.get_size_inches() == pytest.approx(plain.figure.get_size_inches())
+    large.text(large.margin_mm, 50.0, "word", SMALL)
+    large.line((0.0, 0.0), (large.width_mm, large.height_mm), pt=1.0)
+    label = next(artist for artist in large.figure.findobj(Text) if isinstance(artist, Text))
+    lines = [artist for artist in large.figure.findobj(PathPatch) if isinstance(artist, PathPatch)]
+    assert label.get_fontsize() == pytest.approx(1.25 * SMALL.size_pt)
+    assert [line.get_linewidth() for line in lines] == pytest.approx([1.25])
+    at = label.get_transform().transform(label.get_position()) / large.figure.dpi * 25.4
+    assert at == pytest.approx((13.0, 297.0 - 62.5))  # the margin is as wide as on any page
 
 
 def test_clean_keeps_words_and_drops_what_cannot_be_printed() -> None:
@@ -131,6 +150,26 @@ def test_a_failure_leaves_the_old_file_and_no_draft(
         save_pages([page.figure], target, title="x", author=None)
     assert target.read_text() == "old"
     assert [file.name for file in tmp_path.iterdir()] == [target.name]
+
+
+def test_further_pages_of_an_earlier_longer_chart_are_removed(tmp_path: Path) -> None:
+    target = tmp_path / "chart.png"
+    others = [tmp_path / name for name in ("chart-2.svg", "chart-9.png", "chart-old.png", "map-2.png")]
+    for path in others:
+        path.write_text("mine")
+    save_pages([Page().figure] * 4, target, title="x", author=None, dots_per_inch=20)
+    save_pages([Page().figure] * 2, target, title="x", author=None, dots_per_inch=20)
+    left = sorted(path.name for path in tmp_path.iterdir())
+    assert left == sorted(["chart.png", "chart-2.png", *(path.name for path in others)])
+
+
+@pytest.mark.parametrize("dots_per_inch", [50, 120])
+def test_a_png_has_the_resolution_asked_for(tmp_path: Path, dots_per_inch: int) -> None:
+    (path,) = save_pages(
+        [Page("a6").figure], tmp_path / "card.png", title="x", author=None, dots_per_inch=dots_per_inch
+    )
+    height, width, _ = mpl.image.imread(path).shape
+    assert (width / 105.0, height / 148.0) == pytest.approx([dots_per_inch / 25.4] * 2, rel=0.01)
 
 
 def test_further_pages_of_a_picture_are_numbered(tmp_path: Path) -> None:

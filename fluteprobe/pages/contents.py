@@ -86,7 +86,7 @@ def chart_contents(survey: Survey, tolerance_cents: float = 10.0, *, best_only: 
         holes=survey.flute.holes,
         sections=tuple(_section(entries, r, tolerance_cents) for r in (*heard, 2, 1)),
         asides=() if best_only else _asides(survey),
-        conditions=_conditions(survey),
+        conditions=_conditions(survey, carried=not best_only),
         reference_label=_reference_label(survey),
     )
 
@@ -243,12 +243,12 @@ def _word(r: Reading) -> str:
     return clean(r.take) if r.fingering is None else str(r.fingering)
 
 
-def _conditions(survey: Survey) -> tuple[str, ...]:
+def _conditions(survey: Survey, *, carried: bool) -> tuple[str, ...]:
     sitting = survey.sitting
     facts = (
         ("A4 =", f"{sitting.a4_hz:g} Hz"),
         ("air", _celsius(sitting.air_temperature_c)),
-        ("carried to", _carried_to(survey)),
+        ("carried to", _carried_to(survey) if carried else None),
         ("", sitting.date),
         ("played by", sitting.player),
         ("at", sitting.place),

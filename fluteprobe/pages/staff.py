@@ -24,7 +24,7 @@ TOP_LINE = 8
 MOST_LEDGER_LINES = 3  # to either side; a note beyond is written octaves nearer, under or over a mark
 OCTAVE_MARKS = {1: "8va", 2: "15ma", 3: "22ma", -1: "8vb", -2: "15mb", -3: "22mb"}
 HEAD_WIDTH = 1.36  # in staff spaces, as it stands tilted
-CLEF_WIDTH = 2.6
+CLEF_WIDTH = 2.8
 
 _BOTTOM_LINE: dict[Clef, int] = {"treble": 7 * 4 + 2, "bass": 7 * 2 + 4}  # E4 and G2, in steps from C0
 _CLEF_LINE: dict[Clef, int] = {"treble": 2, "bass": 6}  # the line that the clef names: G4, F3
