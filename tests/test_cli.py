@@ -151,7 +151,7 @@ def python(code: str, folder: Path, **environment: str) -> "subprocess.Completed
         (["hear", "a.wav", "--a4-hz", "300"], "300.0 is not in the range 380.0<=x<=500.0."),
         (["begin", "new", "--holes", "11"], "11 is not in the range 1<=x<=10."),
         (["begin", "new", "--temperature", "70"], "70.0 is not in the range -20.0<=x<=50.0."),
-        (["chart", "heron", "--format", "pdf,doc"], "'doc' is not one of pdf, png, svg."),
+        (["chart", "heron", "--format", "pdf,doc"], "'doc' is not one of pdf, png, svg, html."),
         (["chart", "heron", "--paper", "a3"], "'a3' is not one of 'a4', 'letter', 'a6', '4x6'."),
         (["chart", "heron", "--tolerance", "0"], "0.0 is not in the range 0.0<x<=50.0."),
         (["chart", "heron", "--resolution", "2"], "2.0 is not in the range 40.0<=x<=1200.0."),
@@ -419,6 +419,25 @@ def test_cards_and_large_print_get_names_of_their_own(
     run("chart", "heron", "--paper", "4X6", "--format", "PNG", "--out", "out")
     run("chart", "heron", "--large", "--out", "out")
     assert asked == [("card.png", "4x6", False), ("chart-large.pdf", "a4", True)]
+
+
+def test_the_web_page_is_made_of_the_session_with_or_without_its_sound(
+    here: Path, measured: Survey, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    asked: list[tuple[Any, ...]] = []
+
+    def fake(survey: Survey, folder: Path, target: Path, **wished: Any) -> tuple[Path, ...]:
+        asked.append((survey is measured, folder, target, *wished.values()))
+        return (target,)
+
+    monkeypatch.setattr("fluteprobe.pages.web.write_web", fake)
+    run("chart", "heron", "--format", "html", "--tolerance", "5", "--out", "out")
+    result = run("chart", "heron", "--format", "html", "--no-sound")
+    page = Path("reports/heron/chart.html")
+    assert asked == [
+        (True, Path("heron"), Path("out/chart.html"), 5.0, True), (True, Path("heron"), page, 10.0, False),
+    ]  # fmt: skip
+    assert result.stdout.splitlines()[-1] == str(page)
 
 
 # --- the screen --------------------------------------------------------------------------------------

@@ -13,7 +13,7 @@ from fluteprobe.cli.options import FOLDER, out_option, reports_folder
 if TYPE_CHECKING:
     from fluteprobe.survey import Survey
 
-FORMATS = ("pdf", "png", "svg")
+FORMATS = ("pdf", "png", "svg", "html")
 PAPERS = ("a4", "letter", "a6", "4x6")
 CARDS = ("a6", "4x6")
 
@@ -26,6 +26,7 @@ class Wish:
     large: bool
     tolerance_cents: float
     dots_per_inch: float
+    with_sound: bool
 
     @property
     def name(self) -> str:
@@ -81,6 +82,9 @@ def _formats(ctx: click.Context, param: click.Parameter, given: tuple[str, ...])
     metavar="DPI",
     help="How fine a PNG is, in dots per inch.  [default: 200]",
 )
+@click.option(
+    "--no-sound", is_flag=True, help="Leave the recordings out of the web page (html), which makes it small."
+)
 @out_option
 @click.pass_context
 def chart(  # noqa: PLR0913, PLR0917  (click passes every option by name)
@@ -91,14 +95,16 @@ def chart(  # noqa: PLR0913, PLR0917  (click passes every option by name)
     large: bool,
     tolerance_cents: float,
     dots_per_inch: float,
+    no_sound: bool,
     out: Path | None,
 ) -> None:
     """Measure every take of a session folder and draw the flute's fingering chart.
 
     Writes chart.pdf and map.pdf, the map of its registers (or the formats asked for),
     measurements.json and measurements.csv, and prints where. A card is card.pdf, with the best
-    fingering of each note; large print is chart-large.pdf. A take that cannot be used is named,
-    and the chart is drawn from all others.
+    fingering of each note; large print is chart-large.pdf. The format html is a web page that can be
+    read, heard and sent as it is. A take that cannot be used is named, and the chart is drawn from
+    all others.
 
     \b
     Example:
@@ -109,29 +115,53 @@ def chart(  # noqa: PLR0913, PLR0917  (click passes every option by name)
 
     if large and paper in CARDS:
         raise click.UsageError(f"--large needs a larger paper than {paper}: a4 or letter.")
-    wish = Wish(paper=paper, large=large, tolerance_cents=tolerance_cents, dots_per_inch=dots_per_inch)
+    wish = Wish(
+        paper=paper,
+        large=large,
+        tolerance_cents=tolerance_cents,
+        dots_per_inch=dots_per_inch,
+        with_sound=not no_sound,
+    )
     survey = measured(folder)
     target = reports_folder(folder, out)
-    written = [*write_results(survey, target), *_drawn(survey, target, formats, wish)]
+    written = [*write_results(survey, target), *_drawn(survey, folder, target, formats, wish)]
     screen.tell_cautions(survey.readings)
     screen.tell_problems(survey.problems)
     screen.tell_written(written, as_result=True)
     ctx.exit(1 if survey.problems else 0)
 
 
-def _drawn(survey: "Survey", target: Path, formats: Sequence[str], wish: Wish) -> Iterator[Path]:
+def _drawn(
+    survey: "Survey", folder: Path, target: Path, formats: Sequence[str], wish: Wish
+) -> Iterator[Path]:
     """Draw the pages in every format, and name the files written."""
+    for suffix in formats:
+        if suffix == "html":
+            yield from _web_page(survey, folder, target, wish)
+        else:
+            yield from _printed(survey, target, suffix, wish)
+
+
+def _web_page(survey: "Survey", folder: Path, target: Path, wish: Wish) -> Iterator[Path]:
+    from fluteprobe.pages.web import write_web
+
+    page = target / "chart.html"
+    yield from write_web(
+        survey, folder, page, tolerance_cents=wish.tolerance_cents, with_sound=wish.with_sound
+    )
+
+
+def _printed(survey: "Survey", target: Path, suffix: str, wish: Wish) -> Iterator[Path]:
     from fluteprobe.pages.chart import write_chart
     from fluteprobe.pages.map import write_map
 
-    for suffix in formats:
-        yield from write_chart(
-            survey,
-            target / f"{wish.name}.{suffix}",
-            paper=wish.paper,
-            large=wish.large,
-            tolerance_cents=wish.tolerance_cents,
-            dots_per_inch=wish.dots_per_inch,
-        )
-        if wish.has_map:
-            yield from write_map(survey, target / f"map.{suffix}", paper=wish.paper)
+    yield from write_chart(
+        survey,
+        target / f"{wish.name}.{suffix}",
+        paper=wish.paper,
+        large=wish.large,
+        tolerance_cents=wish.tolerance_cents,
+        dots_per_inch=wish.dots_per_inch,
+    )
+    if wish.has_map:
+        yield from write_map(survey, target / f"map.{suffix}", paper=wish.paper)
