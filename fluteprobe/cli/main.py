@@ -3,8 +3,12 @@
 Conventions: results go to stdout, progress and cautions to stderr. Exit code 0 is done, 1 is some input (or
 output) could not be used, 2 is wrong usage of the command line. Nothing is coloured. Commands import what is
 slow to load when they run, so that help is instant.
+
+Takes are heard side by side, one on each core. Their matrix products are small, so that numpy must
+not spread each of them over all cores again: that costs several times the work itself.
 """
 
+import os
 import sys
 from typing import IO, Any
 
@@ -16,6 +20,8 @@ from fluteprobe.cli.chart import chart
 from fluteprobe.cli.hear import hear
 from fluteprobe.cli.measure import measure
 from fluteprobe.cli.sheet import sheet
+
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")  # read when numpy is first loaded, in a command's body
 
 
 class Unusable(click.ClickException):

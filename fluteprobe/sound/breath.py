@@ -22,6 +22,8 @@ from math import erfc, log10, sqrt
 import numpy as np
 from numpy.typing import NDArray
 
+from fluteprobe.sound.partials import quick_length
+
 Floats = NDArray[np.float64]
 Samples = NDArray[np.float32]
 
@@ -78,7 +80,7 @@ class NoiseSpectrum:
 def segment_length(count: int, rate_hz: int, frequency_hz: float) -> int:
     """Return the length of the segments to average over: some forty periods, fewer in a short tone."""
     longest = int(min(PERIODS * rate_hz / frequency_hz, 2.0 * count / (_FEWEST_SEGMENTS + 1)))
-    return _quick_length(max(longest, 1))
+    return quick_length(max(longest, 1))
 
 
 def noise_spectrum(residual: Samples, rate_hz: int, length: int) -> NoiseSpectrum | None:
@@ -89,20 +91,15 @@ def noise_spectrum(residual: Samples, rate_hz: int, length: int) -> NoiseSpectru
     starts = range(0, len(residual) - length + 1, hop)
     window = np.hanning(length + 2)[1:-1].astype(np.float32)
     segments = np.stack([residual[start : start + length] for start in starts]) * window
-    power = np.abs(np.fft.rfft(segments, axis=1)).astype(np.float64) ** 2
-    mean = power.mean(axis=0)
+    lines = np.fft.rfft(segments, axis=1)
+    power = np.square(lines.real) + np.square(lines.imag)
+    mean = power.mean(axis=0, dtype=np.float64)
     return NoiseSpectrum(
         line_hz=rate_hz / length,
         power=mean,
-        variation=power.std(axis=0) / np.maximum(mean, 1e-30),
+        variation=power.std(axis=0, dtype=np.float64) / np.maximum(mean, 1e-30),
         segments=len(segments),
     )
-
-
-def _quick_length(longest: int) -> int:
-    """Return the greatest quick FFT length up to `longest`: a small odd times a power of two."""
-    powers = [odd << max((longest // odd).bit_length() - 1, 0) for odd in (1, 3, 5, 9, 15)]
-    return max(length for length in powers if length <= longest)
 
 
 def breath_resonances(

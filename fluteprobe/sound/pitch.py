@@ -24,6 +24,7 @@ from fluteprobe.sound.partials import (
     demodulate,
     noise_powers,
     orders_below_nyquist,
+    unturning,
 )
 
 Floats = NDArray[np.float64]
@@ -128,7 +129,7 @@ def guide_phase(tracks: Tracks) -> Floats:
 
 def _phase_errors(tracks: Tracks, phase: Floats) -> tuple[Floats, Floats]:
     """Return each partial's phase against order × `phase` (frames, orders), and its variance (orders,)."""
-    still = tracks.phasors * np.exp(-1j * phase[:, None] * tracks.orders)
+    still = tracks.phasors * unturning(phase, tracks.orders)
     errors = np.angle(still * still.mean(axis=0).conj())
     return errors, np.maximum(_noise_variances(tracks, phase), np.mean(errors**2, axis=0))
 

@@ -40,7 +40,6 @@ _UNIT_DB = 80.0
 _RUMBLE_HZ = 75.0
 _UNPITCHED_SCORE = 0.3
 _LEAP_COST = 0.8
-_STEP_COST = 0.01
 _REACH = 3
 _BLOCK_FRAMES = 2048
 _BACKGROUND_DB = 32.0
@@ -153,8 +152,8 @@ def _combs(rate_hz: int, length: int) -> _Combs:
     pitch = _grid_hz(rate_hz) * length / rate_hz
     matrix = np.zeros((len(bins), len(pitch)))
     for order in range(1, _COMB_ORDERS + 1):
-        matrix += order**-_COMB_FALL * _teeth(bins, order * pitch)
-        matrix -= 0.5 * order**-_COMB_FALL * _teeth(bins, (order - 0.5) * pitch)
+        _add_teeth(matrix, first, order * pitch, order**-_COMB_FALL)
+        _add_teeth(matrix, first, (order - 0.5) * pitch, -0.5 * order**-_COMB_FALL)
     edges = [first, *(round(edge * length / rate_hz) for edge in _BAND_EDGES_HZ), last]
     bands = tuple((low, min(high, last)) for low, high in pairwise(edges) if low + 4 <= min(high, last))
     middles = [0.5 * (low + high) for low, high in bands]
@@ -168,12 +167,16 @@ def _combs(rate_hz: int, length: int) -> _Combs:
     )
 
 
-def _teeth(bins: NDArray[np.float64], centres: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Return raised-cosine teeth around each centre, two bins to either side and wider by a grid step."""
+def _add_teeth(matrix: NDArray[np.float64], first: int, centres: NDArray[np.float64], weight: float) -> None:
+    """Add raised-cosine teeth around each centre, two bins to either side and wider by a grid step."""
     reach = 2.0 + centres * (_STEP_CENTS / 1731.0)
-    distance = np.abs(bins[:, None] - centres) / reach
-    tooth = np.where(distance < 1.0, 0.5 * (1.0 + np.cos(np.pi * distance)), 0.0)
-    return tooth * (2.0 / reach)
+    offsets = np.arange(-int(reach.max()) - 1, int(reach.max()) + 2)
+    bins = np.round(centres).astype(np.intp) + offsets[:, None]
+    distance = np.abs(bins - centres) / reach
+    tooth = np.where(distance < 1.0, 1.0 + np.cos(np.pi * distance), 0.0) * (weight / reach)
+    inside = (bins >= first) & (bins < first + len(matrix))
+    columns = np.broadcast_to(np.arange(len(centres)), bins.shape)
+    np.add.at(matrix, (bins[inside] - first, columns[inside]), tooth[inside])
 
 
 def _grid_hz(rate_hz: int) -> NDArray[np.float64]:
@@ -205,13 +208,13 @@ def _best_path(salience: Floats, score: Floats) -> tuple[NDArray[np.int16], Floa
     history = np.empty((frames + 1, grid + 1), np.float32)
     history[0] = score - score.max()
     padded = np.full(grid + 2 * _REACH, -1e9, np.float32)
-    near = np.lib.stride_tricks.sliding_window_view(padded, 2 * _REACH + 1)
-    costs = _step_costs()
     for m in range(frames):
         before, after = history[m], history[m + 1]
         padded[_REACH:-_REACH] = before[:-1]
         leap = before.max() - _LEAP_COST
-        np.maximum((near - costs).max(axis=1), leap, out=after[:-1])
+        two = np.maximum(padded[:-1], padded[1:])
+        four = np.maximum(two[:-2], two[2:])
+        np.maximum(np.maximum(four[:-3], four[3:]), leap, out=after[:-1])
         after[:-1] += salience[m]
         after[-1] = max(before[-1], leap) + _UNPITCHED_SCORE
         if m % 256 == 0:
@@ -219,13 +222,9 @@ def _best_path(salience: Floats, score: Floats) -> tuple[NDArray[np.int16], Floa
     return _traced_back(history), history[-1]
 
 
-def _step_costs() -> Floats:
-    return (_STEP_COST * np.abs(np.arange(-_REACH, _REACH + 1))).astype(np.float32)
-
-
 def _traced_back(history: Floats) -> NDArray[np.int16]:
     """Follow the best final state back; where it came from is worked out anew, one frame at a time."""
-    grid, costs = history.shape[1] - 1, _step_costs()
+    grid = history.shape[1] - 1
     path = np.empty(len(history) - 1, np.int16)
     state = int(history[-1].argmax())
     for m in range(len(path) - 1, -1, -1):
@@ -234,12 +233,9 @@ def _traced_back(history: Floats) -> NDArray[np.int16]:
         low, high = (
             (max(state - _REACH, 0), min(state + _REACH + 1, grid)) if state < grid else (grid, grid + 1)
         )
-        near = before[low:high] - (
-            costs[low - state + _REACH : high - state + _REACH] if state < grid else 0.0
-        )
-        best = low + int(near.argmax())
+        best = low + int(before[low:high].argmax())
         leap = int(before.argmax())
-        state = best if near[best - low] >= before[leap] - _LEAP_COST else leap
+        state = best if before[best] >= before[leap] - _LEAP_COST else leap
     return path
 
 
