@@ -35,6 +35,7 @@ from fluteprobe.pages.paper import (
     LONG_WORD,
     MARGIN_MM,
     MINUS,
+    PNG_DOTS_PER_INCH,
     QUIET,
     SMALL,
     WING,
@@ -60,7 +61,7 @@ _ROOMY_MM = 5.5  # rows of at least this height get the larger type
 _LARGEST_MARK_MM = 6.4  # marks and holes grow with the rows up to here
 _AXIS_LABELS_MM = 7.0
 _EDGE_MM = 7.0  # of the axis, kept for names beside the outermost marks
-_LANE_MM, _NUMBER_MM, _LANE_GAP_MM = 24.0, 13.5, 5.0
+_LANE_MM, _NUMBER_MM, _LANE_GAP_MM = 24.0, 13.5, 7.5
 _NAME_GAP_MM = 0.8
 _STEP_MM = 0.5
 _KEY_MM = 24.0
@@ -112,7 +113,9 @@ class MapRow:
         return lowest.frequency_hz / lowest.register
 
 
-def write_map(survey: Survey, target: Path, *, paper: str = "a4") -> tuple[Path, ...]:
+def write_map(
+    survey: Survey, target: Path, *, paper: str = "a4", dots_per_inch: float = PNG_DOTS_PER_INCH
+) -> tuple[Path, ...]:
     """Write a flute's register map as PDF, PNG or SVG, by the target's suffix; return the files written.
 
     Raises
@@ -122,7 +125,9 @@ def write_map(survey: Survey, target: Path, *, paper: str = "a4") -> tuple[Path,
     """
     title = clean(survey.flute.name) or "A flute without a name"
     author = clean(survey.flute.maker or "") or None
-    return save_pages(map_figures(survey, paper=paper), target, title=f"{title}: register map", author=author)
+    figures = map_figures(survey, paper=paper)
+    named = f"{title}: register map"
+    return save_pages(figures, target, title=named, author=author, dots_per_inch=dots_per_inch)
 
 
 def map_figures(survey: Survey, *, paper: str = "a4") -> list[Figure]:
@@ -528,7 +533,7 @@ def _free_mm(plan: Plan, x: float, wide: float, taken: Sequence[tuple[float, flo
 def _draw_stretch(page: Page, plan: Plan, stretch: Stretch, y: float) -> None:
     """Draw a stretch: a stem from the exact multiple, its uncertainty, its dots, or a wedge where beyond."""
     lane, radius = plan.lane, plan.dot_mm
-    x, half = lane.x_mm(stretch.cents), 0.3 * plan.mark_mm
+    x, half = lane.x_mm(stretch.cents), 0.14 * plan.mark_mm
     if isfinite(stretch.uncertainty_cents):
         left, right = (lane.x_mm(stretch.cents + s * stretch.uncertainty_cents) for s in (-1.0, 1.0))
         page.box((left, y - half), (right - left, 2.0 * half), WING)

@@ -266,7 +266,7 @@ def _signed(cents: float) -> str:
 
 
 def _title(readings: Sequence[Reading]) -> str:
-    name = readings[0].take.replace("\\", "/").rsplit("/", 1)[-1] if readings else ""
+    name = Path(readings[0].take).name if readings else ""
     return clean(name) or "A take without a name"
 
 
@@ -355,7 +355,7 @@ def _draw_waveform(page: Page, view: TakeView, top: float) -> None:
     time = np.minimum((np.arange(len(wave.low)) + 0.5) * wave.column_s, view.duration_s)
     draw_area(page, panel, time, (wave.low, wave.high), QUIET)
     draw_line(page, panel, time, 0.5 * (wave.low + wave.high), colour=QUIET, pt=0.3)
-    draw_x_ticks(page, panel, [(at, f"{words} s") for at, words in round_ticks(0.0, view.duration_s, 9)][1:])
+    draw_x_ticks(page, panel, _seconds(panel.across, most=10))
 
 
 # --- one tone ----------------------------------------------------------------------------------------------
@@ -461,13 +461,13 @@ def _pitch_range(pitch: PitchView, mean: float, sure: float) -> tuple[float, flo
 
 
 def _most_ticks(frame: Panel) -> int:
-    return max(3, int(frame.height_mm / 6.5))
+    return max(5, int(frame.height_mm / 6.5))
 
 
-def _seconds(across: tuple[float, float]) -> list[tuple[float, str]]:
+def _seconds(across: tuple[float, float], most: int = 6) -> list[tuple[float, str]]:
     """Return ticks of time whose words stay inside the panel."""
-    spare = 0.05 * (across[1] - across[0])
-    ticks = round_ticks(*across, 6)
+    spare = 0.25 * (across[1] - across[0]) / most
+    ticks = round_ticks(*across, most)
     return [(at, f"{words} s") for at, words in ticks if across[0] + spare <= at <= across[1] - spare]
 
 
