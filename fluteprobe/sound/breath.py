@@ -30,6 +30,7 @@ Samples = NDArray[np.float32]
 PERIODS = 44
 LOWEST_RATIO = 0.2
 HIGHEST_RATIO = 3.6
+HIGHEST_LINE = 4.0  # of the spectrum that is looked at, in multiples of the fundamental
 PARTIAL_REACH = 0.1
 CHANCE = 0.01
 
@@ -75,6 +76,7 @@ class NoiseSpectrum:
     power: Floats
     variation: Floats
     segments: int
+    length: int
 
 
 def segment_length(count: int, rate_hz: int, frequency_hz: float) -> int:
@@ -83,15 +85,21 @@ def segment_length(count: int, rate_hz: int, frequency_hz: float) -> int:
     return quick_length(max(longest, 1))
 
 
-def noise_spectrum(residual: Samples, rate_hz: int, length: int) -> NoiseSpectrum | None:
-    """Average the spectrum of noise over half-overlapping segments; None if it is too short for one."""
+def noise_spectrum(
+    residual: Samples, rate_hz: int, length: int, highest_hz: float | None = None
+) -> NoiseSpectrum | None:
+    """Average the spectrum of noise over half-overlapping segments; None if it is too short for one.
+
+    Lines above `highest_hz` are left out where it is given.
+    """
     hop = length // 2
     if length < _SHORTEST or len(residual) < length:
         return None
     starts = range(0, len(residual) - length + 1, hop)
     window = np.hanning(length + 2)[1:-1].astype(np.float32)
     segments = np.stack([residual[start : start + length] for start in starts]) * window
-    lines = np.fft.rfft(segments, axis=1)
+    last = length if highest_hz is None else int(highest_hz * length / rate_hz) + 1
+    lines = np.fft.rfft(segments, axis=1)[:, :last]
     power = np.square(lines.real) + np.square(lines.imag)
     mean = power.mean(axis=0, dtype=np.float64)
     return NoiseSpectrum(
@@ -99,6 +107,7 @@ def noise_spectrum(residual: Samples, rate_hz: int, length: int) -> NoiseSpectru
         power=mean,
         variation=power.std(axis=0, dtype=np.float64) / np.maximum(mean, 1e-30),
         segments=len(segments),
+        length=length,
     )
 
 
@@ -137,7 +146,7 @@ def steady_lines(spectrum: NoiseSpectrum, frequency_hz: float) -> list[tuple[flo
     leads[1:-1] = (power[1:-1] > power[:-2]) & (power[1:-1] >= power[2:])
     beside = np.minimum(np.roll(power, 4), np.roll(power, -4))
     steady = apart & leads & (spectrum.variation < _STEADY_CV) & (power > _STANDING_OUT * beside)
-    amplitude = 4.0 * np.sqrt(power) / (2.0 * (len(power) - 1))
+    amplitude = 4.0 * np.sqrt(power) / spectrum.length
     found = [(_peak_hz(spectrum, int(i)), float(amplitude[i])) for i in np.flatnonzero(steady)]
     return sorted(
         (line for line in found if not _is_hum(line[0], spectrum.line_hz)), key=lambda line: -line[1]

@@ -14,6 +14,7 @@ from typing import Literal
 import numpy as np
 
 from fluteprobe.sound.breath import (
+    HIGHEST_LINE,
     BreathResonance,
     NoiseSpectrum,
     breath_resonances,
@@ -139,9 +140,9 @@ def _tone(samples: Samples, rate_hz: int, steady: Steady, measured: Measured, ro
     if not measured.sounds:
         return _breath_between(start_s, end_s)
     pitch = measured.pitch
-    spectrum = noise_spectrum(
-        measured.residual, rate_hz, segment_length(len(samples), rate_hz, pitch.frequency_hz)
-    )
+    length = segment_length(len(samples), rate_hz, pitch.frequency_hz)
+    highest_hz = HIGHEST_LINE * pitch.frequency_hz
+    spectrum = noise_spectrum(measured.residual, rate_hz, length, highest_hz)
     resonances = _resonances(spectrum, pitch.frequency_hz, room, rate_hz)
     partials = partials_of(pitch.frequency_hz, measured.orders, measured.amplitude)
     hnr = measured.harmonic_to_noise_db
@@ -168,7 +169,8 @@ def _resonances(
     """Find the breath resonances, those of the room left out where a pause lets it be heard."""
     if spectrum is None:
         return ()
-    pause = None if room is None else noise_spectrum(room, rate_hz, round(rate_hz / spectrum.line_hz))
+    highest_hz = HIGHEST_LINE * frequency_hz
+    pause = None if room is None else noise_spectrum(room, rate_hz, spectrum.length, highest_hz)
     return breath_resonances(spectrum, frequency_hz, pause)
 
 
