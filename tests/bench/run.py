@@ -1,15 +1,16 @@
-"""Run the benchmarks: `python tests/bench/run.py [pitch] [speed] [registers] [--quick]`, or all of them.
+"""Run the benchmarks: `python tests/bench/run.py [pitch] [speed] [registers] [drawing] [--quick]`, or all.
 
 The tables go to stdout, in Markdown; what is being done goes to stderr. `--quick` takes a small sample, to
 see that everything runs. Nothing here is collected by pytest.
 """
 
 import argparse
+import os
 import sys
 from pathlib import Path
 
 TESTS = Path(__file__).resolve().parent.parent
-PARTS = ("pitch", "speed", "registers")
+PARTS = ("pitch", "speed", "registers", "drawing")
 
 
 def main() -> None:
@@ -21,6 +22,7 @@ def main() -> None:
     unknown = set(asked.parts) - set(PARTS)
     if unknown:
         parser.error(f"no such part: {', '.join(sorted(unknown))}")
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")  # its threads spin on products as small as ours
     sys.path[:0] = [str(TESTS), str(TESTS.parent / "samples")]
     _run([part for part in PARTS if part in (asked.parts or PARTS)], full=not asked.quick)
 
