@@ -35,7 +35,7 @@ def measure(ctx: click.Context, folder: Path, out: Path | None, second: bool, as
     survey = measured(folder)
     written = write_results(survey, reports_folder(folder, out))
     values = survey_json(survey)
-    opinions = asked(survey.readings, folder) if second else None
+    opinions = asked([(folder / r.take, r) for r in survey.readings]) if second else None
     if opinions is not None:
         values = with_opinions(values, opinions)
         replace_file(written[0], json_text(values).encode("utf-8"))

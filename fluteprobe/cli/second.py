@@ -30,8 +30,8 @@ def second_option(command: Command) -> Command:
     )(command)
 
 
-def asked(readings: Sequence["Reading"], folder: Path) -> Opinions | None:
-    """Ask about every tone whose take lies in a folder; None, with one line on stderr, where that fails."""
+def asked(heard: Sequence[tuple[Path, "Reading"]]) -> Opinions | None:
+    """Ask about every tone, given with its recording's path; None, with one line on stderr, if that fails."""
     from fluteprobe.cli import screen
     from fluteprobe.session import printable
     from fluteprobe.sound.second import SecondOpinionError
@@ -40,9 +40,9 @@ def asked(readings: Sequence["Reading"], folder: Path) -> Opinions | None:
     opinions: list[SecondOpinion | None] = []
     try:
         with screen.progress("Second opinion") as on_tone:
-            for reading in readings:
-                opinions.append(_asked_one(reading, folder))
-                on_tone(len(opinions), len(readings))
+            for path, reading in heard:
+                opinions.append(_asked_one(path, reading))
+                on_tone(len(opinions), len(heard))
     except SecondOpinionError as error:
         screen.say(f"No second opinion: {printable(str(error))}", err=True)
         return None
@@ -66,14 +66,14 @@ def with_opinions(values: Mapping[str, Any], opinions: Opinions) -> dict[str, An
     return {**values, "tones": tones}
 
 
-def _asked_one(reading: "Reading", folder: Path) -> "SecondOpinion | None":
+def _asked_one(path: Path, reading: "Reading") -> "SecondOpinion | None":
     from fluteprobe.sound.recording import open_recording
     from fluteprobe.sound.second import second_opinion
 
     tone = reading.tone
     if tone.frequency_hz is None:
         return None
-    recording = open_recording(folder / reading.take)
+    recording = open_recording(path)
     stop = min(round(tone.end_s * recording.rate_hz), recording.frames)
     samples = recording.read(round(tone.start_s * recording.rate_hz), stop)
     return second_opinion(samples, recording.rate_hz, tone.frequency_hz)
