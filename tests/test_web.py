@@ -35,8 +35,8 @@ from fluteprobe.survey import Survey
 DEMO = Path(__file__).parent.parent / "samples" / "heron"
 ALLOWED_TAGS = {
     "html", "head", "meta", "title", "link", "style", "body", "header", "main", "section", "footer", "div",
-    "h1", "h2", "h3", "p", "ol", "ul", "li", "dl", "dt", "dd", "span", "i", "sup", "sub", "svg", "path", "text",
-    "audio",
+    "h1", "h2", "h3", "p", "ol", "ul", "li", "dl", "dt", "dd", "span", "i", "sup", "sub", "svg", "path",
+    "text", "audio",
 }  # fmt: skip
 NEVER_CLOSED = {"meta", "link"}
 FORMS_OF_EVIL = (
