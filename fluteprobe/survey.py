@@ -15,6 +15,7 @@ from fluteprobe.flute.bumps import Bump
 from fluteprobe.flute.fingering import Breath, Fingering
 from fluteprobe.flute.register import (
     REGISTERS,
+    Dimensions,
     Register,
     RegisterCall,
     Sounding,
@@ -122,7 +123,7 @@ def survey_of(
             heard += [(take, tone) for tone in result]
         if on_take:
             on_take(done, len(session.takes))
-    calls = _calls(session.flute.holes, heard)
+    calls = _calls(session, heard)
     readings = tuple(
         _reading(take.name, take, tone, session.sitting, call)
         for (take, tone), call in zip(heard, calls, strict=True)
@@ -186,12 +187,26 @@ def _reference_shift_cents(sitting: Sitting) -> float | None:
     return temperature_shift_cents(sitting.air_temperature_c, sitting.reference_temperature_c)
 
 
-def _calls(holes: int, heard: Sequence[tuple[Take, Tone]]) -> list[RegisterCall]:
+def _calls(session: Session, heard: Sequence[tuple[Take, Tone]]) -> list[RegisterCall]:
     """Decide the register of every tone that sounds; breath alone has none."""
     sounding = [i for i, (_, tone) in enumerate(heard) if tone.frequency_hz is not None]
-    decided = registers_of(holes, [_sounding(*heard[i]) for i in sounding])
+    soundings = [_sounding(*heard[i]) for i in sounding]
+    decided = registers_of(session.flute.holes, soundings, _dimensions(session))
     calls = dict(zip(sounding, decided, strict=True))
     return [calls.get(i, _NO_CALL) for i in range(len(heard))]
+
+
+def _dimensions(session: Session) -> Dimensions | None:
+    """Return the dimensions where flute.toml gives bore, wall and holes; air unknown is taken as 20 °C."""
+    flute, air_c = session.flute, session.sitting.air_temperature_c
+    if flute.bore_mm is None or flute.wall_mm is None or flute.holes_mm is None:
+        return None
+    return Dimensions(
+        bore_mm=flute.bore_mm,
+        wall_mm=flute.wall_mm,
+        holes_mm=flute.holes_mm,
+        temperature_c=20.0 if air_c is None else air_c,
+    )
 
 
 def _call_alone(tone: Tone) -> RegisterCall:

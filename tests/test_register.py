@@ -146,3 +146,16 @@ def test_an_overblown_take_names_its_highest_tone() -> None:
 def test_an_unheard_bump_list_is_a_weak_word() -> None:
     odds = bump_clue([]).evidence.log_odds
     assert 0.0 < odds < 1.0
+
+
+def test_a_resonance_seen_in_another_take_speaks_for_what_sounds_there() -> None:
+    """A first-register take of a forked fingering shows a bump at 1.5 times: that is the second resonance."""
+    low = sounding("oxxoxx", 500.0, bumps=((1.0, 7.0), (1.5, 9.0)))
+    high = sounding("oxxoxx", 750.0, "over", bumps=((0.66, 12.0), (1.0, 6.0)))
+    call = registers_of(6, [low, high])[1]
+    assert call.register == 2
+    said = {reason.source: reason for reason in call.evidence}
+    assert said["resonances of other takes"].favours == 2
+    assert said["resonances of other takes"].detail == (
+        "another take showed a resonance here, the second that it showed"
+    )

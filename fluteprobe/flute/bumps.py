@@ -11,7 +11,7 @@ the flutes that the tests judge.
 """
 
 from collections.abc import Sequence
-from math import exp, sqrt
+from math import exp, log2, sqrt
 
 from fluteprobe.flute.evidence import REGISTERS, Clue, Register
 
@@ -35,6 +35,8 @@ _LOWER: dict[Register, tuple[tuple[float, float, float, float, float], ...]] = {
 }
 _SOFT = 0.03
 _FLOOR = 1e-4
+_SAME_CENTS = 70.0
+_RANKS = {1: "first", 2: "second", 3: "third"}
 
 
 def bump_clue(bumps: Sequence[Bump]) -> Clue:
@@ -46,6 +48,27 @@ def bump_clue(bumps: Sequence[Bump]) -> Clue:
     most = max(likelihood.values())
     bounded = {register: max(value, _FLOOR * most) for register, value in likelihood.items()}
     return Clue(source="breath resonances", likelihood=bounded, detail=_words(bumps, below))
+
+
+def seen_elsewhere_clue(pitch_cents: float, others: Sequence[tuple[float, Sequence[Bump]]]) -> Clue | None:
+    """Weigh a tone against the resonances that other takes of its fingering showed where it now sounds.
+
+    `others` are (pitch in cents, bumps) of tones at another pitch. If one of them showed a bump at this pitch,
+    and so many resonances below it, itself included, this is at least the next; some may have hidden under
+    partials, so the word is weak. None if nothing was seen there.
+    """
+    for other_cents, bumps in others:
+        seen = sorted([0.0, *(1200.0 * log2(ratio) for ratio, _ in bumps if ratio % 1.0)])
+        here = [cents for cents in seen if abs(other_cents + cents - pitch_cents) < _SAME_CENTS]
+        if here and abs(other_cents - pitch_cents) > _SAME_CENTS:
+            rank = seen.index(here[0]) + 1
+            likelihood: dict[Register, float] = {
+                register: 0.6 if register == rank else 0.3 if register == rank + 1 else 0.1
+                for register in REGISTERS
+            }
+            detail = f"another take showed a resonance here, the {_RANKS.get(rank, 'fourth')} that it showed"
+            return Clue(source="resonances of other takes", likelihood=likelihood, detail=detail)
+    return None
 
 
 def _without(bumps: Sequence[Bump]) -> dict[Register, float]:

@@ -11,12 +11,22 @@ returns a `Clue` and call it from `_own_clues`.
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
-from fluteprobe.flute.bumps import Bump, bump_clue
-from fluteprobe.flute.evidence import PRIOR, REGISTERS, Clue, Evidence, Register, RegisterCall, decide
+from fluteprobe.flute.bumps import Bump, bump_clue, seen_elsewhere_clue
+from fluteprobe.flute.evidence import REGISTERS, Clue, Evidence, Register, RegisterCall, decide
 from fluteprobe.flute.fingering import Breath, Fingering
 from fluteprobe.flute.ladder import Ladder, companion_clue, known_ladder, ladder_clue
+from fluteprobe.flute.model import Dimensions, Model, fitted_model, model_clue
 
-__all__ = ["REGISTERS", "Evidence", "Register", "RegisterCall", "Sounding", "register_alone", "registers_of"]
+__all__ = [
+    "REGISTERS",
+    "Dimensions",
+    "Evidence",
+    "Register",
+    "RegisterCall",
+    "Sounding",
+    "register_alone",
+    "registers_of",
+]
 
 SAME_PITCH_CENTS = 120.0
 
@@ -37,10 +47,14 @@ def register_alone(bumps: Sequence[Bump]) -> RegisterCall:
     return decide([bump_clue(bumps)])
 
 
-def registers_of(holes: int, soundings: Sequence[Sounding]) -> list[RegisterCall]:
+def registers_of(
+    holes: int, soundings: Sequence[Sounding], dimensions: Dimensions | None = None
+) -> list[RegisterCall]:
     """Decide the register of every tone of one flute with that many holes, in the order given."""
     flute = known_ladder(holes, _lowest(soundings))
-    own = [_own_clues(flute, sounding, soundings) for sounding in soundings]
+    played = {sounding.fingering for sounding in soundings}
+    model = None if dimensions is None else fitted_model(dimensions, flute.rungs, played)
+    own = [_own_clues(flute, model, sounding, soundings) for sounding in soundings]
     alone = [decide(clues) for clues in own]
     return [
         decide([*clues, *_companion_clues(sounding, soundings, alone)])
@@ -48,9 +62,14 @@ def registers_of(holes: int, soundings: Sequence[Sounding]) -> list[RegisterCall
     ]
 
 
-def _own_clues(flute: Ladder, sounding: Sounding, soundings: Sequence[Sounding]) -> list[Clue]:
+def _own_clues(
+    flute: Ladder, model: Model | None, sounding: Sounding, soundings: Sequence[Sounding]
+) -> list[Clue]:
     """Return what a tone's breath resonances, its pitch and its take's name say."""
-    clue = ladder_clue(flute, sounding.fingering, sounding.pitch_cents)
+    if model is None:
+        clue = ladder_clue(flute, sounding.fingering, sounding.pitch_cents)
+    else:
+        clue = model_clue(model, sounding.fingering, sounding.pitch_cents)
     clues = [bump_clue(sounding.bumps)] if clue is None else [bump_clue(sounding.bumps), clue]
     highest = max(other.pitch_cents for other in soundings if other.take == sounding.take)
     if sounding.breath != "over" or sounding.pitch_cents > highest - SAME_PITCH_CENTS:
@@ -71,7 +90,10 @@ def _companion_clues(
     if not apart:
         return []
     _, companion_cents, probability = max(apart, key=lambda other: other[0])
-    return [companion_clue(sounding.fingering, sounding.pitch_cents, companion_cents, probability)]
+    clue = companion_clue(sounding.fingering, sounding.pitch_cents, companion_cents, probability)
+    others = [(each.pitch_cents, each.bumps) for each in soundings if each.fingering == sounding.fingering]
+    seen = seen_elsewhere_clue(sounding.pitch_cents, others)
+    return [clue] if seen is None else [clue, seen]
 
 
 def _lowest(soundings: Sequence[Sounding]) -> Mapping[Fingering, float]:
@@ -83,14 +105,13 @@ def _lowest(soundings: Sequence[Sounding]) -> Mapping[Fingering, float]:
 
 
 _NAMED: Mapping[Breath, Mapping[Register, float]] = {
-    "soft": {1: 0.6, 2: 0.3, 3: 0.1},
-    "normal": {1: 0.5, 2: 0.35, 3: 0.15},
-    "over": {1: 0.15, 2: 0.6, 3: 0.25},
+    "soft": {1: 1.3, 2: 0.8, 3: 0.6},
+    "normal": {1: 1.1, 2: 0.9, 3: 0.8},
+    "over": {1: 0.3, 2: 1.6, 3: 1.5},
 }
 
 
 def breath_clue(breath: Breath) -> Clue:
     """Take the breath that the file's name says as a weak hint."""
     detail = {"soft": "blown softly", "normal": "blown normally", "over": "overblown"}[breath]
-    likelihood = {register: _NAMED[breath][register] / PRIOR[register] for register in REGISTERS}
-    return Clue(source="breath in the file name", likelihood=likelihood, detail=f"the name says {detail}")
+    return Clue(source="breath in the file name", likelihood=_NAMED[breath], detail=f"the name says {detail}")
