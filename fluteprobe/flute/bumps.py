@@ -53,7 +53,7 @@ def bump_clue(bumps: Sequence[Bump]) -> Clue:
 def seen_elsewhere_clue(pitch_cents: float, others: Sequence[tuple[float, Sequence[Bump]]]) -> Clue | None:
     """Weigh a tone against the resonances that other takes of its fingering showed where it now sounds.
 
-    `others` are (pitch in cents, bumps) of tones at another pitch. If one of them showed a bump at this pitch,
+    `others` are (pitch in cents, bumps) of tones at another pitch. If one of them showed a bump here,
     and so many resonances below it, itself included, this is at least the next; some may have hidden under
     partials, so the word is weak. None if nothing was seen there.
     """
