@@ -82,8 +82,8 @@ _DIRECTIONS = (
     ),
     (
         "Overblown",
-        "Where the name says “over”, blow harder until the next register speaks. A fingering that will not "
-        "speak is worth its file too.",
+        "Where the name says “over”, blow harder until the next register speaks. What will not speak is "
+        "worth its file too.",
     ),
     (
         "Files",
@@ -341,7 +341,7 @@ def _heading(take: PlannedTake, column: float) -> _Line:
     """Return a group's title with its reason and what that rests on."""
     title = wrapped(take.group.split(), GROUP, column)
     reason = wrapped([*take.why.split(), f"({take.basis})"], LABEL, column)
-    height = _HEADING_MM + _TITLE_LINE_MM * (len(title) - 1) + _LINE_MM * len(reason) + 0.2
+    height = _HEADING_MM + _TITLE_LINE_MM * (len(title) - 1) + _LINE_MM * len(reason) + 0.9
     return _Line(height_mm=height, draw=partial(_draw_heading, title, reason), leads=True)
 
 

@@ -213,8 +213,11 @@ def _body(contents: Contents, look: _Look) -> Element:
     return _tag(
         "body",
         _header(contents),
-        _tag("main", *registers, class_="registers"),
-        _tag("div", *asides, _key(look), conditions, class_="below"),
+        _tag(
+            "main",
+            _tag("div", *registers, class_="registers"),
+            _tag("div", *asides, _key(look), conditions, class_="below"),
+        ),
         _tag("footer", _tag("p", "measured and drawn with fluteprobe")),
         class_="crowded" if max(len(s.entries) for s in contents.sections) > ROOMY_ENTRIES else "roomy",
     )
