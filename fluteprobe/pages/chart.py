@@ -246,7 +246,7 @@ def _look(edition: Edition, holes: int, limit_cents: float, *, upper: bool, room
     return Look(
         flute=FluteSize(hole_mm=hole, pitch_mm=between(1.22, 1.36) * hole, hands_apart_mm=0.4 * hole),
         scale=Scale(height_mm=height, limit_cents=limit_cents, tolerance_cents=edition.tolerance_cents),
-        space_mm=between(1.15, 1.6 if upper else 1.4),
+        space_mm=between(1.3 if upper and not card else 1.15, 1.75 if upper else 1.5),
         heading=_CARD_HEADING if card else HEADING,
         note=_CARD_NOTE if card else NOTE if upper else NOTE_SMALL,
         word=word,
