@@ -2,6 +2,9 @@
 
 Contrast is checked against WCAG 2.1 (W3C Recommendation, 2018), success criteria 1.4.3 (text, 4.5 to 1) and
 1.4.11 (graphical objects, 3 to 1), with that document's relative luminance: what holds there holds in grey.
+The same is asked of the colours as people see them who lack one kind of cone (protanopia, deuteranopia,
+tritanopia), simulated by Machado, Oliveira & Fernandes, IEEE Trans. Vis. Comput. Graph. 15, 1291 (2009), at
+severity 1; their matrices are given from memory, and checked to keep white white.
 """
 
 from pathlib import Path
@@ -38,19 +41,36 @@ from fluteprobe.pages.paper import (
     wrapped,
 )  # fmt: skip
 
+# For linear RGB, row by row.
+SIGHT = {
+    "protanopia": (
+        (0.152286, 1.052583, -0.204868), (0.114503, 0.786281, 0.099216), (-0.003882, -0.048116, 1.051998),
+    ),
+    "deuteranopia": (
+        (0.367322, 0.860646, -0.227968), (0.280085, 0.672501, 0.047413), (-0.011820, 0.042940, 0.968881),
+    ),
+    "tritanopia": (
+        (1.255528, -0.076749, -0.178779), (-0.078411, 0.930809, 0.147602), (0.004733, 0.691367, 0.303900),
+    ),
+}  # fmt: skip
+MARKS_ON_GROUNDS = [(INK, WOOD), (INK, BAND), (ACCENT, BAND), (WING, WHITE), (INK, WING)]
+
 VOICES = [voice for voice in vars(paper).values() if isinstance(voice, Type)]
 
 
-def luminance(colour: str) -> float:
-    """Return WCAG 2.1's relative luminance of an sRGB colour."""
+def luminance(colour: str, sight: str | None = None) -> float:
+    """Return WCAG 2.1's relative luminance of an sRGB colour, as it is or as it is seen."""
     parts = [int(colour[k : k + 2], 16) / 255.0 for k in (1, 3, 5)]
     linear = [part / 12.92 if part <= 0.03928 else ((part + 0.055) / 1.055) ** 2.4 for part in parts]
+    if sight:
+        rows = SIGHT[sight]
+        linear = [max(0.0, sum(w * part for w, part in zip(row, linear, strict=True))) for row in rows]
     return 0.2126 * linear[0] + 0.7152 * linear[1] + 0.0722 * linear[2]
 
 
-def contrast(one: str, other: str) -> float:
-    """Return WCAG 2.1's contrast ratio of two colours."""
-    light, dark = sorted((luminance(one), luminance(other)), reverse=True)
+def contrast(one: str, other: str, sight: str | None = None) -> float:
+    """Return WCAG 2.1's contrast ratio of two colours, as they are or as they are seen."""
+    light, dark = sorted((luminance(one, sight), luminance(other, sight)), reverse=True)
     return (light + 0.05) / (dark + 0.05)
 
 
@@ -59,9 +79,14 @@ def test_text_is_legible_in_grey(colour: str) -> None:
     assert contrast(colour, WHITE) >= 4.5
 
 
-@pytest.mark.parametrize(
-    ("mark", "ground"), [(INK, WOOD), (INK, BAND), (ACCENT, BAND), (WING, WHITE), (INK, WING)]
-)
+@pytest.mark.parametrize("sight", SIGHT)
+def test_text_and_marks_stand_out_whichever_cones_are_missing(sight: str) -> None:
+    assert all(sum(row) == pytest.approx(1.0, abs=2e-6) for row in SIGHT[sight])
+    assert min(contrast(colour, WHITE, sight) for colour in (INK, QUIET, ACCENT)) >= 4.5
+    assert min(contrast(mark, ground, sight) for mark, ground in MARKS_ON_GROUNDS) >= 3.0
+
+
+@pytest.mark.parametrize(("mark", "ground"), MARKS_ON_GROUNDS)
 def test_marks_stand_out_in_grey(mark: str, ground: str) -> None:
     assert contrast(mark, ground) >= 3.0
 
