@@ -59,7 +59,7 @@ def hear(  # noqa: PLR0913, PLR0917  (click passes every option by name)
 
     \b
     Example:
-      fluteprobe hear --page heron/takes/oxxxxx.wav
+      fluteprobe hear heron/takes/oxxxxx.wav
     """  # noqa: D301  (click reads the \b)
     from fluteprobe.cli import screen
     from fluteprobe.results import heard_json, json_text

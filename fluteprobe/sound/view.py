@@ -13,25 +13,20 @@ import numpy as np
 from numpy.typing import NDArray
 
 from fluteprobe.sound.breath import NoiseSpectrum, noise_spectrum, segment_length
-from fluteprobe.sound.partials import (
-    Samples,
-    Tracks,
-    amplitudes,
-    demodulate,
-    orders_below_nyquist,
-    without_partials,
-)
+from fluteprobe.sound.measured import Measured, take_apart
+from fluteprobe.sound.partials import Samples, demodulate, orders_below_nyquist
 from fluteprobe.sound.picture import Picture, constant_q
-from fluteprobe.sound.pitch import CENTS, PhaseTrack, Pitch, measure_pitch, phase_track
+from fluteprobe.sound.pitch import CENTS, PhaseTrack, Pitch, phase_track
 from fluteprobe.sound.recording import Recording
 from fluteprobe.sound.second import SecondOpinion, second_opinion
-from fluteprobe.sound.tone import LONGEST_TONE_S, Tone
+from fluteprobe.sound.tone import Tone
 
 Floats = NDArray[np.float64]
 
 COLUMNS = 720  # of the waveform's envelope: more than a page can show apart
 POINT_S = 0.025  # one point of the pitch track spans about so long
 BREATH_HZ = 500.0  # breath alone has no pitch; its spectrum gets lines as fine as this pitch's
+BREATH_S = 30.0  # of longer breath alone, the start
 
 SECOND_LOOK_S = 10.0  # of a longer tone librosa is asked about the start
 
@@ -151,16 +146,15 @@ def _tone_view(recording: Recording, tone: Tone, second: bool) -> ToneView:
     rate = recording.rate_hz
     start, stop = round(tone.start_s * rate), min(round(tone.end_s * rate), recording.frames)
     if tone.frequency_hz is None:
-        samples = recording.read(start, min(stop, start + int(LONGEST_TONE_S * rate)))
+        samples = recording.read(start, min(stop, start + int(BREATH_S * rate)))
         return ToneView(tone=tone, pitch=None, spectrum=_breath_view(samples, rate), second=None)
     samples = recording.read(start, stop)
     tracks = demodulate(samples, rate, tone.frequency_hz, orders_below_nyquist(rate, tone.frequency_hz))
-    phases = phase_track(tracks)
-    pitch = measure_pitch(phases)
+    apart = take_apart(samples, rate, tone.frequency_hz)
     return ToneView(
         tone=tone,
-        pitch=_pitch_view(phases, pitch, tone.frequency_hz, start / rate),
-        spectrum=_spectrum_view(samples, tracks, pitch),
+        pitch=_pitch_view(phase_track(tracks), apart.pitch, tone.frequency_hz, start / rate),
+        spectrum=_spectrum_view(samples, rate, apart),
         second=_second_look(recording, tone.frequency_hz, start, stop) if second else None,
     )
 
@@ -181,31 +175,20 @@ def _pitch_view(phases: PhaseTrack, pitch: Pitch, frequency_hz: float, start_s: 
     )
 
 
-def _spectrum_view(samples: Samples, tracks: Tracks, pitch: Pitch) -> SpectrumView | None:
+def _spectrum_view(samples: Samples, rate_hz: int, apart: Measured) -> SpectrumView | None:
     """Return the spectrum of a tone and of what is left of it, on the lines of the breath's own search."""
-    amplitude = amplitudes(tracks, pitch.curve.phase(tracks.time_s))
-    residual = without_partials(samples, tracks, pitch.curve.phase, amplitude > 0.0)
-    whole = noise_spectrum(
-        samples, tracks.rate_hz, segment_length(len(samples), tracks.rate_hz, pitch.frequency_hz)
-    )
-    noise = noise_spectrum(
-        residual, tracks.rate_hz, segment_length(len(samples), tracks.rate_hz, pitch.frequency_hz)
-    )
+    length = segment_length(len(samples), rate_hz, apart.pitch.frequency_hz)
+    whole = noise_spectrum(samples, rate_hz, length)
+    noise = noise_spectrum(apart.residual, rate_hz, length)
     if whole is None or noise is None:
         return None
-    strongest = _power_of(float(amplitude.max(initial=0.0)), tracks.rate_hz, whole)
+    strongest = (float(apart.amplitude.max(initial=0.0)) * whole.length / 4.0) ** 2
     return _against(whole, noise, strongest or float(whole.power.max()))
 
 
 def _breath_view(samples: Samples, rate_hz: int) -> SpectrumView | None:
     spectrum = noise_spectrum(samples, rate_hz, segment_length(len(samples), rate_hz, BREATH_HZ))
     return None if spectrum is None else _against(spectrum, spectrum, float(spectrum.power.max()))
-
-
-def _power_of(amplitude: float, rate_hz: int, spectrum: NoiseSpectrum) -> float:
-    """Return the power of a steady sine of that amplitude at its line: (amplitude × sum of window / 2)²."""
-    length = round(rate_hz / spectrum.line_hz)
-    return (amplitude * (length + 1) / 4.0) ** 2
 
 
 def _against(whole: NoiseSpectrum, noise: NoiseSpectrum, reference: float) -> SpectrumView:
