@@ -164,4 +164,5 @@ def _printed(survey: "Survey", target: Path, suffix: str, wish: Wish) -> Iterato
         dots_per_inch=wish.dots_per_inch,
     )
     if wish.has_map:
-        yield from write_map(survey, target / f"map.{suffix}", paper=wish.paper)
+        page = target / f"map.{suffix}"
+        yield from write_map(survey, page, paper=wish.paper, dots_per_inch=wish.dots_per_inch)
