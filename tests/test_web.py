@@ -133,6 +133,14 @@ def test_what_is_drawn_is_also_said_or_adds_nothing() -> None:
     assert "A4 = 440 Hz" in words
 
 
+def test_all_text_is_inside_a_landmark() -> None:
+    page = Outline(web_page(heron(), {}))
+    landmarks = {"header", "main", "footer"}
+    outside = [text for around, text in page.texts if "body" in around and not landmarks & set(around)]
+    assert outside == []
+    assert [len(page.all(tag)) for tag in ("header", "main", "footer", "h1")] == [1, 1, 1, 1]
+
+
 def test_the_page_has_a_language_a_title_and_a_width() -> None:
     page = Outline(web_page(heron(), {}))
     assert page.all("html")[0]["lang"] == "en"
