@@ -20,7 +20,7 @@ from fluteprobe.pages.take import odds_in_words, take_figures, write_take
 from fluteprobe.sound.picture import Picture
 from fluteprobe.sound.recording import open_recording
 from fluteprobe.sound.second import SecondOpinion
-from fluteprobe.sound.tone import BreathResonance
+from fluteprobe.sound.tone import BreathResonance, Kind
 from fluteprobe.sound.view import SecondLook, TakeView, look
 from fluteprobe.survey import Reading, hear
 
@@ -175,6 +175,22 @@ def test_evidence_that_disagrees_is_a_caution(plain: Take, tmp_path: Path) -> No
     call = replace(readings[0].call, register=None, caution="register undecided: the evidence disagrees")
     (target,) = write_take(view, (replace(readings[0], call=call), readings[1]), tmp_path / "take.pdf")
     assert "Caution: register undecided: the evidence disagrees" in pdf_text(target)
+
+
+@pytest.mark.parametrize(
+    ("kind", "words"),
+    [
+        ("edge tone", "edge tone, register undecided"),
+        ("multiphonic", "several notes at once, register undecided"),
+    ],
+)
+def test_what_is_no_clean_tone_is_called_so(plain: Take, kind: Kind, words: str) -> None:
+    view, readings = plain
+    tone = replace(readings[0].tone, kind=kind)
+    reading = replace(readings[0], tone=tone, call=replace(readings[0].call, register=None))
+    (page,) = take_figures(replace(view, tones=(replace(view.tones[0], tone=tone),)), [reading])
+    check_page(page)
+    assert words in words_on(page)
 
 
 def test_of_two_channels_the_page_names_the_one_that_was_used(tmp_path: Path) -> None:
