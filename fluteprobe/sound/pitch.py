@@ -41,6 +41,7 @@ _VIBRATO_HZ = (2.5, 9.0)
 _LEAST_VIBRATO_CENTS = 3.0
 _VIBRATO_SHARE = 0.5
 _SLOW_TERMS = 4
+_DRIFT_RATIO = 20.0
 # Student's t for 95 % over 2, by degrees of freedom (JCGM 100:2008, table G.2): a scatter known from few
 # independent values needs a wider interval.
 _STUDENT = {1: 6.35, 2: 2.15, 3: 1.59, 4: 1.39, 5: 1.285}
@@ -158,7 +159,8 @@ def measure_pitch(track: PhaseTrack) -> Pitch:
     noise_cents = CENTS * curve.mean_noise_rad_per_s / (2.0 * np.pi * mean_hz)
     moving = curve.terms > 1
     trend, vibrato, rest = _movement(points.time_s, deviation, curve.span_s)
-    wander_cents, freedom = _uncertainty_of_mean(rest) if moving else (0.0, 1)
+    slow = rest + trend * (points.time_s - points.time_s.mean())
+    wander_cents, freedom = _uncertainty_of_mean(slow) if moving else (0.0, 1)
     return Pitch(
         frequency_hz=mean_hz,
         uncertainty_cents=float(np.hypot(noise_cents, _STUDENT.get(freedom, 1.0) * wander_cents)),
@@ -313,16 +315,18 @@ def _vibrato_rate(centred: Floats, deviation: Floats, span_s: float) -> float | 
     return float(2.0 * np.pi * rates[int(np.argmax(power))])
 
 
-def _uncertainty_of_mean(rest: Floats) -> tuple[float, int]:
+def _uncertainty_of_mean(slow: Floats) -> tuple[float, int]:
     """Return the standard uncertainty of the mean of a correlated series, and its degrees of freedom.
 
     The variance of a mean is the series' spectrum at zero frequency over its length (Priestley, Spectral
     Analysis and Time Series, 1981, eq. 5.3.5); the slowest cosine terms of the series estimate it, which is
-    the type A evaluation of JCGM 100:2008 (4.2) with the correlation taken into account (4.2.7).
+    the type A evaluation of JCGM 100:2008 (4.2) with the correlation taken into account (4.2.7). The first
+    term holds the drift too: it is left out where it is no more of the kind of the others.
     """
-    points = len(rest)
+    points = len(slow)
     order = np.arange(1, min(_SLOW_TERMS, points - 1) + 1)
     waves = np.cos(np.pi * order[:, None] * (np.arange(points) + 0.5) / points)
-    strength = (waves @ rest) ** 2 * 2.0 / points
-    freedom = max(len(order) - 1, 1)
-    return float(np.sqrt(strength.sum() / freedom / points)), freedom
+    strength = (waves @ slow) ** 2 * 2.0 / points
+    if len(strength) > 1 and strength[0] > _DRIFT_RATIO * strength[1:].mean():
+        strength = strength[1:]
+    return float(np.sqrt(strength.mean() / points)), len(strength)
