@@ -399,7 +399,8 @@ def test_chart_hands_on_what_is_wished(here: Path, measured: Survey, monkeypatch
     words = ["--paper", "Letter", "--tolerance", "5", "--resolution", "150", "--out", "out"]
     result = run("chart", "heron", *words)
     assert asked == [
-        (True, Path("out/chart.pdf"), "letter", False, 5.0, 150.0), (True, Path("out/map.pdf"), "letter", 150.0),
+        (True, Path("out/chart.pdf"), "letter", False, 5.0, 150.0),
+        (True, Path("out/map.pdf"), "letter", 150.0),
     ]  # fmt: skip
     assert result.stdout.splitlines()[2:] == [
         str(Path("out") / name) for name in ("chart.pdf", "more", "map.pdf", "more")

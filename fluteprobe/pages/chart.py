@@ -18,12 +18,13 @@ from pathlib import Path
 
 from matplotlib.figure import Figure
 
+from fluteprobe.flute.fingering import STATES
 from fluteprobe.pages.contents import Aside, Contents, chart_contents
-from fluteprobe.pages.glyphs import FluteSize, Scale, draw_deviation, draw_hole, draw_scale, draw_share
+from fluteprobe.pages.glyphs import FluteSize, Scale
+from fluteprobe.pages.key import draw_key, key_of
 from fluteprobe.pages.paper import (
     ACCENT,
     CARDS,
-    HAIRLINE,
     HEADING,
     LABEL,
     NOTE,
@@ -63,7 +64,6 @@ LARGE_PRINT = 1.3  # how much larger everything is, to be read from a music stan
 CARD_PRINT = 0.875  # and on a card: the smallest type there, 8 points, becomes 7
 
 _LINE_MM = 3.6
-_KEY_LINE_MM = 6.0
 _FOOT_MM = 4.0
 _TITLE_LINE_MM = 8.0
 _SUBTITLE_LINE_MM = 5.0
@@ -343,15 +343,6 @@ def _draw_card_header(contents: Contents, page: Page, top: float) -> None:
 # --- what closes the chart: lists, key and conditions ------------------------------------------------------
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Sign:
-    """A sign of the key: how wide it is, how it is drawn from its left end and middle, and what it means."""
-
-    width_mm: float
-    draw: Callable[[Page, float, float], None]
-    words: str
-
-
 def _closing(contents: Contents, edition: Edition) -> Block:
     blocks = [_listed(aside, edition) for aside in contents.asides]
     blocks.append(_key(contents, edition))
@@ -381,85 +372,7 @@ def _draw_list(label: str, lines: Sequence[str], page: Page, top: float) -> None
 
 
 def _key(contents: Contents, edition: Edition) -> Block:
-    lines: list[list[Sign]] = [[]]
-    left = edition.across_mm
-    for sign in _signs(contents, edition):
-        if lines[-1] and _width_mm(sign) > left:
-            lines.append([])
-            left = edition.across_mm
-        lines[-1].append(sign)
-        left -= _width_mm(sign) + 5.0
-    height = _KEY_LINE_MM * len(lines) + 4.5
-    return Block(height_mm=height, draw=partial(_draw_key, lines, height))
-
-
-def _width_mm(sign: Sign) -> float:
-    return sign.width_mm + width_mm(sign.words, SMALL)
-
-
-def _draw_key(lines: Sequence[Sequence[Sign]], height: float, page: Page, top: float) -> None:
-    bottom = top + height - 1.3
-    page.line((page.left_mm, top + 1.5), (page.right_mm, top + 1.5), colour=HAIRLINE)
-    if page.gutter_mm > 12.0:
-        page.text(page.left_mm - LABEL_GAP_MM, top + 6.3, "key", LABEL, align="right", colour=QUIET)
-    for k, line in enumerate(lines):
-        x, y = page.left_mm, top + 5.3 + _KEY_LINE_MM * k
-        for sign in line:
-            sign.draw(page, x, y)
-            page.text(x + sign.width_mm, y + 1.0, sign.words, SMALL)
-            x += _width_mm(sign) + 5.0
-    page.line((page.left_mm, bottom), (page.right_mm, bottom), colour=HAIRLINE)
-
-
-def _signs(contents: Contents, edition: Edition) -> list[Sign]:
     used = {state for s in contents.sections for entry in s.entries for state in str(entry.fingering)}
-    states = {"x": "closed", "o": "open", "h": "half-holed", "v": "barely cracked"}
-    shown = [state for state in states if state in used or not edition.is_card]
-    holes = [Sign(width_mm=6.0, draw=partial(_draw_state, s), words=f"{s}  {states[s]}") for s in shown]
-    mouth = Sign(width_mm=5.4, draw=_draw_mouth, words="mouth end")
-    return [mouth, *holes, *_deviation_signs(edition), *([] if edition.is_card else _other_signs())]
-
-
-def _draw_state(state: str, page: Page, x: float, y: float) -> None:
-    draw_hole(page, x + 1.9, y, 3.4, state)
-
-
-def _deviation_signs(edition: Edition) -> list[Sign]:
-    tolerance = edition.tolerance_cents
-    scale = Scale(height_mm=5.0, limit_cents=3.0 * tolerance, tolerance_cents=tolerance)
-    marks = [
-        (0.0, 0.0, f"within {tolerance:g} cents"),
-        (2.2 * tolerance, 0.0, "sharper"),
-        (-2.2 * tolerance, 0.0, "flatter"),
-        (0.0, 1.1 * tolerance, "uncertainty" if edition.is_card else "uncertainty (k = 1)"),
-    ]
-    return [
-        Sign(width_mm=6.0, draw=partial(_draw_mark, scale, (cents, doubt)), words=words)
-        for cents, doubt, words in marks
-    ]
-
-
-def _draw_mark(scale: Scale, mark: tuple[float, float], page: Page, x: float, y: float) -> None:
-    draw_scale(page, x, x + 3.8, y, scale)
-    draw_deviation(page, (x + 1.9, y), scale, *mark)
-
-
-def _other_signs() -> list[Sign]:
-    alternative, share = partial(_draw_word, "or"), partial(_draw_half, "1 of 2")
-    return [
-        Sign(width_mm=4.5, draw=alternative, words="same note, best first"),
-        Sign(width_mm=9.5, draw=share, words="takes that spoke"),
-    ]
-
-
-def _draw_mouth(page: Page, x: float, y: float) -> None:
-    page.box((x + 0.2, y - 0.45), (3.4, 0.9), QUIET)
-
-
-def _draw_word(word: str, page: Page, x: float, y: float) -> None:
-    page.text(x, y + 1.0, word, LABEL, colour=QUIET)
-
-
-def _draw_half(word: str, page: Page, x: float, y: float) -> None:
-    page.text(x, y + 0.6, word, SMALL)
-    draw_share(page, (x + 3.5, y + 2.0), 7.0, 0.5)
+    states = used if edition.is_card else STATES
+    key = key_of(states, edition.tolerance_cents, edition.across_mm, brief=edition.is_card)
+    return Block(height_mm=key.height_mm, draw=partial(draw_key, key))
