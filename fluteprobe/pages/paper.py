@@ -7,6 +7,7 @@ matplotlib's settings outside `house_style()`; identical pages give identical by
 
 import os
 import unicodedata
+from bisect import bisect_left
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass, replace
@@ -246,9 +247,11 @@ def shortened(words: str, voice: Type, room_mm: float) -> str:
     """Return the text, cut with an ellipsis where it is wider than the room."""
     if width_mm(words, voice) <= room_mm:
         return words
-    cut = len(words)
-    while cut > 0 and width_mm(words[:cut].rstrip() + "…", voice) > room_mm:
-        cut -= 1
+
+    def too_wide(cut: int) -> bool:
+        return width_mm(words[:cut].rstrip() + "…", voice) > room_mm
+
+    cut = max(0, bisect_left(range(len(words)), True, key=too_wide) - 1)
     return words[:cut].rstrip() + "…"
 
 
