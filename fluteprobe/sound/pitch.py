@@ -40,7 +40,7 @@ _CAUTION = 5.0
 _VIBRATO_HZ = (2.5, 9.0)
 _LEAST_VIBRATO_CENTS = 3.0
 _VIBRATO_SHARE = 0.5
-_SLOW_TERMS = 4
+_SLOW_TERMS = 3
 _DRIFT_RATIO = 20.0
 # Student's t for 95 % over 2, by degrees of freedom (JCGM 100:2008, table G.2): a scatter known from few
 # independent values needs a wider interval.
