@@ -114,7 +114,7 @@ def test_every_example_runs(name: str | None, here: Path) -> None:
 
 def test_commands_are_listed_in_the_order_of_work() -> None:
     listed = re.findall(r"^  (\w+)  ", run("--help").output.split("Commands:")[1], re.MULTILINE)
-    assert listed == ["begin", "hear", "measure", "chart"]
+    assert listed == ["begin", "sheet", "hear", "measure", "chart"]
 
 
 def test_the_version() -> None:

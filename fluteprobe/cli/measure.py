@@ -16,9 +16,14 @@ if TYPE_CHECKING:
 @click.argument("folder", type=FOLDER)
 @out_option
 @second_option
+@click.option(
+    "--explain", "takes", metavar="TAKE", multiple=True, help="Say why a take's tones have their registers."
+)
 @json_option
 @click.pass_context
-def measure(ctx: click.Context, folder: Path, out: Path | None, second: bool, as_json: bool) -> None:
+def measure(  # noqa: PLR0913, PLR0917  (one parameter an option)
+    ctx: click.Context, folder: Path, out: Path | None, second: bool, takes: tuple[str, ...], as_json: bool
+) -> None:
     """Measure every take of a session folder and print what each fingering gives.
 
     Also writes measurements.json and measurements.csv. A take that cannot be used is named, and all
@@ -27,12 +32,15 @@ def measure(ctx: click.Context, folder: Path, out: Path | None, second: bool, as
     \b
     Example:
       fluteprobe measure heron
+      fluteprobe measure heron --explain oxxxxx
     """  # noqa: D301  (click reads the \b)
     from fluteprobe.cli import screen
+    from fluteprobe.cli.reasons import explained
     from fluteprobe.cli.second import asked, told, with_opinions
     from fluteprobe.results import json_text, replace_file, survey_json, write_results
 
     survey = measured(folder)
+    reasons = [explained(survey.readings, take) for take in takes]
     written = write_results(survey, reports_folder(folder, out))
     values = survey_json(survey)
     opinions = asked([(folder / r.take, r) for r in survey.readings]) if second else None
@@ -45,6 +53,8 @@ def measure(ctx: click.Context, folder: Path, out: Path | None, second: bool, as
         screen.say(screen.survey_table(survey))
         if opinions is not None:
             screen.say("\n" + told(survey.readings, opinions))
+        for reason in reasons:
+            screen.say("\n" + reason)
         screen.tell_cautions(survey.readings)
     screen.tell_problems(survey.problems)
     screen.tell_written(written)
