@@ -32,7 +32,6 @@ def measure(  # noqa: PLR0913, PLR0917  (one parameter an option)
     \b
     Example:
       fluteprobe measure heron
-      fluteprobe measure heron --explain oxxxxx
     """  # noqa: D301  (click reads the \b)
     from fluteprobe.cli import screen
     from fluteprobe.cli.reasons import explained
