@@ -80,3 +80,15 @@ def heard_hz(flute: FluteSample, folder: Path) -> float:
     assert reading.tone.kind == "tone"
     assert reading.tone.frequency_hz is not None
     return reading.tone.frequency_hz
+
+
+def test_registers_heard_alone_are_those_of_the_method_books(tmp_path: Path) -> None:
+    """Required: none wrong, at most three undecided; from a third to two thirds of a second of sound each."""
+    undecided = 0
+    for flute in concert_flute():
+        path = tmp_path / f"{flute.name.replace('#', 's')}.wav"
+        soundfile.write(path, 0.9 * flute.samples, flute.rate_hz, subtype="FLOAT")
+        heard = max(fluteprobe.hear(path), key=lambda reading: reading.tone.end_s - reading.tone.start_s)
+        assert heard.call.register in {flute.register, None}, (flute.name, heard.call)
+        undecided += heard.call.register is None
+    assert undecided <= 3

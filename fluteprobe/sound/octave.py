@@ -25,6 +25,9 @@ _ALONE = 6.0
 _GATHERED = 0.5
 _SAME_DB = 8.0
 _SURE = 1e-6
+# A breath resonance of quality 50 is as narrow as the lines of so many cycles: fewer need a surer line.
+_TELLING_CYCLES = 400.0
+_SURE_OF_FEW = 1e-12
 _LIKELY = 1e-3
 
 
@@ -55,6 +58,8 @@ def settle_octave(samples: Samples, rate_hz: int, frequency_hz: float) -> float:
 def _part(samples: Samples, tracks: Tracks) -> float | None:
     """Return 1/2 or 1/3 if steady lines stand between the multiples of the pitch."""
     phase = guide_phase(tracks)
+    cycles = len(samples) / tracks.rate_hz * tracks.frequency_hz
+    sure = _SURE if cycles > _TELLING_CYCLES else _SURE_OF_FEW
     least = _power(tracks).sum() * 10.0 ** (_LEAST_DB / 10.0)
     for parts, (periods, orders) in _PARTS.items():
         if tracks.frequency_hz / parts < LOWEST_FUNDAMENTAL_HZ:
@@ -63,7 +68,7 @@ def _part(samples: Samples, tracks: Tracks) -> float | None:
         line = lines(between, np.interp(between.time_s, tracks.time_s, phase))
         alone = (_power(between) > least) & (line.prominence > _ALONE)
         chance = np.sort(np.where(alone, line.chance, 1.0))
-        if chance[0] < _SURE or chance[1] < _LIKELY:
+        if chance[0] < sure or chance[1] < _LIKELY:
             return 1.0 / parts
     return None
 

@@ -74,24 +74,29 @@ class _Frames:
 def find_spans(recording: Recording) -> tuple[Span, ...]:
     """Find the steady tones of a recording, in order; where there is none, the breath alone.
 
-    Edges are as coarse as half a frame (23 ms): the measurement of the tone itself refines them.
+    Edges are as coarse as half a frame (23 ms): the measurement of the tone itself refines them. Where no
+    tone is found, frames of twice the length are asked, which hear a low tone deeper in the noise.
     """
-    frames = _analyse(recording)
+    frames = _analyse(recording, FRAME_S)
+    return _tones(frames) or _tones(_analyse(recording, 2.0 * FRAME_S)) or _breath(frames)
+
+
+def _tones(frames: "_Frames") -> tuple[Span, ...]:
+    """Return the tones of analysed frames, without what is too short or only the room's."""
     stretches = _joined(frames, _stretches(_without_faint(frames.path, frames.level_db)))
     spans = [_span(frames, first, last) for first, last in stretches]
-    shortest = SHORTEST_TONE_S * recording.rate_hz
-    tones = _foreground([span for span in spans if span.stop - span.start >= shortest])
-    return tuple(tones) or _breath(frames)
+    shortest = SHORTEST_TONE_S * frames.rate_hz
+    return tuple(_foreground([span for span in spans if span.stop - span.start >= shortest]))
 
 
-def frame_length(rate_hz: int) -> int:
-    """Return the frame's length in samples: the power of two nearest to 46 ms."""
-    return int(2 ** round(np.log2(FRAME_S * rate_hz)))
+def frame_length(rate_hz: int, seconds: float = FRAME_S) -> int:
+    """Return the frame's length in samples: the power of two nearest to the time."""
+    return int(2 ** round(np.log2(seconds * rate_hz)))
 
 
-def _analyse(recording: Recording) -> _Frames:
+def _analyse(recording: Recording, frame_s: float) -> _Frames:
     """Pass over the recording once, block by block, and keep two numbers a frame."""
-    length = frame_length(recording.rate_hz)
+    length = frame_length(recording.rate_hz, frame_s)
     hop = length // 2
     combs = _combs(recording.rate_hz, length)
     score = np.zeros(combs.matrix.shape[1] + 1, np.float32)
