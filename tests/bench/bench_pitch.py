@@ -204,10 +204,13 @@ def _ratio_cell(timbre: str, snr_db: float, colour: str, cases: int) -> str:
     for _ in range(cases):
         case = _random_case(rng, timbre=timbre, snr_db=snr_db, colour=colour)
         pitch = _estimated(case.made.samples, case.frequency_hz * 2.0 ** (rng.uniform(-15, 15) / 1200.0))
-        errors.append(cents(pitch.frequency_hz / case.frequency_hz))
-        over.append(errors[-1] / case.bound_cents)
-        covered += abs(errors[-1]) < 2.0 * pitch.uncertainty_cents
-    return f"{_rms(over):.2f} · {np.mean(errors):+.3f} · {100 * covered / cases:.0f} %"
+        error = cents(pitch.frequency_hz / case.frequency_hz)
+        if abs(error) < GROSS_CENTS:
+            errors.append(error)
+            over.append(error / case.bound_cents)
+            covered += abs(error) < 2.0 * pitch.uncertainty_cents
+    gross = f" · {cases - len(errors)} gross" if len(errors) < cases else ""
+    return f"{_rms(over):.2f} · {np.mean(errors):+.3f} · {100 * covered / len(errors):.0f} %{gross}"
 
 
 def _estimated(samples: Samples, coarse_hz: float) -> Pitch:
