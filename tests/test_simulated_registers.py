@@ -14,11 +14,13 @@ from tempfile import TemporaryDirectory
 
 import pytest
 import soundfile
-from builds import play, random_build, usual_takes
+from builds import Plan, play, random_build, usual_takes
 from simulation import SimulatedTone
 
+from fluteprobe import hear
 from fluteprobe.flute.fingering import Fingering
 from fluteprobe.flute.register import Register, RegisterCall, Sounding, register_alone, registers_of
+from fluteprobe.flute.tube import resonances
 from fluteprobe.sound.recording import open_recording
 from fluteprobe.sound.tone import Tone, read_tones
 
@@ -121,3 +123,25 @@ def test_probabilities_mean_what_they_say(judged: list[Judged]) -> None:
             if max(call.probability.values()) >= 0.9
         ]
         assert sum(sure) / len(sure) >= 0.95
+
+
+def test_the_top_hole_vented_and_open_speak_about_and_above_the_octave(tmp_path: Path) -> None:
+    """Common practice, no source: leaking the top hole doubles the frequency; opening it lies above that."""
+    above_octave: dict[str, list[float]] = {"v": [], "o": []}
+    for seed in range(230, 238):
+        build = random_build(seed)
+        holes = len(build.tube.holes_mm)
+        closed_hz = resonances(build.tube, [Fingering("x" * holes)], 1).frequency_hz[0, 0]
+        for state, found in above_octave.items():
+            plan = Plan(fingering=Fingering(state + "x" * (holes - 1)), breath="over", aims=(2,))
+            made = play(build, plan, seed)
+            path = tmp_path / f"{seed}{state}.wav"
+            soundfile.write(path, 0.5 * made.samples / abs(made.samples).max(), made.rate_hz)
+            (reading,) = hear(path)
+            assert reading.call.register in {made.truth[0].register, None}
+            if made.truth[0].register == 2 and reading.tone.frequency_hz is not None:
+                found.append(1200.0 * log2(reading.tone.frequency_hz / closed_hz) - 1200.0)
+    assert min(len(above_octave["v"]), len(above_octave["o"])) >= 5
+    assert max(map(abs, above_octave["v"])) < 120.0
+    assert min(above_octave["o"]) > 0.0
+    assert sum(above_octave["o"]) / len(above_octave["o"]) > sum(above_octave["v"]) / len(above_octave["v"])

@@ -17,7 +17,7 @@ from fluteprobe.flute.evidence import REGISTERS, Clue, Register
 
 Bump = tuple[float, float]
 
-BELOW = (0.22, 0.9)
+BELOW = (0.22, 0.93)
 
 _CLEAR_DB = 5.0
 _OWN = 0.02
@@ -30,8 +30,8 @@ _NONE_AT_ALL: dict[Register, float] = {1: 0.3, 2: 0.15, 3: 0.15}
 # The lower resonances: register -> (share seen, ratios from and to, prominence and its spread in dB).
 _LOWER: dict[Register, tuple[tuple[float, float, float, float, float], ...]] = {
     1: (),
-    2: ((0.97, 0.45, 0.8, 12.0, 4.0),),
-    3: ((0.9, 0.28, 0.56, 8.0, 3.5), (0.85, 0.56, 0.88, 12.0, 5.0)),
+    2: ((0.97, 0.45, 0.88, 12.0, 4.0),),
+    3: ((0.9, 0.28, 0.56, 8.0, 3.5), (0.88, 0.56, 0.92, 12.0, 5.0)),
 }
 _SOFT = 0.03
 _FLOOR = 1e-4

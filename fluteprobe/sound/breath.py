@@ -31,6 +31,7 @@ PERIODS = 44
 LOWEST_RATIO = 0.2
 HIGHEST_RATIO = 3.6
 HIGHEST_LINE = 4.0  # of the spectrum that is looked at, in multiples of the fundamental
+PARTIAL_CORE = 0.065
 PARTIAL_REACH = 0.1
 CHANCE = 0.01
 
@@ -119,14 +120,14 @@ def breath_resonances(
     Parameters
     ----------
     spectrum, frequency_hz
-        The noise of a tone, and the tone's fundamental; nothing is said about the noise within a tenth of
-        the fundamental to either side of a partial's place.
+        The noise of a tone, and the tone's fundamental; nothing is said about the noise right beside a
+        partial's place.
     room
         The noise of the room on the same lines, when nobody plays.
     """
     ratio = np.arange(len(spectrum.power)) * spectrum.line_hz / frequency_hz
     usable = (ratio > LOWEST_RATIO) & (ratio < HIGHEST_RATIO) & (ratio * frequency_hz > _LOWEST_HZ)
-    usable &= np.abs(ratio - np.round(ratio)) > PARTIAL_REACH
+    usable &= np.abs(ratio - np.round(ratio)) > PARTIAL_CORE
     prominence, chance = _prominence(spectrum, usable)
     noisy = spectrum.variation > _STEADY_CV
     if room is not None:
