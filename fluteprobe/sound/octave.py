@@ -21,13 +21,14 @@ _ORDERS = 9
 # Windows of so many periods put the places between the multiples on zeros of their neighbours.
 _PARTS = {2: (8, np.array([0.5, 1.5, 2.5])), 3: (9, np.array([1 / 3, 2 / 3, 4 / 3, 5 / 3]))}
 _LEAST_DB = -50.0
-_ALONE = 6.0
+_ALONE = 8.0
 _GATHERED = 0.5
 _SAME_DB = 8.0
 _SURE = 1e-6
 # A breath resonance of quality 50 is as narrow as the lines of so many cycles: fewer need a surer line.
 _TELLING_CYCLES = 400.0
 _SURE_OF_FEW = 1e-12
+_SURE_OF_TWO = 1e-5
 _LIKELY = 1e-3
 
 
@@ -68,7 +69,7 @@ def _part(samples: Samples, tracks: Tracks) -> float | None:
         line = lines(between, np.interp(between.time_s, tracks.time_s, phase))
         alone = (_power(between) > least) & (line.prominence > _ALONE)
         chance = np.sort(np.where(alone, line.chance, 1.0))
-        if chance[0] < sure or chance[1] < _LIKELY:
+        if chance[0] < sure or chance[1] < _SURE_OF_TWO:
             return 1.0 / parts
     return None
 
@@ -77,7 +78,8 @@ def _multiple(tracks: Tracks) -> float | None:
     """Return 2 or 3 if only those multiples of the pitch are lines, steady or swinging in loudness."""
     line, power = lines(tracks, guide_phase(tracks)), _power(tracks)
     loud = power > power.max() * 10.0 ** (_LEAST_DB / 10.0)
-    steady: NDArray[np.bool_] = loud & ((line.chance < _LIKELY) | (line.gathered > _GATHERED))
+    swinging = (line.gathered > _GATHERED) & (line.prominence > 1.0)
+    steady: NDArray[np.bool_] = loud & ((line.chance < _LIKELY) | swinging)
     for times in (2, 3):
         multiples = tracks.orders % times == 0
         if np.any(steady & multiples) and not np.any(steady & ~multiples):
