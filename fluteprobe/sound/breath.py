@@ -96,18 +96,17 @@ def noise_spectrum(
     hop = length // 2
     if length < _SHORTEST or len(residual) < length:
         return None
-    starts = range(0, len(residual) - length + 1, hop)
-    window = np.hanning(length + 2)[1:-1].astype(np.float32)
-    segments = np.stack([residual[start : start + length] for start in starts]) * window
     last = length if highest_hz is None else int(highest_hz * length / rate_hz) + 1
-    lines = np.fft.rfft(segments, axis=1)[:, :last]
+    window = np.hanning(length + 2)[1:-1].astype(np.float32)
+    starts = range(0, len(residual) - length + 1, hop)
+    lines = np.stack([np.fft.rfft(residual[start : start + length] * window)[:last] for start in starts])
     power = np.square(lines.real) + np.square(lines.imag)
     mean = power.mean(axis=0, dtype=np.float64)
     return NoiseSpectrum(
         line_hz=rate_hz / length,
         power=mean,
         variation=power.std(axis=0, dtype=np.float64) / np.maximum(mean, 1e-30),
-        segments=len(segments),
+        segments=len(starts),
         length=length,
     )
 

@@ -16,7 +16,7 @@ from fluteprobe.sound.pitch import guide_phase, refine
 
 LOWEST_FUNDAMENTAL_HZ = 85.0
 
-_LONGEST_S = 1.5
+_LONGEST_S = 1.2
 _ORDERS = 9
 # Windows of so many periods put the places between the multiples on zeros of their neighbours.
 _PARTS = {2: (8, np.array([0.5, 1.5, 2.5])), 3: (9, np.array([1 / 3, 2 / 3, 4 / 3, 5 / 3]))}
@@ -38,7 +38,7 @@ def settle_octave(samples: Samples, rate_hz: int, frequency_hz: float) -> float:
     Parameters
     ----------
     samples
-        The steady tone, shape (samples,); its middle second and a half is asked.
+        The steady tone, shape (samples,); its middle 1.2 s is asked.
     frequency_hz
         The coarse pitch, within about half a semitone of the fundamental or of a low multiple or part.
     """

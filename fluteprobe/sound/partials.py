@@ -21,7 +21,7 @@ Samples = NDArray[np.float32]
 
 PERIODS = 5
 HIGHEST_PARTIAL_HZ = 20000.0
-MOST_PARTIALS = 20
+MOST_PARTIALS = 14
 
 # Noise of neighbouring half-overlapped Hann frames correlates by 1/6 (sum of w(n) w(n + hop) over sum of w²).
 OVERLAP_CORRELATION = 1.0 / 6.0

@@ -306,13 +306,19 @@ def _movement_without_vibrato(centred: Floats, deviation: Floats) -> tuple[float
 
 def _vibrato_rate(centred: Floats, deviation: Floats, span_s: float) -> float | None:
     """Return the angular rate (rad/s) of the strongest swing in the vibrato range, if two cycles fit."""
-    rates = np.arange(max(_VIBRATO_HZ[0], 2.0 / span_s), _VIBRATO_HZ[1], 0.05 / max(span_s, 0.5))
+    step = 0.15 / max(span_s, 0.5)
+    rates = np.arange(max(_VIBRATO_HZ[0], 2.0 / span_s), _VIBRATO_HZ[1], step)
     if not len(rates) or np.std(deviation) < 1.0:
         return None
     _, _, level = _movement_without_vibrato(centred, deviation)
     taper = np.cos(np.pi * centred / (span_s + 1e-9)) ** 2
     power = np.abs(np.exp(-2j * np.pi * rates[:, None] * centred) @ (taper * level))
-    return float(2.0 * np.pi * rates[int(np.argmax(power))])
+    best = int(np.argmax(power))
+    shift = 0.0
+    if 0 < best < len(power) - 1:
+        lower, middle, upper = power[best - 1 : best + 2]
+        shift = 0.5 * float((lower - upper) / min(lower - 2.0 * middle + upper, -1e-12))
+    return float(2.0 * np.pi * (rates[best] + shift * step))
 
 
 def _uncertainty_of_mean(slow: Floats) -> tuple[float, int]:

@@ -42,6 +42,7 @@ _UNPITCHED_SCORE = 0.3
 _LEAP_COST = 0.8
 _REACH = 3
 _BLOCK_FRAMES = 2048
+_AT_ONCE = 16
 _BACKGROUND_DB = 32.0
 _HUM_DB = 15.0
 _HUM_HZ = (50.0, 60.0)
@@ -102,9 +103,9 @@ def _analyse(recording: Recording, frame_s: float) -> _Frames:
     score = np.zeros(combs.matrix.shape[1] + 1, np.float32)
     levels, paths = [], []
     for block in _whole_frames(recording, length):
-        spectra = _power_spectra(block, hop)[:, combs.first : combs.last]
-        levels.append(spectra.sum(axis=1))
-        path, score = _best_path(_salience(spectra, combs), score)
+        level, salience = _heard(block.reshape(-1, hop), combs)
+        levels.append(level)
+        path, score = _best_path(salience, score)
         paths.append(path)
     power = np.concatenate(levels) * (32.0 / 3.0 / length**2)
     return _Frames(
@@ -129,11 +130,22 @@ def _whole_frames(recording: Recording, length: int) -> Iterator[Floats]:
     yield np.concatenate([carry, np.zeros(length - len(carry), np.float32)])
 
 
-def _power_spectra(samples: Floats, hop: int) -> Floats:
-    """Return the power spectra of Hann-windowed frames with half overlap, shape (frames, hop + 1)."""
-    rows = samples.reshape(-1, hop)
-    window = np.hanning(2 * hop + 1)[:-1].astype(np.float32)
-    spectra = np.fft.rfft(np.concatenate([rows[:-1], rows[1:]], axis=1) * window, axis=1)
+def _heard(rows: Floats, combs: "_Combs") -> tuple[Floats, Floats]:
+    """Return the power (frames,) and the salience (frames, grid) of half-overlapping frames, two rows each.
+
+    A few frames at a time, so that what is in between stays in the processor's own memory.
+    """
+    parts = [rows[first : first + _AT_ONCE + 1] for first in range(0, len(rows) - 1, _AT_ONCE)]
+    spectra = [_power_spectra(part, combs) for part in parts]
+    power = np.concatenate([part.sum(axis=1) for part in spectra])
+    return power, np.concatenate([_salience(part, combs) for part in spectra])
+
+
+def _power_spectra(rows: Floats, combs: "_Combs") -> Floats:
+    """Return the power spectra of Hann-windowed frames of two rows each, at the combs' bins."""
+    window = np.hanning(2 * rows.shape[1] + 1)[:-1].astype(np.float32)
+    frames = np.concatenate([rows[:-1], rows[1:]], axis=1) * window
+    spectra = np.fft.rfft(frames, axis=1)[:, combs.first : combs.last]
     return np.square(spectra.real) + np.square(spectra.imag)
 
 
