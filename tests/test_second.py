@@ -202,3 +202,15 @@ def test_where_librosa_does_not_run_measuring_goes_on(session: Path, monkeypatch
     assert "xxxxxx" in told.stdout
     with pytest.raises(SecondOpinionError, match=r"^librosa cannot be asked here \("):
         second_opinion(np.zeros(44100, np.float32), RATE_HZ, 440.0)
+
+
+def test_hear_says_it_too(session: Path, tmp_path: Path) -> None:
+    take = str(session / "takes" / "xxxxxx.flac")
+    told = CliRunner().invoke(main, ["hear", take, "--second-opinion", "--out", str(tmp_path / "pages")])
+    assert told.exit_code == 0, told.output
+    assert "Second opinion: pYIN agrees on 1 of 1 tones" in told.stdout
+    told = CliRunner().invoke(
+        main, ["hear", take, "--second-opinion", "--json", "--out", str(tmp_path / "pages")]
+    )
+    (tone,) = json.loads(told.stdout)["tones"]
+    assert tone["second_opinion"]["differs"] is False

@@ -8,15 +8,16 @@ from typing import TYPE_CHECKING
 import click
 
 from fluteprobe.cli.options import A4_HZ, FOLDER, json_option
+from fluteprobe.cli.second import SLOW, Opinions
 
 if TYPE_CHECKING:
     from fluteprobe.session import Problem
     from fluteprobe.sound.recording import Recording
+    from fluteprobe.sound.second import SecondOpinion
     from fluteprobe.sound.view import TakeView
     from fluteprobe.survey import Reading
 
 PAGES_FOLDER = Path("reports", "takes")
-SLOW = "Second opinion: librosa looks at every tone too; the first run compiles, about 15 s"
 
 
 @click.command(short_help="Say what sounds in single recordings.")
@@ -27,7 +28,7 @@ SLOW = "Second opinion: librosa looks at every tone too; the first run compiles,
     "--second-opinion",
     "second",
     is_flag=True,
-    help="The page with pYIN's reading and librosa's constant-Q picture beside ours; takes a while.",
+    help="Have pYIN read every tone too, say where it differs, and show it on the page.",
 )
 @click.option(
     "--paper",
@@ -62,17 +63,23 @@ def hear(  # noqa: PLR0913, PLR0917  (click passes every option by name)
       fluteprobe hear heron/takes/oxxxxx.wav
     """  # noqa: D301  (click reads the \b)
     from fluteprobe.cli import screen
+    from fluteprobe.cli.second import told, with_opinions
     from fluteprobe.results import heard_json, json_text
 
     heard, problems = _heard(files, a4_hz)
     readings = [reading for _, mine in heard for reading in mine]
+    opinions: Opinions = [None] * len(readings)
+    if page or second:
+        opinions, undrawn = _draw_pages(heard, out or PAGES_FOLDER, paper, second)
+        problems += undrawn
     if as_json:
-        click.echo(json_text(heard_json(readings, problems, a4_hz=a4_hz)), nl=False)
+        values = heard_json(readings, problems, a4_hz=a4_hz)
+        click.echo(json_text(with_opinions(values, opinions) if second else values), nl=False)
     else:
         screen.say(screen.heard_table(readings, a4_hz))
+        if any(opinions):
+            screen.say("\n" + told(readings, opinions))
         screen.tell_cautions(readings)
-    if page or second:
-        problems += _draw_pages(heard, out or PAGES_FOLDER, paper, second)
     screen.tell_problems(problems)
     ctx.exit(1 if problems else 0)
 
@@ -101,29 +108,33 @@ def _heard(
 
 def _draw_pages(
     heard: Sequence[tuple[Path, tuple["Reading", ...]]], folder: Path, paper: str, second: bool
-) -> list["Problem"]:
-    """Draw a page for each recording, named after it; one that has changed since becomes a problem."""
+) -> tuple[Opinions, list["Problem"]]:
+    """Draw a page for each recording, named after it; one that has changed since becomes a problem.
+
+    Also returns the second opinion on each reading in turn, None where there is none.
+    """
     from fluteprobe.cli import screen
     from fluteprobe.pages.take import write_take
     from fluteprobe.session import Problem
     from fluteprobe.sound.recording import RecordingError, open_recording
 
+    opinions: list[SecondOpinion | None] = []
     problems: list[Problem] = []
     taken: set[str] = set()
     if second:
-        screen.say(
-            "Second opinion: librosa looks at every tone too; the first run compiles, about 15 s", err=True
-        )
+        screen.say(SLOW, err=True)
     folder.mkdir(parents=True, exist_ok=True)
     for path, readings in heard:
         try:
             view = _looked_at(open_recording(path), readings, second)
         except RecordingError as error:
             problems.append(Problem(take=readings[0].take, message=str(error)))
+            opinions += [None] * len(readings)
             continue
+        opinions += [part.second.opinion if part.second else None for part in view.tones]
         target = folder / f"{_page_name(path, taken)}.pdf"
         screen.tell_written(write_take(view, readings, target, paper=paper))
-    return problems
+    return opinions, problems
 
 
 def _looked_at(recording: "Recording", readings: Sequence["Reading"], second: bool) -> "TakeView":

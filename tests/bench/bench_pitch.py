@@ -158,7 +158,7 @@ def _summary(everything: dict[str, list[Heard]]) -> str:
                 f"{sum(each.taken_s for each in heard) / sum(each.tone_s for each in heard):.4f}",
             ]
         )
-    titles = ["all cases", "tones", "rms", "bias", "median |error| / bound", "gross", "octave", "missed",
+    titles = ["all cases", "tones", "rms", "bias", "median error / bound", "gross", "octave", "missed",
               "in ±2u", "real-time factor"]  # fmt: skip
     return table(titles, rows)
 
