@@ -16,6 +16,7 @@ from fluteprobe.sound.partials import (
     without_partials,
 )
 from fluteprobe.sound.pitch import Pitch, measure_pitch, phase_track
+from fluteprobe.sound.quantile import median, quantile
 
 Floats = NDArray[np.float64]
 
@@ -61,5 +62,5 @@ def take_apart(samples: Samples, rate_hz: int, frequency_hz: float) -> Measured:
         orders=tracks.orders,
         amplitude=amplitude,
         residual=without_partials(samples, tracks, pitch.curve.phase, amplitude > 0.0),
-        evenness=float(np.percentile(level, 10.0) / (np.median(level) + 1e-20)),
+        evenness=quantile(level, 0.1) / (median(level) + 1e-20),
     )

@@ -19,6 +19,7 @@ from itertools import pairwise
 import numpy as np
 from numpy.typing import NDArray
 
+from fluteprobe.sound.quantile import median, quantile
 from fluteprobe.sound.recording import Recording
 
 Floats = NDArray[np.float32]
@@ -32,6 +33,7 @@ _STEP_CENTS = 20.0
 _COMB_ORDERS = 8
 _COMB_FALL = 0.8
 _COMB_LIMIT_HZ = 9000.0
+_ENOUGH_HZ = 20000.0  # of sample rate: higher ones are thinned by averaging
 _BAND_EDGES_HZ = (350.0, 750.0, 1500.0, 3000.0, 5000.0)
 _FLOOR_SHARE = 0.3
 _CLEARANCE_DB = 12.0
@@ -97,20 +99,22 @@ def frame_length(rate_hz: int, seconds: float = FRAME_S) -> int:
 
 def _analyse(recording: Recording, frame_s: float) -> _Frames:
     """Pass over the recording once, block by block, and keep two numbers a frame."""
-    length = frame_length(recording.rate_hz, frame_s)
+    step = max(int(recording.rate_hz / _ENOUGH_HZ), 1)
+    length = frame_length(recording.rate_hz // step, frame_s)
     hop = length // 2
-    combs = _combs(recording.rate_hz, length)
+    combs = _combs(recording.rate_hz // step, length)
     score = np.zeros(combs.matrix.shape[1] + 1, np.float32)
     levels, paths = [], []
-    for block in _whole_frames(recording, length):
-        level, salience = _heard(block.reshape(-1, hop), combs)
+    for block in _whole_frames(recording, length * step):
+        thinned = block.reshape(-1, step).mean(axis=1)
+        level, salience = _heard(thinned.reshape(-1, hop), combs)
         levels.append(level)
         path, score = _best_path(salience, score)
         paths.append(path)
     power = np.concatenate(levels) * (32.0 / 3.0 / length**2)
     return _Frames(
         rate_hz=recording.rate_hz,
-        hop=hop,
+        hop=hop * step,
         samples=recording.frames,
         level_db=(10.0 * np.log10(power + 1e-20)).astype(np.float32),
         path=np.concatenate(paths),
@@ -270,7 +274,7 @@ def _without_faint(path: NDArray[np.int16], level_db: Floats) -> NDArray[np.int1
     kept = path.copy()
     for first, last in _stretches(path):
         level = level_db[first : last + 1]
-        kept[first : last + 1][level < np.percentile(level, 80.0) - _FAINT_DB] = _NO_PITCH
+        kept[first : last + 1][level < quantile(level, 0.8) - _FAINT_DB] = _NO_PITCH
     return kept
 
 
@@ -295,8 +299,8 @@ def _span(frames: _Frames, first: int, last: int) -> Span:
     return Span(
         start=max(first * frames.hop - frames.hop // 2, 0),
         stop=min(last * frames.hop + frames.hop // 2, frames.samples),
-        frequency_hz=float(grid[int(np.median(pitched[pitched >= 0]))]),
-        level_db=float(np.median(frames.level_db[first : last + 1])),
+        frequency_hz=float(grid[int(median(pitched[pitched >= 0]))]),
+        level_db=median(frames.level_db[first : last + 1]),
     )
 
 
@@ -319,8 +323,8 @@ def _is_hum(span: Span) -> bool:
 
 def _breath(frames: _Frames) -> tuple[Span, ...]:
     """Return the stretch where breath stands above the room's own noise, or else the whole recording."""
-    quiet, loud = np.percentile(frames.level_db, [5.0, 90.0])
-    whole = Span(start=0, stop=frames.samples, frequency_hz=None, level_db=float(loud))
+    quiet, loud = quantile(frames.level_db, 0.05), quantile(frames.level_db, 0.9)
+    whole = Span(start=0, stop=frames.samples, frequency_hz=None, level_db=loud)
     if loud - quiet < 2 * _BREATH_DB:
         return (whole,)
     blown = np.flatnonzero(frames.level_db > loud - _BREATH_DB)

@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from fluteprobe.sound.octave import is_one_tone, settle_octave
 from fluteprobe.sound.partials import Tracks, demodulate, orders_below_nyquist
 from fluteprobe.sound.pitch import CENTS, GUIDES, guide_phase, refined
+from fluteprobe.sound.quantile import median
 from fluteprobe.sound.recording import Recording
 from fluteprobe.sound.spans import Span
 
@@ -127,11 +128,11 @@ def _edges(guide: Tracks, inside: slice) -> tuple[int, int, float | None]:
     near = max(round(_EDGE_REFERENCE_S / guide.hop_s), 1)
     core = level[inside] if len(level[inside]) else level
     risen = core[:near] if len(core) < 2 * near else core[near // 4 : near + near // 4]
-    low = _last_below(level[: inside.start + near], float(np.median(risen)) - _EDGE_DB)
+    low = _last_below(level[: inside.start + near], median(risen) - _EDGE_DB)
     fallen = level[max(inside.stop - near, 0) :][::-1]
     end = core[-near:] if len(core) < 2 * near else core[-near - near // 4 : -(near // 4) or None]
-    high = len(level) - 1 - _last_below(fallen, float(np.median(end)) - _EDGE_DB)
-    quiet = _last_below(level[:low], float(np.median(risen)) - _ATTACK_DB)
+    high = len(level) - 1 - _last_below(fallen, median(end) - _EDGE_DB)
+    quiet = _last_below(level[:low], median(risen) - _ATTACK_DB)
     attack = (low - quiet) * guide.hop_s * 1000.0 if quiet else None
     low, high = _at_rest(guide, low, high)
     return low, high, attack
@@ -157,8 +158,8 @@ def _at_rest(guide: Tracks, low: int, high: int) -> tuple[int, int]:
     for _ in range(_NARROWINGS):
         if last - first < _FEWEST_STEPS:
             break
-        away = np.abs(cents - np.median(cents[first:last]))
-        limit = max(_GLIDE_CENTS, _GLIDE_RATIO * float(np.median(away[first:last])))
+        away = np.abs(cents - median(cents[first:last]))
+        limit = max(_GLIDE_CENTS, _GLIDE_RATIO * median(away[first:last]))
         at_rest = first + np.flatnonzero(away[first:last] < limit)
         first, last = int(at_rest[0]), int(at_rest[-1]) + 1
     return (low + first * step if first else low), (low + last * step if last < len(cents) else high)
