@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import click
 
-from fluteprobe.cli.options import A4_HZ, FOLDER, json_option
+from fluteprobe.cli.options import A4_HZ, FOLDER, json_option, paper_option
 from fluteprobe.cli.second import SLOW, Opinions
 
 if TYPE_CHECKING:
@@ -30,12 +30,7 @@ PAGES_FOLDER = Path("reports", "takes")
     is_flag=True,
     help="Have pYIN read every tone too, say where it differs, and show it on the page.",
 )
-@click.option(
-    "--paper",
-    type=click.Choice(("a4", "letter"), case_sensitive=False),
-    default="a4",
-    help="What a page is printed on.  [default: a4]",
-)
+@paper_option("a page")
 @click.option(
     "--out", type=FOLDER, metavar="DIR", help=f"Where pages are written.  [default: {PAGES_FOLDER}]"
 )

@@ -27,6 +27,16 @@ def out_option(command: Command) -> Command:
     )(command)
 
 
+def paper_option(what: str) -> Callable[[Command], Command]:
+    """Add `--paper` for what is printed on a whole sheet, named by `what`."""
+    return click.option(
+        "--paper",
+        type=click.Choice(("a4", "letter"), case_sensitive=False),
+        default="a4",
+        help=f"What {what} is printed on.  [default: a4]",
+    )
+
+
 def reports_folder(session: Path, out: Path | None) -> Path:
     """Return where a session's files go: what was asked for, or reports/ under the current folder."""
     return out if out is not None else Path("reports", session.resolve().name or "flute")

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from fluteprobe.cli.options import FOLDER, json_option, out_option, reports_folder
+from fluteprobe.cli.options import FOLDER, json_option, out_option, paper_option, reports_folder
 from fluteprobe.flute.plan import EDITIONS
 
 if TYPE_CHECKING:
@@ -14,7 +14,6 @@ if TYPE_CHECKING:
     from fluteprobe.session import FluteFacts
 
 FORMATS = ("pdf", "png", "svg")
-PAPERS = ("a4", "letter")
 SHEET_SCHEMA = "fluteprobe/sheet/1"
 
 
@@ -33,12 +32,7 @@ SHEET_SCHEMA = "fluteprobe/sheet/1"
     default="pdf",
     help="Kind of file.  [default: pdf]",
 )
-@click.option(
-    "--paper",
-    type=click.Choice(PAPERS, case_sensitive=False),
-    default="a4",
-    help="What it is printed on.  [default: a4]",
-)
+@paper_option("it")
 @out_option
 @json_option
 def sheet(  # noqa: PLR0913, PLR0917  (click passes every option by name)

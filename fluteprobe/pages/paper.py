@@ -41,7 +41,6 @@ MARGIN_MM = 13.0
 CARD_MARGIN_MM = 5.0
 GUTTER_MM = 19.0  # left of the drawings, where their lines are named
 CARD_GUTTER_MM = 8.7
-LEFT_MM = MARGIN_MM + GUTTER_MM
 SMALLEST_TYPE_PT = 7.0
 PNG_DOTS_PER_INCH = 200
 LANGUAGE = "en"

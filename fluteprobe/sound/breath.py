@@ -22,6 +22,7 @@ from math import erfc, log10, sqrt
 import numpy as np
 from numpy.typing import NDArray
 
+from fluteprobe.sound.hum import nearest_hum_hz
 from fluteprobe.sound.partials import quick_length
 
 Floats = NDArray[np.float64]
@@ -51,8 +52,6 @@ _LINE_SHARE = 1.0 / 1.5
 _STEADY_CV = 0.35
 _ROOM_MARGIN = 2.0
 _STANDING_OUT = 30.0
-_MAINS_HZ = (50.0, 60.0)
-_HIGHEST_HUM_HZ = 400.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -168,10 +167,7 @@ def steady_lines(spectrum: NoiseSpectrum, frequency_hz: float) -> list[tuple[flo
 
 
 def _is_hum(frequency_hz: float, line_hz: float) -> bool:
-    multiples = [round(frequency_hz / mains) * mains for mains in _MAINS_HZ]
-    return frequency_hz < _HIGHEST_HUM_HZ and any(
-        abs(frequency_hz - hum) < 0.6 * line_hz for hum in multiples
-    )
+    return any(abs(frequency_hz - hum) < 0.6 * line_hz for hum in nearest_hum_hz(frequency_hz))
 
 
 def _under_partials(

@@ -19,6 +19,7 @@ from itertools import pairwise
 import numpy as np
 from numpy.typing import NDArray
 
+from fluteprobe.sound.hum import nearest_hum_hz
 from fluteprobe.sound.quantile import median, quantile
 from fluteprobe.sound.recording import Recording
 
@@ -47,7 +48,7 @@ _BLOCK_FRAMES = 2048
 _AT_ONCE = 16
 _BACKGROUND_DB = 32.0
 _HUM_DB = 15.0
-_HUM_HZ = (50.0, 60.0)
+_HUM_SHARE = 0.012
 _BREATH_DB = 6.0
 _FAINT_DB = 15.0
 _NO_PITCH = -1
@@ -209,12 +210,12 @@ def _grid_hz(rate_hz: int) -> NDArray[np.float64]:
 def _salience(spectra: Floats, combs: _Combs) -> Floats:
     """Return how far each comb's teeth stand out of the noise floor, in 80 dB, shape (frames, grid)."""
     level = 10.0 * np.log10(spectra + 1e-20)
-    lows = [_quantile(level[:, low - combs.first : high - combs.first]) for low, high in combs.bands]
+    lows = [_low_level(level[:, low - combs.first : high - combs.first]) for low, high in combs.bands]
     level -= np.stack(lows, axis=1) @ combs.spread + _CLEARANCE_DB
     return np.asarray(np.clip(level, 0.0, _MOST_DB) @ combs.matrix) * np.float32(1.0 / _UNIT_DB)
 
 
-def _quantile(level: Floats) -> Floats:
+def _low_level(level: Floats) -> Floats:
     """Return the value that 30 % of each row stays under: low enough to miss the partials."""
     place = int(_FLOOR_SHARE * level.shape[1])
     return np.asarray(np.partition(level, place, axis=1)[:, place])
@@ -317,8 +318,7 @@ def _foreground(spans: list[Span]) -> list[Span]:
 def _is_hum(span: Span) -> bool:
     if span.frequency_hz is None:
         return False
-    multiples = [max(round(span.frequency_hz / mains), 1) * mains for mains in _HUM_HZ]
-    return span.frequency_hz < 400.0 and any(abs(span.frequency_hz / hum - 1.0) < 0.012 for hum in multiples)
+    return any(abs(span.frequency_hz / hum - 1.0) < _HUM_SHARE for hum in nearest_hum_hz(span.frequency_hz))
 
 
 def _breath(frames: _Frames) -> tuple[Span, ...]:

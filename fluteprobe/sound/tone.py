@@ -140,10 +140,8 @@ def _tone(samples: Samples, rate_hz: int, steady: Steady, measured: Measured, ro
     if not measured.sounds:
         return _breath_between(start_s, end_s)
     pitch = measured.pitch
-    length = segment_length(len(samples), rate_hz, pitch.frequency_hz)
-    highest_hz = HIGHEST_LINE * pitch.frequency_hz
-    spectrum = noise_spectrum(measured.residual, rate_hz, length, highest_hz)
-    resonances = _resonances(spectrum, pitch.frequency_hz, room, rate_hz)
+    spectrum, pause = _noise(measured.residual, room, rate_hz, pitch.frequency_hz)
+    resonances = () if spectrum is None else breath_resonances(spectrum, pitch.frequency_hz, pause)
     partials = partials_of(pitch.frequency_hz, measured.orders, measured.amplitude)
     hnr = measured.harmonic_to_noise_db
     kind, words = _kind(measured, partials, spectrum, resonances)
@@ -163,15 +161,14 @@ def _tone(samples: Samples, rate_hz: int, steady: Steady, measured: Measured, ro
     )
 
 
-def _resonances(
-    spectrum: NoiseSpectrum | None, frequency_hz: float, room: Samples | None, rate_hz: int
-) -> tuple[BreathResonance, ...]:
-    """Find the breath resonances, those of the room left out where a pause lets it be heard."""
-    if spectrum is None:
-        return ()
+def _noise(
+    residual: Samples, room: Samples | None, rate_hz: int, frequency_hz: float
+) -> tuple[NoiseSpectrum | None, NoiseSpectrum | None]:
+    """Return the spectra of what a tone leaves and of the room in a pause, on the same lines."""
+    length = segment_length(len(residual), rate_hz, frequency_hz)
     highest_hz = HIGHEST_LINE * frequency_hz
-    pause = None if room is None else noise_spectrum(room, rate_hz, spectrum.length, highest_hz)
-    return breath_resonances(spectrum, frequency_hz, pause)
+    pause = None if room is None else noise_spectrum(room, rate_hz, length, highest_hz)
+    return noise_spectrum(residual, rate_hz, length, highest_hz), pause
 
 
 def _kind(
