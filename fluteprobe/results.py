@@ -115,7 +115,7 @@ def replace_file(path: Path, content: bytes) -> None:
     Raises
     ------
     OSError
-        If it cannot be written; a file that was there before is then untouched.
+        If it cannot be written, with the file's own name; what was there before is then untouched.
     """
     passing = path.with_name(f".{path.name}.{secrets.token_hex(4)}.tmp")
     try:
@@ -124,6 +124,8 @@ def replace_file(path: Path, content: bytes) -> None:
             file.flush()
             os.fsync(file.fileno())
         passing.replace(path)
+    except OSError as error:
+        raise OSError(error.errno, error.strerror, str(path)) from error
     finally:
         passing.unlink(missing_ok=True)
 

@@ -315,8 +315,9 @@ def test_a_write_that_fails_leaves_the_old_file_whole(
         raise OSError(28, "No space left on device")
 
     monkeypatch.setattr("os.fsync", full_disk)
-    with pytest.raises(OSError, match="No space left"):
+    with pytest.raises(OSError, match="No space left") as caught:
         replace_file(target, b"new")
+    assert caught.value.filename == str(target)
     assert target.read_bytes() == b"old"
     assert list(tmp_path.iterdir()) == [target]
 

@@ -5,13 +5,13 @@ sizes and line widths in points. Text is set on its baseline and never read as m
 matplotlib's settings outside `house_style()`; identical pages give identical bytes on the same versions.
 """
 
-import os
 import unicodedata
 from bisect import bisect_left
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass, replace
 from functools import cache
+from io import BytesIO
 from pathlib import Path as File
 from typing import Any, Literal
 
@@ -27,6 +27,7 @@ from matplotlib.textpath import text_to_path
 from matplotlib.transforms import Affine2D
 
 from fluteprobe.pages.language import pdf_in_language, svg_in_language
+from fluteprobe.results import replace_file
 
 MM_PER_INCH = 25.4
 MM_PER_POINT = MM_PER_INCH / 72.0
@@ -311,11 +312,11 @@ def _save_pdf(pages: Sequence[Figure], target: File, title: str, author: str | N
     facts: dict[str, Any] = {"Title": title, "Creator": "fluteprobe", "CreationDate": None}
     if author:
         facts["Author"] = author
-    with _put_whole(target) as draft:
-        with PdfPages(draft, metadata=facts) as book:
-            for page in pages:
-                book.savefig(page)
-        draft.write_bytes(pdf_in_language(draft.read_bytes(), LANGUAGE))
+    draft = BytesIO()
+    with PdfPages(draft, metadata=facts) as book:
+        for page in pages:
+            book.savefig(page)
+    replace_file(target, pdf_in_language(draft.getvalue(), LANGUAGE))
 
 
 def _save_picture(page: Figure, target: File, title: str, author: str | None, dots_per_inch: float) -> None:
@@ -324,20 +325,10 @@ def _save_picture(page: Figure, target: File, title: str, author: str | None, do
     facts: dict[str, Any] = {"Title": title, creator: "fluteprobe"} | ({by: author} if author else {})
     if kind == "svg":
         facts["Date"] = None
-    with _put_whole(target) as draft:
-        page.savefig(draft, format=kind, dpi=dots_per_inch if kind == "png" else 72, metadata=facts)
-        if kind == "svg":
-            draft.write_bytes(svg_in_language(draft.read_bytes(), LANGUAGE, title))
-
-
-@contextmanager
-def _put_whole(target: File) -> Iterator[File]:
-    draft = target.with_name(f".{target.name}.{os.getpid()}.part")
-    try:
-        yield draft
-        draft.replace(target)
-    finally:
-        draft.unlink(missing_ok=True)
+    draft = BytesIO()
+    page.savefig(draft, format=kind, dpi=dots_per_inch if kind == "png" else 72, metadata=facts)
+    drawn = draft.getvalue()
+    replace_file(target, svg_in_language(drawn, LANGUAGE, title) if kind == "svg" else drawn)
 
 
 def _numbered(target: File, number: int) -> File:
