@@ -82,6 +82,7 @@ def test_lossless_formats_keep_every_sample_and_the_pitch(tmp_path: Path, kind: 
     recording = open_recording(written(tmp_path / "take", tone(), format=kind, subtype=subtype))
     assert (recording.rate_hz, recording.frames, recording.channels) == (48000, 48000, 1)
     assert recording.duration_s == 1.0
+    assert (recording.codec, recording.lossy) == (subtype, subtype in {"ULAW", "ALAW"})
     assert whole(recording).dtype == np.float32
     assert abs(pitch_error_cents(whole(recording), 48000)) < PITCH_TOLERANCE_CENTS
     assert recording.cautions == ()
@@ -90,6 +91,7 @@ def test_lossless_formats_keep_every_sample_and_the_pitch(tmp_path: Path, kind: 
 @pytest.mark.parametrize(("kind", "subtype"), LOSSY)
 def test_lossy_formats_keep_the_pitch(tmp_path: Path, kind: str, subtype: str) -> None:
     recording = open_recording(written(tmp_path / "take", tone(), format=kind, subtype=subtype))
+    assert (recording.codec, recording.lossy) == (subtype, True)
     assert recording.duration_s == pytest.approx(1.0, abs=0.1)  # an MP3 holds whole packets of 24 ms
     assert abs(pitch_error_cents(whole(recording)[:48000], 48000)) < PITCH_TOLERANCE_CENTS
     assert recording.cautions == ()

@@ -43,6 +43,7 @@ _MPEG_LOSS_S = 0.1  # MP3 headers announce whole packets
 
 _SILENT_DECODERS = (b"RIFF", b"RF64", b"riff", b"FORM", b"caff", b"fLaC", b"OggS", b".snd")
 _COARSE_STEPS = {"PCM_S8": 2.0**-7, "PCM_U8": 2.0**-7, "ULAW": 2.0**-5, "ALAW": 2.0**-5}
+_LOSSLESS = ("PCM_", "FLOAT", "DOUBLE", "ALAC_")
 _FINEST_STEP = 2.0**-15
 _BYTES = {"PCM_S8": 1, "PCM_U8": 1, "PCM_16": 2, "PCM_24": 3, "PCM_32": 4, "FLOAT": 4, "DOUBLE": 8}
 _SIZE_LINE = re.compile(r"^ *(?:data|SSND|Data Size) *: *(\d+)", re.MULTILINE | re.IGNORECASE)
@@ -67,6 +68,10 @@ class Recording:
         How many samples there are at `rate_hz`.
     channels, channel
         How many channels the file has, and which one is used, from 0.
+    codec
+        How the file holds its samples, in the decoder's own word: "PCM_16", "MPEG_LAYER_III", "aac" …
+    lossy
+        Whether the file was compressed by leaving out part of the sound (MP3, Vorbis, AAC, telephone …).
     cautions
         What a maker should know about this recording, a line each.
     """
@@ -76,6 +81,8 @@ class Recording:
     frames: int
     channels: int
     channel: int
+    codec: str
+    lossy: bool
     cautions: tuple[str, ...]
     _division: int = field(repr=False)
     _kept: Samples | None = field(repr=False)
@@ -204,9 +211,11 @@ class _Decoder:
         self.rate_hz: int = self._file.samplerate
         self.frames: int = self._file.frames
         self.channels: int = self._file.channels
-        self.is_mpeg: bool = "MPEG" in self._file.subtype
-        self.may_hold_nan: bool = self._file.subtype in {"FLOAT", "DOUBLE"}
-        self.step: float = _COARSE_STEPS.get(self._file.subtype, _FINEST_STEP)
+        self.codec: str = self._file.subtype
+        self.lossy: bool = not self.codec.startswith(_LOSSLESS)
+        self.is_mpeg: bool = "MPEG" in self.codec
+        self.may_hold_nan: bool = self.codec in {"FLOAT", "DOUBLE"}
+        self.step: float = _COARSE_STEPS.get(self.codec, _FINEST_STEP)
         self.chunk_frames: int = max(_CHUNK_VALUES // self.channels, 1)
 
     def __enter__(self) -> Self:
@@ -279,6 +288,8 @@ def _keep(path: Path, decoder: _Decoder, frames: int) -> Recording:
         frames=len(kept),
         channels=decoder.channels,
         channel=choice.channel,
+        codec=decoder.codec,
+        lossy=decoder.lossy,
         cautions=_cautions(decoder, choice, found=found, bad=bad),
         _division=division,
         _kept=kept,
@@ -300,6 +311,8 @@ def _stream(path: Path, decoder: _Decoder, frames: int) -> Recording:
         frames=frames // division,
         channels=decoder.channels,
         channel=choice.channel,
+        codec=decoder.codec,
+        lossy=decoder.lossy,
         cautions=_cautions(decoder, choice, found=frames, bad=bad),
         _division=division,
         _kept=None,
