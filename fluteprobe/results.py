@@ -350,7 +350,14 @@ def _flute(at: _At) -> FluteFacts:
         bore_mm=at["bore_mm"].unless_null(_At.above_zero),
         wall_mm=at["wall_mm"].unless_null(_At.above_zero),
         holes_mm=at["holes_mm"].unless_null(lambda pairs: pairs.each(_pair)),
+        length_mm=_added(at, "length_mm"),
+        tolerance_mm=_added(at, "tolerance_mm"),
     )
+
+
+def _added(at: _At, key: str) -> float | None:
+    """Return a number above 0 that files of the first editions do not have."""
+    return at[key].unless_null(_At.above_zero) if key in at else None
 
 
 def _pair(at: _At) -> tuple[float, float]:

@@ -56,7 +56,8 @@ class Problem:
 class FluteFacts:
     """The [flute] table of flute.toml.
 
-    `holes_mm` pairs each hole's distance from the sound hole with its diameter, top hole first.
+    `holes_mm` pairs each hole's distance from the sound hole with its diameter, top hole first; `length_mm`
+    is from the sound hole to the foot. `tolerance_mm` is the standard uncertainty of all these dimensions.
     """
 
     name: str
@@ -68,6 +69,8 @@ class FluteFacts:
     bore_mm: float | None = None
     wall_mm: float | None = None
     holes_mm: tuple[tuple[float, float], ...] | None = None
+    length_mm: float | None = None
+    tolerance_mm: float | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -310,7 +313,7 @@ def _whole_number(low: int, high: int) -> Reader:
     return read
 
 
-_DISTANCE_MM, _DIAMETER_MM = (1.0, 3000.0), (0.1, 50.0)
+_DISTANCE_MM, _DIAMETER_MM, _LENGTH_MM = (1.0, 3000.0), (0.1, 50.0), (20.0, 4000.0)
 
 
 def _hole_pairs(value: Any) -> tuple[tuple[float, float], ...]:
@@ -337,6 +340,8 @@ _KEYS: Mapping[str, Mapping[str, Reader]] = MappingProxyType(
             "bore_mm": _number(2.0, 100.0, "mm"),
             "wall_mm": _number(0.2, 50.0, "mm"),
             "holes_mm": _hole_pairs,
+            "length_mm": _number(*_LENGTH_MM, "mm"),
+            "tolerance_mm": _number(0.01, 20.0, "mm"),
         },
         "session": {
             "a4_hz": _number(*A4_RANGE_HZ, "Hz"),
@@ -427,7 +432,7 @@ def _stray_faults(tables: Mapping[str, Any], place: _Place) -> Iterator[str]:
 
 
 def _hole_faults(tables: Mapping[str, Any], flute: Mapping[str, Any], place: _Place) -> Iterator[str]:
-    """Tell whether the number of holes is missing, or not the length of holes_mm."""
+    """Tell whether the number of holes is missing or not that of holes_mm, or the flute ends above a hole."""
     given = tables.get("flute", {})
     if isinstance(given, dict) and "holes" not in given:
         yield f"{place('flute')}: key holes: missing in [flute], expected holes = 1 to {MAX_HOLES}"
@@ -436,6 +441,11 @@ def _hole_faults(tables: Mapping[str, Any], flute: Mapping[str, Any], place: _Pl
         yield (
             f"{place('flute', 'holes_mm')}: key holes_mm: found {len(pairs)} pairs, "
             f"expected {flute['holes']}, one for each hole"
+        )
+    if pairs and flute.get("length_mm", pairs[-1][0] + 1.0) <= pairs[-1][0]:
+        yield (
+            f"{place('flute', 'length_mm')}: key length_mm: found {flute['length_mm']:g}, expected more than "
+            f"{pairs[-1][0]:g}, where the lowest hole is: from the sound hole to the foot"
         )
 
 
@@ -627,6 +637,8 @@ _EXAMPLES: Mapping[str, str] = MappingProxyType(
         "bore_mm": "19.0            # inner diameter of the sounding tube",
         "wall_mm": "4.0             # thickness of the wall at the holes",
         "holes_mm": "[[105.0, 9.0], [127.0, 9.5]]   # distance from the sound hole, diameter; top first",
+        "length_mm": "385.0         # from the sound hole to the foot",
+        "tolerance_mm": "0.5        # how exact these dimensions are",
         "air_temperature_c": "22.0",
         "reference_temperature_c": "20.0   # pitches are carried to it, as an estimate",
         "date": "2026-01-31",

@@ -76,7 +76,14 @@ def full_survey() -> Survey:
     survey = heron()
     return replace(
         survey,
-        flute=replace(survey.flute, holes=2, holes_mm=((105.0, 9.0), (127.0, 9.5)), bore_mm=19.0),
+        flute=replace(
+            survey.flute,
+            holes=2,
+            holes_mm=((105.0, 9.0), (127.0, 9.5)),
+            bore_mm=19.0,
+            length_mm=385.0,
+            tolerance_mm=0.5,
+        ),
         readings=(full_reading(), *survey.readings),
     )
 
@@ -223,12 +230,20 @@ def test_a_survey_comes_back_as_it_was_written(make: Any) -> None:
     assert [entry.fingering for entry in back.entries] == [entry.fingering for entry in make().entries]
 
 
+def test_a_survey_from_before_the_length_was_told_reads_as_one_without_it() -> None:
+    values = survey_json(full_survey())
+    older = {key: value for key, value in values["flute"].items() if key not in {"length_mm", "tolerance_mm"}}
+    flute = survey_from_json({**values, "flute": older}).flute
+    assert (flute.length_mm, flute.tolerance_mm) == (None, None)
+
+
 @pytest.mark.parametrize(
     ("path", "value", "message"),
     [
         (("schema",), "other/1", 'schema is "other/1", expected "fluteprobe/measurements/1"'),
         (("flute", "holes"), "six", 'flute.holes is "six", expected a whole number'),
         (("flute", "holes_mm"), [[1]], "flute.holes_mm[0] is [1], expected a distance and a diameter"),
+        (("flute", "length_mm"), -1, "flute.length_mm is -1, expected a number above 0"),
         (("session", "a4_hz"), True, "session.a4_hz is true, expected a number"),
         (("tones",), {}, "tones is {}, expected a list"),
         (("tones", 0), 5, "tones[0] is 5, expected an object"),

@@ -78,6 +78,8 @@ def test_everything_that_flute_toml_can_say(tmp_path: Path) -> None:
             [105, 9],
             [127.5, 9.5],
         ]
+        length_mm = 385
+        tolerance_mm = 0.3
         [session]
         a4_hz = 442
         air_temperature_c = 22.5
@@ -92,7 +94,7 @@ def test_everything_that_flute_toml_can_say(tmp_path: Path) -> None:
     session = read_session(tmp_path)
     assert session.flute == FluteFacts(
         name="Heron", holes=2, maker="Osier & Reed", serial="27", key="A minor", wood="yew", bore_mm=19.0,
-        wall_mm=4.5, holes_mm=((105.0, 9.0), (127.5, 9.5)),
+        wall_mm=4.5, holes_mm=((105.0, 9.0), (127.5, 9.5)), length_mm=385.0, tolerance_mm=0.3,
     )  # fmt: skip
     assert session.sitting == Sitting(
         a4_hz=442.0, air_temperature_c=22.5, reference_temperature_c=20.0, date="2026-01-31", player="Ada",
@@ -347,7 +349,8 @@ def test_a_flute_toml_that_is_a_folder_or_leads_out(heron: Path, tmp_path: Path)
         (
             PLAIN + "colour = 1\n",
             "flute.toml line 3: key colour: not known in [flute]; "
-            "known are name, holes, maker, serial, key, wood, bore_mm, wall_mm, holes_mm",
+            "known are name, holes, maker, serial, key, wood, bore_mm, wall_mm, holes_mm, length_mm, "
+            "tolerance_mm",
         ),
         (
             PLAIN + "a4_hz = 440\n",
@@ -366,6 +369,19 @@ def test_a_flute_toml_that_is_a_folder_or_leads_out(heron: Path, tmp_path: Path)
             "[flute]\nholes = 1\nholes_mm = [120, 9]\n",
             "flute.toml line 3: key holes_mm: found [120, 9], expected [[distance from the sound hole, "
             "diameter], …] in mm, top hole first",
+        ),
+        (
+            "[flute]\nholes = 1\nholes_mm = [[120, 9]]\nlength_mm = 120\n",
+            "flute.toml line 4: key length_mm: found 120, expected more than 120, where the lowest hole is: "
+            "from the sound hole to the foot",
+        ),
+        (
+            PLAIN + "length_mm = 38.5e9\n",
+            "flute.toml line 3: key length_mm: found 38500000000.0, expected a number from 20 to 4000 (mm)",
+        ),
+        (
+            PLAIN + "tolerance_mm = 0\n",
+            "flute.toml line 3: key tolerance_mm: found 0, expected a number from 0.01 to 20 (mm)",
         ),
         (
             PLAIN + "[session]\na4_hz = 44.0\n",
