@@ -24,6 +24,7 @@ from numpy.typing import NDArray
 
 from fluteprobe.sound.hum import nearest_hum_hz
 from fluteprobe.sound.partials import quick_length
+from fluteprobe.sound.thinning import thinned
 
 Floats = NDArray[np.float64]
 Samples = NDArray[np.float32]
@@ -52,6 +53,7 @@ _LINE_SHARE = 1.0 / 1.5
 _STEADY_CV = 0.35
 _ROOM_MARGIN = 2.0
 _STANDING_OUT = 30.0
+_AT_ONCE_SAMPLES = 16384  # what is in between stays in the processor's own memory
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -95,19 +97,23 @@ def noise_spectrum(
     if length < _SHORTEST or len(residual) < length:
         return None
     step = 1 if highest_hz is None else _thinning(length, rate_hz / highest_hz)
-    thinned = residual[: len(residual) // step * step].reshape(-1, step).mean(axis=1)
+    noise = thinned(residual, step)
     short = length // step
     last = short if highest_hz is None else int(highest_hz * length / rate_hz) + 1
     window = (np.hanning(short + 2)[1:-1] * step).astype(np.float32)
-    starts = range(0, len(thinned) - short + 1, short // 2)
-    lines = np.stack([np.fft.rfft(thinned[start : start + short] * window)[:last] for start in starts])
-    power = np.square(lines.real) + np.square(lines.imag)
+    segments = np.lib.stride_tricks.sliding_window_view(noise, short)[:: short // 2]
+    at_once = max(_AT_ONCE_SAMPLES // short, 1)
+    lines = [
+        np.fft.rfft(segments[first : first + at_once] * window, axis=1)[:, :last]
+        for first in range(0, len(segments), at_once)
+    ]
+    power = np.concatenate([np.square(part.real) + np.square(part.imag) for part in lines])
     mean = power.mean(axis=0, dtype=np.float64)
     return NoiseSpectrum(
         line_hz=rate_hz / length,
         power=mean,
         variation=power.std(axis=0, dtype=np.float64) / np.maximum(mean, 1e-30),
-        segments=len(starts),
+        segments=len(segments),
         length=length,
     )
 

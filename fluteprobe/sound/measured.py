@@ -13,6 +13,8 @@ from fluteprobe.sound.partials import (
     amplitudes,
     demodulate,
     orders_below_nyquist,
+    standing,
+    undimmed,
     without_partials,
 )
 from fluteprobe.sound.pitch import Pitch, measure_pitch, phase_track
@@ -55,12 +57,14 @@ def take_apart(samples: Samples, rate_hz: int, frequency_hz: float) -> Measured:
     """Measure a steady stretch whose fundamental is known within a few cents."""
     tracks = demodulate(samples, rate_hz, frequency_hz, orders_below_nyquist(rate_hz, frequency_hz))
     pitch = measure_pitch(phase_track(tracks))
-    amplitude = amplitudes(tracks, pitch.curve.phase(tracks.time_s))
-    level = np.abs(tracks.phasors[:, int(np.argmax(amplitude))])
+    phase = pitch.curve.phase(tracks.time_s)
+    still = undimmed(standing(tracks, phase), phase)
+    amplitude = amplitudes(still)
+    level = np.abs(still.phasors[:, int(np.argmax(amplitude))])
     return Measured(
         pitch=pitch,
         orders=tracks.orders,
         amplitude=amplitude,
-        residual=without_partials(samples, tracks, pitch.curve.phase, amplitude > 0.0),
+        residual=without_partials(samples, still, pitch.curve.phase, amplitude > 0.0),
         evenness=quantile(level, 0.1) / (median(level) + 1e-20),
     )

@@ -11,7 +11,15 @@ its third), and up where no line but the even multiples (or those of three) is s
 import numpy as np
 from numpy.typing import NDArray
 
-from fluteprobe.sound.partials import Floats, Samples, Tracks, demodulate, lines, orders_below_nyquist
+from fluteprobe.sound.partials import (
+    Floats,
+    Samples,
+    Tracks,
+    demodulate,
+    lines,
+    orders_below_nyquist,
+    standing,
+)
 from fluteprobe.sound.pitch import guide_phase, refine
 
 LOWEST_FUNDAMENTAL_HZ = 85.0
@@ -66,7 +74,7 @@ def _part(samples: Samples, tracks: Tracks) -> float | None:
         if tracks.frequency_hz / parts < LOWEST_FUNDAMENTAL_HZ:
             continue
         between = demodulate(samples, tracks.rate_hz, tracks.frequency_hz, orders, periods)
-        line = lines(between, np.interp(between.time_s, tracks.time_s, phase))
+        line = lines(standing(between, np.interp(between.time_s, tracks.time_s, phase)))
         alone = (_power(between) > least) & (line.prominence > _ALONE)
         chance = np.sort(np.where(alone, line.chance, 1.0))
         if chance[0] < sure or chance[1] < _SURE_OF_TWO:
@@ -76,7 +84,7 @@ def _part(samples: Samples, tracks: Tracks) -> float | None:
 
 def _multiple(tracks: Tracks) -> float | None:
     """Return 2 or 3 if only those multiples of the pitch are lines, steady or swinging in loudness."""
-    line, power = lines(tracks, guide_phase(tracks)), _power(tracks)
+    line, power = lines(standing(tracks, guide_phase(tracks))), _power(tracks)
     loud = power > power.max() * 10.0 ** (_LEAST_DB / 10.0)
     swinging = (line.gathered > _GATHERED) & (line.prominence > 1.0)
     steady: NDArray[np.bool_] = loud & ((line.chance < _LIKELY) | swinging)

@@ -10,7 +10,7 @@ A window of a whole number of periods puts the other partials on its zeros (Harr
 """
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -29,8 +29,7 @@ OVERLAP_CORRELATION = 1.0 / 6.0
 _NEIGHBOURS = 8
 _FEWEST_FRAMES = 9
 _SMOOTHING = 9
-
-
+_STRAYING_RAD = 0.02  # of the fundamental's phase, over a period
 _CHANCE = 1e-4
 _SWING_HZ = 12.0
 _GATHERED = 0.9
@@ -102,6 +101,21 @@ def unturning(phase_rad: Floats, orders: Floats) -> Complexes:
     return np.asarray(np.exp(-1j * phase_rad[:, None] * orders))
 
 
+def standing(tracks: Tracks, phase_rad: Floats) -> Tracks:
+    """Return the phasors with order × `phase_rad` (frames,) taken out: a partial of the tone stands still."""
+    return replace(tracks, phasors=tracks.phasors * unturning(phase_rad, tracks.orders))
+
+
+def undimmed(tracks: Tracks, phase_rad: Floats) -> Tracks:
+    """Return the phasors with what a moving pitch takes from them put back.
+
+    A Hann window that is off a partial's frequency by x lines reads sinc(x) / (1 - x²) of it (Harris 1978);
+    the slope of the phase (frames,) tells x, a frame being two hops long.
+    """
+    off = np.clip(np.outer(np.gradient(phase_rad) / np.pi, tracks.orders), -0.9, 0.9)
+    return replace(tracks, phasors=tracks.phasors * ((1.0 - off**2) / np.sinc(off)))
+
+
 def quick_length(longest: int) -> int:
     """Return the greatest quick FFT length up to `longest`: a small odd times a power of two."""
     powers = [odd << max((longest // odd).bit_length() - 1, 0) for odd in (1, 3, 5, 9, 15)]
@@ -131,26 +145,25 @@ class Lines:
     gathered: Floats
 
 
-def lines(tracks: Tracks, phase_rad: Floats) -> Lines:
-    """Tell steady lines from noise in the phasors of each order.
+def lines(still: Tracks) -> Lines:
+    """Tell steady lines from noise in standing phasors.
 
-    With order × `phase_rad` (frames,) taken out, a partial of the tone stands still: its power gathers in
-    the middle of its phasors' spectrum (Hann-tapered, so that slow changes stay within two lines), while
-    noise is as strong in the 2n lines about it. Under noise alone the ratio of the two has the F distribution
-    with 2 and 4n degrees of freedom, whose upper tail is (1 + ratio / 2n)^-2n (Percival & Walden, Spectral
-    Analysis for Physical Applications, 1993, ch. 10); the taper leaves two thirds of the lines independent.
+    A partial of the tone gathers its power in the middle of its phasors' spectrum (Hann-tapered, so that slow
+    changes stay within two lines), while noise is as strong in the 2n lines about it. Under noise alone the
+    ratio of the two has the F distribution with 2 and 4n degrees of freedom, whose upper tail is (1 + ratio /
+    2n)^-2n (Percival & Walden, Spectral Analysis for Physical Applications, 1993, ch. 10); the taper leaves
+    two thirds of the lines independent.
     """
-    count = quick_length(max(len(tracks.phasors), 1))
-    still = (tracks.phasors * unturning(phase_rad, tracks.orders))[:count]
+    count = quick_length(max(len(still.phasors), 1))
     if count < _FEWEST_FRAMES:
-        nothing = np.zeros(still.shape[1])
+        nothing = np.zeros(len(still.orders))
         return Lines(chance=nothing + 1.0, prominence=nothing, gathered=nothing)
-    power = np.abs(np.fft.fft(still * np.hanning(count + 2)[1:-1, None], axis=0)) ** 2
+    power = np.abs(np.fft.fft(still.phasors[:count] * np.hanning(count + 2)[1:-1, None], axis=0)) ** 2
     middle = np.max(power[[-1, 0, 1]], axis=0)
     beside = min(_NEIGHBOURS, (count - 1) // 2)
     noise = np.concatenate([power[3 : beside + 1], power[count - beside : count - 2]])
     freedom = len(noise) / 1.5
-    reach = min(max(round(_SWING_HZ * count * tracks.hop_s), 3), (count - 1) // 2)
+    reach = min(max(round(_SWING_HZ * count * still.hop_s), 3), (count - 1) // 2)
     within = power[: reach + 1].sum(axis=0) + power[count - reach :].sum(axis=0)
     ratio = middle / np.maximum(noise.mean(axis=0), 1e-30)
     return Lines(
@@ -160,39 +173,26 @@ def lines(tracks: Tracks, phase_rad: Floats) -> Lines:
     )
 
 
-def noise_powers(tracks: Tracks, phase_rad: Floats) -> Floats:
+def noise_powers(still: Tracks) -> Floats:
     """Return the noise power in each order's phasors, E |n|² (orders,), from what changes within a hop.
 
-    With a smooth phase (frames,) taken out, x(m) - (x(m-2) + x(m+2)) / 2 holds 1.5 times the noise of one
-    frame and next to nothing of a slow change.
+    Of standing phasors x, x(m) - (x(m-2) + x(m+2)) / 2 holds 1.5 times the noise of one frame and next to
+    nothing of a slow change.
     """
-    still = tracks.phasors * unturning(phase_rad, tracks.orders)
-    rough = still[2:-2] - 0.5 * (still[:-4] + still[4:])
+    rough = still.phasors[2:-2] - 0.5 * (still.phasors[:-4] + still.phasors[4:])
     return np.asarray(np.mean(np.abs(rough) ** 2, axis=0) / 1.5)
 
 
-def amplitudes(tracks: Tracks, phase_rad: Floats) -> Floats:
+def amplitudes(still: Tracks) -> Floats:
     """Return the root-mean-square phasor of each order that is no chance, its noise taken off; 0 elsewhere.
 
     Loudness that swings spreads a line over its neighbours, so one that holds nine tenths of its band's power
     within a vibrato's reach counts too (a bump of breath noise would have to be under 4 Hz wide for that).
     """
-    noise = noise_powers(tracks, phase_rad)
-    power = np.mean(np.abs(tracks.phasors / _window_loss(tracks, phase_rad)) ** 2, axis=0) - noise
-    line = lines(tracks, phase_rad)
+    power = np.mean(np.abs(still.phasors) ** 2, axis=0) - noise_powers(still)
+    line = lines(still)
     told = ((line.chance < _CHANCE) | (line.gathered > _GATHERED)) & (power > 0.0)
     return np.sqrt(np.where(told, power, 0.0))
-
-
-def _window_loss(tracks: Tracks, phase_rad: Floats) -> Floats:
-    """Return by what each frame reads each order too low, shape (frames, orders).
-
-    A Hann window that is off a partial's frequency by x lines reads sinc(x) / (1 - x²) of it (Harris 1978);
-    the slope of the phase tells x, a frame being two hops long.
-    """
-    offset = np.gradient(phase_rad) / np.pi
-    off = np.clip(offset[:, None] * tracks.orders, -0.9, 0.9)
-    return np.asarray(np.sinc(off) / (1.0 - off**2))
 
 
 def partials_of(frequency_hz: float, orders: Floats, amplitude: Floats) -> tuple[Partial, ...]:
@@ -208,31 +208,35 @@ def partials_of(frequency_hz: float, orders: Floats, amplitude: Floats) -> tuple
 
 
 def without_partials(
-    samples: Samples, tracks: Tracks, phase: Callable[[Floats], Floats], told: NDArray[np.bool_]
+    samples: Samples, still: Tracks, phase: Callable[[Floats], Floats], told: NDArray[np.bool_]
 ) -> Samples:
     """Take the told partials out of the samples, with their slow changes of frequency and amplitude.
 
-    The phasors, still against the fundamental's `phase` (rad at given s), are smoothed over about twenty
-    periods, so that only noise very near a partial goes with it, and put together in frames of one period:
-    what is left by a pitch that moves within a frame falls on other partials' places, never between them.
+    The phasors, standing against the fundamental's `phase` (rad at given s), are smoothed over about twenty
+    periods, so that only noise very near a partial goes with it, and put together in frames of two periods
+    (of one where the pitch strays from the tracks' frequency): what is left by a pitch that moves within a
+    frame falls on other partials' places, never between them.
     """
     if not told.any():
         return samples
-    orders = tracks.orders[told]
-    hop = max(round(0.5 * tracks.rate_hz / tracks.frequency_hz), 2)
-    count = len(samples) // hop + 2
-    at = np.arange(count) * hop / tracks.rate_hz
-    seen = phase(tracks.time_s)
-    steady = tracks.phasors / _window_loss(tracks, seen)
-    still = _smoothed(steady[:, told] * np.exp(-1j * seen[:, None] * orders))
-    now = _interpolated(at, tracks.time_s, still)
-    turned = phase(at) + 2.0 * np.pi * tracks.frequency_hz * at
-    phasors = now * np.exp(1j * turned[:, None] * orders)
-    model = (np.concatenate([phasors.real, phasors.imag], axis=1).astype(np.float32)) @ _waves(
-        tracks, hop, orders
-    )
-    whole = (model[:-1, hop:] + model[1:, :hop]).reshape(-1)
-    return samples - whole[: len(samples)]
+    hop, at, seen = _frames(len(samples), still, phase, 1.0)
+    if np.max(np.abs(np.diff(seen))) > _STRAYING_RAD:
+        hop, at, seen = _frames(len(samples), still, phase, 0.5)
+    turned = seen + 2.0 * np.pi * still.frequency_hz * at
+    now = _interpolated(at, still.time_s, _smoothed(still.phasors)) * unturning(-turned, still.orders)
+    parts = np.concatenate([now.real[:, told], now.imag[:, told]], axis=1).astype(np.float32)
+    model = parts @ _waves(still, hop, still.orders[told])
+    whole = (model[:-1, hop:] + model[1:, :hop]).reshape(-1)[: len(samples)]
+    return np.subtract(samples, whole, out=whole)
+
+
+def _frames(
+    count: int, still: Tracks, phase: Callable[[Floats], Floats], periods: float
+) -> tuple[int, Floats, Floats]:
+    """Return the hop in samples that is so many periods long, the frames' centres in s, and phase there."""
+    hop = max(round(periods * still.rate_hz / still.frequency_hz), 2)
+    at = np.arange(count // hop + 2) * hop / still.rate_hz
+    return hop, at, phase(at)
 
 
 def _waves(tracks: Tracks, hop: int, orders: Floats) -> Samples:

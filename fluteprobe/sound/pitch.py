@@ -24,7 +24,7 @@ from fluteprobe.sound.partials import (
     demodulate,
     noise_powers,
     orders_below_nyquist,
-    unturning,
+    standing,
 )
 
 Floats = NDArray[np.float64]
@@ -40,6 +40,7 @@ _CAUTION = 5.0
 _VIBRATO_HZ = (2.5, 9.0)
 _LEAST_VIBRATO_CENTS = 3.0
 _VIBRATO_SHARE = 0.5
+_FINER = 8
 _SLOW_TERMS = 3
 _DRIFT_RATIO = 20.0
 # Student's t for 95 % over 2, by degrees of freedom (JCGM 100:2008, table G.2): a scatter known from few
@@ -106,9 +107,10 @@ def refined(guide: Tracks) -> float:
 def phase_track(tracks: Tracks) -> PhaseTrack:
     """Combine the phases of all partials into the fundamental's, each weighted by its own noise."""
     phase = guide_phase(tracks)
+    noise = _noise_variances(tracks, phase)
     for _ in range(_ROUNDS):
-        errors, variances = _phase_errors(tracks, phase)
-        weights = tracks.orders**2 / variances
+        errors = _phase_errors(tracks, phase)
+        weights = tracks.orders**2 / np.maximum(noise, np.mean(errors**2, axis=0))
         phase = phase + (errors / tracks.orders) @ weights / weights.sum()
     noise = _noise_variances(tracks, phase)
     return PhaseTrack(
@@ -128,16 +130,15 @@ def guide_phase(tracks: Tracks) -> Floats:
     return np.concatenate([[0.0], np.cumsum(steps)])
 
 
-def _phase_errors(tracks: Tracks, phase: Floats) -> tuple[Floats, Floats]:
-    """Return each partial's phase against order × `phase` (frames, orders), and its variance (orders,)."""
-    still = tracks.phasors * unturning(phase, tracks.orders)
-    errors = np.angle(still * still.mean(axis=0).conj())
-    return errors, np.maximum(_noise_variances(tracks, phase), np.mean(errors**2, axis=0))
+def _phase_errors(tracks: Tracks, phase: Floats) -> Floats:
+    """Return each partial's phase against order × `phase`, shape (frames, orders)."""
+    still = standing(tracks, phase).phasors
+    return np.asarray(np.angle(still * still.mean(axis=0).conj()))
 
 
 def _noise_variances(tracks: Tracks, phase: Floats) -> Floats:
     """Return the phase-noise variance of each partial, rad² (orders,): half the noise over the power."""
-    noise = noise_powers(tracks, _smoothed(phase))
+    noise = noise_powers(standing(tracks, _smoothed(phase)))
     power = np.mean(np.abs(tracks.phasors) ** 2, axis=0)
     return np.asarray(0.5 * noise / np.maximum(power - noise, 1e-3 * power + 1e-30) + 1e-14)
 
@@ -255,9 +256,10 @@ def _fit(points: _Points, span_s: float) -> PhaseCurve:
 
 def _basis(x: Floats, terms: int) -> Floats:
     """Return constant, line, parabola and cosines at x from 0 to 1, shape (points, terms + 1)."""
-    x = x[:, None]
-    waves = np.cos(np.pi * np.arange(1, terms - 1) * x)
-    return np.concatenate([np.ones_like(x), x - 0.5, (x - 0.5) ** 2, waves], axis=1)[:, : terms + 1]
+    waves = np.outer(x, np.pi * np.arange(-2, max(terms, 2) - 1))
+    np.cos(waves[:, 3:], out=waves[:, 3:])
+    waves[:, 0], waves[:, 1], waves[:, 2] = 1.0, x - 0.5, (x - 0.5) ** 2
+    return waves[:, : terms + 1]
 
 
 def _basis_slopes(x: Floats, terms: int) -> Floats:
@@ -306,19 +308,21 @@ def _movement_without_vibrato(centred: Floats, deviation: Floats) -> tuple[float
 
 def _vibrato_rate(centred: Floats, deviation: Floats, span_s: float) -> float | None:
     """Return the angular rate (rad/s) of the strongest swing in the vibrato range, if two cycles fit."""
-    step = 0.15 / max(span_s, 0.5)
-    rates = np.arange(max(_VIBRATO_HZ[0], 2.0 / span_s), _VIBRATO_HZ[1], step)
-    if not len(rates) or np.std(deviation) < 1.0:
+    if span_s < 2.0 / _VIBRATO_HZ[1] or np.std(deviation) < 1.0:
         return None
     _, _, level = _movement_without_vibrato(centred, deviation)
     taper = np.cos(np.pi * centred / (span_s + 1e-9)) ** 2
-    power = np.abs(np.exp(-2j * np.pi * rates[:, None] * centred) @ (taper * level))
-    best = int(np.argmax(power))
+    power = np.abs(np.fft.rfft(taper * level, _FINER * len(level)))
+    step = 1.0 / (_FINER * len(level) * (centred[1] - centred[0]))
+    first, last = (int(np.ceil(edge / step)) for edge in (max(_VIBRATO_HZ[0], 2.0 / span_s), _VIBRATO_HZ[1]))
+    if first >= last:
+        return None
+    best = first + int(np.argmax(power[first:last]))
     shift = 0.0
-    if 0 < best < len(power) - 1:
+    if first < best < last - 1:
         lower, middle, upper = power[best - 1 : best + 2]
         shift = 0.5 * float((lower - upper) / min(lower - 2.0 * middle + upper, -1e-12))
-    return float(2.0 * np.pi * (rates[best] + shift * step))
+    return 2.0 * np.pi * (best + shift) * float(step)
 
 
 def _uncertainty_of_mean(slow: Floats) -> tuple[float, int]:

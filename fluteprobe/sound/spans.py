@@ -22,6 +22,7 @@ from numpy.typing import NDArray
 from fluteprobe.sound.hum import nearest_hum_hz
 from fluteprobe.sound.quantile import median, quantile
 from fluteprobe.sound.recording import Recording
+from fluteprobe.sound.thinning import thinned
 
 Floats = NDArray[np.float32]
 
@@ -45,7 +46,7 @@ _UNPITCHED_SCORE = 0.3
 _LEAP_COST = 0.8
 _REACH = 3
 _BLOCK_FRAMES = 2048
-_AT_ONCE = 16
+_AT_ONCE = 64
 _BACKGROUND_DB = 32.0
 _HUM_DB = 15.0
 _HUM_SHARE = 0.012
@@ -107,8 +108,7 @@ def _analyse(recording: Recording, frame_s: float) -> _Frames:
     score = np.zeros(combs.matrix.shape[1] + 1, np.float32)
     levels, paths = [], []
     for block in _whole_frames(recording, length * step):
-        thinned = block.reshape(-1, step).mean(axis=1)
-        level, salience = _heard(thinned.reshape(-1, hop), combs)
+        level, salience = _heard(thinned(block, step).reshape(-1, hop), combs)
         levels.append(level)
         path, score = _best_path(salience, score)
         paths.append(path)
@@ -148,16 +148,19 @@ def _heard(rows: Floats, combs: "_Combs") -> tuple[Floats, Floats]:
 
 def _power_spectra(rows: Floats, combs: "_Combs") -> Floats:
     """Return the power spectra of Hann-windowed frames of two rows each, at the combs' bins."""
-    window = np.hanning(2 * rows.shape[1] + 1)[:-1].astype(np.float32)
-    frames = np.concatenate([rows[:-1], rows[1:]], axis=1) * window
+    frames = np.concatenate([rows[:-1], rows[1:]], axis=1) * combs.window
     spectra = np.fft.rfft(frames, axis=1)[:, combs.first : combs.last]
     return np.square(spectra.real) + np.square(spectra.imag)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class _Combs:
-    """Combs over spectrum bins first to last, shape (bins, grid), and how band floors become bin floors."""
+    """Combs over spectrum bins first to last, shape (bins, grid), and how band floors become bin floors.
 
+    `window` is the frame's, shape (length,).
+    """
+
+    window: Floats
     first: int
     last: int
     bands: tuple[tuple[int, int], ...]
@@ -181,6 +184,7 @@ def _combs(rate_hz: int, length: int) -> _Combs:
     middles = [0.5 * (low + high) for low, high in bands]
     spread = np.stack([np.interp(bins, middles, row) for row in np.eye(len(bands))])
     return _Combs(
+        window=np.hanning(length + 1)[:-1].astype(np.float32),
         first=first,
         last=last,
         bands=bands,
@@ -191,14 +195,15 @@ def _combs(rate_hz: int, length: int) -> _Combs:
 
 def _add_teeth(matrix: NDArray[np.float64], first: int, centres: NDArray[np.float64], weight: float) -> None:
     """Add raised-cosine teeth around each centre, two bins to either side and wider by a grid step."""
+    centres = centres[centres < first + len(matrix) + 1]
     reach = 2.0 + centres * (_STEP_CENTS / 1731.0)
     offsets = np.arange(-int(reach.max()) - 1, int(reach.max()) + 2)
     bins = np.round(centres).astype(np.intp) + offsets[:, None]
     distance = np.abs(bins - centres) / reach
-    tooth = np.where(distance < 1.0, 1.0 + np.cos(np.pi * distance), 0.0) * (weight / reach)
-    inside = (bins >= first) & (bins < first + len(matrix))
-    columns = np.broadcast_to(np.arange(len(centres)), bins.shape)
-    np.add.at(matrix, (bins[inside] - first, columns[inside]), tooth[inside])
+    inside = (distance < 1.0) & (bins >= first) & (bins < first + len(matrix))
+    columns = np.broadcast_to(np.arange(len(centres)), bins.shape)[inside]
+    tooth = (1.0 + np.cos(np.pi * distance[inside])) * (weight / reach[columns])
+    matrix[bins[inside] - first, columns] += tooth  # no bin twice for one centre
 
 
 def _grid_hz(rate_hz: int) -> NDArray[np.float64]:
