@@ -1,0 +1,298 @@
+"""What people see of a comparison in a terminal: the table, then what there is to say, in sentences.
+
+Conventions: those of `screen`: at most 80 columns, cents with a sign, ± the standard uncertainty. Flutes are
+numbered from 1, as given. `different` and `likely` are the verdicts of `fluteprobe.compare.values`; nothing
+is said where a difference is within the uncertainty.
+"""
+
+from collections.abc import Iterable, Iterator, Sequence
+from textwrap import wrap
+
+from fluteprobe.cli.screen import WIDTH
+from fluteprobe.compare.values import (
+    Comparison,
+    Difference,
+    Drift,
+    Flute,
+    Pair,
+    Parts,
+    Row,
+)
+
+MOST_COLUMNS = 6  # flutes whose numbers fit beside one another
+MOST_LISTED = 10
+
+Line = list[str]
+
+
+def told(comparison: Comparison) -> str:
+    """Return a comparison as text: what is compared, the table, and the findings."""
+    blocks = [_heading(comparison), _table(comparison), *_findings(comparison)]
+    return "\n\n".join("\n".join(block) for block in blocks if block)
+
+
+# --- heading and table -------------------------------------------------------------------------------
+
+
+def _heading(comparison: Comparison) -> list[str]:
+    matched = "fingering" if comparison.by == "fingering" else "sounding note"
+    parts = [f"{len(comparison.flutes)} flutes by {matched}", f"A4 = {comparison.a4_hz:g} Hz"]
+    if comparison.temperature_c is not None:
+        parts.append(f"carried to {comparison.temperature_c:g} °C, an estimate")
+    facts = [[f"{k}", flute.label, *_facts(flute)] for k, flute in enumerate(comparison.flutes, start=1)]
+    return [" · ".join(parts), "", *(line[:WIDTH].rstrip() for line in _aligned(facts, numbers={0}))]
+
+
+def _facts(flute: Flute) -> list[str]:
+    air = flute.sitting.air_temperature_c
+    return [
+        f"{flute.facts.holes} hole{'s' if flute.facts.holes > 1 else ''}",
+        "air not given" if air is None else f"air {air:g} °C",
+        flute.sitting.date or "",
+    ]
+
+
+def _table(comparison: Comparison) -> Line:
+    if not comparison.rows:
+        return ["No flute gave a note of known register."]
+    first = ["fingering", "register", "note"] if comparison.by == "fingering" else ["note", "register"]
+    few = len(comparison.flutes) <= MOST_COLUMNS
+    titles, lines = _two(comparison) if len(comparison.flutes) == 2 else _many(comparison, few=few)
+    named = [_named(comparison, row) for row in comparison.rows]
+    table = [[*first, *titles], *([*name, *line] for name, line in zip(named, lines, strict=True))]
+    words = {"fingering", "note", ""}
+    return [
+        *_aligned(table, numbers={k for k, title in enumerate(table[0]) if title not in words}),
+        "",
+        *_explained(comparison),
+    ]
+
+
+def _named(comparison: Comparison, row: Row) -> list[str]:
+    register = "–" if row.register is None else str(row.register)
+    if comparison.by == "fingering":
+        return [row.by, register, _note(row.note)]
+    return [_note(row.note), register]
+
+
+def _two(comparison: Comparison) -> tuple[Line, list[Line]]:
+    """Return the columns of two flutes: both, their difference, what of it is the note's, and the beats.
+
+    A note's own part is told of fingerings alone: different builds have no offset that means anything.
+    """
+    differences = {d.row: d for pair in comparison.pairs for d in pair.differences}
+    same_build = comparison.by == "fingering"
+    lines = []
+    for k, row in enumerate(comparison.rows):
+        one = ["–" if cell is None else _off(cell.cents, cell.uncertainty_cents) for cell in row.cells]
+        lines.append([*one, *_apart(differences.get(k), same_build=same_build)])
+    return ["1", "2", "1 − 2", "", "note alone" if same_build else "", "", "beats"], lines
+
+
+def _apart(difference: Difference | None, *, same_build: bool) -> Line:
+    if difference is None:
+        return [""] * 5
+    alone = ["", ""]
+    if same_build and difference.alone_cents is not None:
+        uncertainty = difference.alone_uncertainty_cents
+        alone = [_off(difference.alone_cents, uncertainty), difference.alone_verdict or ""]
+    whole = _off(difference.cents, difference.uncertainty_cents)
+    return [whole, difference.verdict or "", *alone, f"{difference.beats.rate_hz:.1f}"]
+
+
+def _many(comparison: Comparison, *, few: bool) -> tuple[Line, list[Line]]:
+    """Return the columns of several flutes: each, where there is room, and what the group gives."""
+    flutes = len(comparison.flutes)
+    titles = [str(k) for k in range(1, flutes + 1)] if few else ["lowest", "highest"]
+    lines = []
+    for row in comparison.rows:
+        cells = ["–" if cell is None else _signed(cell.cents) for cell in row.cells]
+        ends = cells if few else _ends(row)
+        scatter = "" if row.scatter_cents is None else f"{row.scatter_cents:.1f}"
+        spread = "" if row.spread_cents is None else f"{row.spread_cents:.1f}"
+        beats = "" if row.fastest is None else f"{row.fastest.rate_hz:.1f}"
+        lines.append(
+            [*ends, f"{len(row.played)} of {flutes}", _signed(row.middle_cents), scatter, spread, beats]
+        )
+    return [*titles, "played", "middle", "scatter", "spread", "beats"], lines
+
+
+def _ends(row: Row) -> list[str]:
+    low, high = (pick(row.played, key=lambda cell: cell.cents) for pick in (min, max))
+    return [f"{_signed(cell.cents)} ({cell.flute + 1})" for cell in (low, high)]
+
+
+def _explained(comparison: Comparison) -> list[str]:
+    words = "cents: off the note in equal temperament, above 0 is sharp"
+    if len(comparison.flutes) == 2:
+        words += ", ± standard uncertainty"
+        if comparison.by == "fingering":
+            words += "; note alone: the difference less that of the flutes as wholes"
+    else:
+        words += "; middle: the median, scatter: the robust standard deviation, spread: highest minus lowest"
+    return wrap(f"{words}; beats: a second, between the two farthest apart", WIDTH)
+
+
+# --- findings ----------------------------------------------------------------------------------------
+
+
+def _findings(comparison: Comparison) -> Iterator[list[str]]:
+    yield _pairs(comparison)
+    yield _standing_out(comparison)
+    yield _notes(comparison)
+    yield _group_pitch(comparison)
+    if comparison.parts:
+        yield _parts(comparison.parts, comparison)
+    for drift in comparison.drifts:
+        yield _drift(drift, comparison)
+
+
+def _pairs(comparison: Comparison) -> list[str]:
+    """Say how flutes differ as wholes, and how many notes differ."""
+    lines: list[str] = []
+    for pair in comparison.pairs:
+        if len(comparison.pairs) == 1 or pair.offset_verdict:
+            lines += _offset(pair)
+    hidden = len(lines) - MOST_LISTED
+    if hidden > 1:
+        lines = [*lines[:MOST_LISTED], f"… and {hidden} more pairs, in comparison.json"]
+    return [*lines, *_counted(comparison)]
+
+
+def _offset(pair: Pair) -> list[str]:
+    if pair.offset_cents is None:
+        return []
+    one, other = (k + 1 for k in pair.flutes)
+    size = f"{abs(pair.offset_cents):.1f} ± {max(pair.offset_uncertainty_cents or 0.0, 0.1):.1f} cents"
+    words = {
+        None: f"As wholes {one} and {other} are the same within the uncertainty ({size})",
+        "air": f"{_sharper(pair)} by {size}, which the air may explain: its temperature is not given",
+    }
+    return [words.get(pair.offset_verdict, f"{_sharper(pair)} by {size}: {pair.offset_verdict}")]
+
+
+def _sharper(pair: Pair) -> str:
+    one, other = (k + 1 for k in pair.flutes)
+    return f"As a whole {one} is {'sharper' if (pair.offset_cents or 0.0) > 0.0 else 'flatter'} than {other}"
+
+
+def _counted(comparison: Comparison) -> list[str]:
+    """Say how many differences were looked at, how many are real, and how many chance alone would give."""
+    found = [d.verdict for pair in comparison.pairs for d in pair.differences]
+    if not found:
+        return []
+    text = (
+        f"{len(found)} notes compared: {found.count('different')} different, {found.count('likely')} likely, "
+        f"{found.count(None)} within the uncertainty. Called are differences over three combined standard "
+        "uncertainties; of those called different at most 1 in 100 is chance."
+    )
+    return wrap(text, WIDTH)
+
+
+def _standing_out(comparison: Comparison) -> list[str]:
+    lines = []
+    for row in comparison.rows:
+        for cell in row.played:
+            if cell.stands_out and cell.off_cents is not None:
+                name = f"{row.by}{f' ({row.register})' if comparison.by == 'fingering' else ''}"
+                lines.append(f"{_note(name)}: {cell.flute + 1} is {_signed(cell.off_cents)} from the middle")
+    return ["Stands out from the others:", *_shortened(f"  {line}" for line in lines)] if lines else []
+
+
+def _notes(comparison: Comparison) -> list[str]:
+    """Say which notes every flute plays, and how far up each one goes."""
+    flutes = len(comparison.flutes)
+    everywhere = [_note(reach.note) for reach in comparison.notes if len(reach.flutes) == flutes]
+    lines = _indented(f"Every flute plays: {', '.join(everywhere) or 'no note in common'}")
+    upper: list[str] = []
+    for k in range(flutes):
+        mine = [r for r in comparison.notes if k in r.flutes and r.registers[r.flutes.index(k)] > 1]
+        names = ", ".join(_note(reach.note) for reach in mine) or "none"
+        upper += _indented(f"  {k + 1}  {names}")
+    return [*lines, "Notes of the upper registers alone:", *_shortened(upper)]
+
+
+def _group_pitch(comparison: Comparison) -> list[str]:
+    group = comparison.group
+    if group is None:
+        return []
+    text = (
+        f"A4 = {group.a4_hz:.2f} ± {max(group.uncertainty_hz, 0.01):.2f} Hz suits all shared notes best; "
+        f"at it they are off by {group.remaining_cents:.1f} cents (rms)"
+    )
+    return wrap(text, WIDTH)
+
+
+def _parts(parts: Parts, comparison: Comparison) -> list[str]:
+    """Say what each player adds, where a player treats one note apart, and what cannot be told."""
+    lines = ["What the player adds to a flute as a whole, against the mean of the players:"]
+    lines += [
+        f"  {part.player}: {_off(part.cents, part.uncertainty_cents)} {part.verdict or ''}".rstrip()
+        for part in parts.players
+    ]
+    rests = [
+        f"  {comparison.flutes[rest.flute].label}: {_note(comparison.rows[rest.row].by)} "
+        f"{_off(rest.cents, rest.uncertainty_cents)} {rest.verdict}"
+        for rest in parts.rests
+        if rest.verdict
+    ]
+    if rests:
+        lines += ["Single notes that a player plays otherwise:", *_shortened(rests)]
+    for text in parts.unseparated:
+        lines += _indented(f"Cannot be told apart: {text}")
+    return lines
+
+
+def _drift(drift: Drift, comparison: Comparison) -> list[str]:
+    name = next(flute.facts.name for flute in comparison.flutes if flute.kin == drift.kin)
+    slope = _off(drift.cents_per_year, drift.uncertainty_cents_per_year)
+    verdict = drift.verdict or "(no drift that these dates can show)"
+    lines = [f"{name}, {len(drift.days)} sittings in {drift.days[-1]} days: {slope} cents a year {verdict}"]
+    lines += _shortened(
+        f"  {_note(comparison.rows[note.row].by)} beyond that: "
+        f"{_off(note.cents_per_year, note.uncertainty_cents_per_year)} a year {note.verdict}"
+        for note in drift.notes
+        if note.verdict
+    )
+    return lines
+
+
+# --- helpers -----------------------------------------------------------------------------------------
+
+
+def _indented(text: str) -> list[str]:
+    return wrap(text, WIDTH, subsequent_indent="     ", break_on_hyphens=False)
+
+
+def _shortened(lines: Iterable[str]) -> list[str]:
+    """Return lines, only as many as people read; the rest is in the files."""
+    lines = list(lines)
+    if len(lines) <= MOST_LISTED + 1:
+        return lines
+    return [*lines[:MOST_LISTED], f"  … and {len(lines) - MOST_LISTED} more, in comparison.json"]
+
+
+def _aligned(lines: Sequence[Line], *, numbers: set[int]) -> list[str]:
+    """Return lines of cells with column under column, those of numbers to the right."""
+    widths = [max(len(line[k]) for line in lines) for k in range(len(lines[0]))]
+    return [
+        "  ".join(
+            cell.rjust(width) if k in numbers else cell.ljust(width)
+            for k, (cell, width) in enumerate(zip(line, widths, strict=True))
+            if width
+        ).rstrip()
+        for line in lines
+    ]
+
+
+def _note(note: str) -> str:
+    return note.replace("#", "♯")
+
+
+def _off(cents: float, uncertainty_cents: float | None) -> str:
+    """Return a number of cents with its uncertainty, which is never told as less than 0.1."""
+    return f"{_signed(cents)} ± {max(uncertainty_cents or 0.0, 0.1):4.1f}"
+
+
+def _signed(cents: float) -> str:
+    return f"{round(cents, 1) + 0.0:+.1f}".replace("-", "−")
