@@ -93,6 +93,22 @@ def sweep_passing(folder: Path) -> None:
                 _sweep(path)
 
 
+def open_ordinary(path: Path) -> BinaryIO:
+    """Open a file for reading, unbuffered; what is no ordinary file (a pipe, a device) is not waited for.
+
+    Raises
+    ------
+    OSError
+        If it cannot be opened or is no ordinary file.
+    """
+    flags = os.O_RDONLY | getattr(os, "O_BINARY", 0) | getattr(os, "O_NONBLOCK", 0)
+    file = os.fdopen(os.open(path, flags), "rb", buffering=0)
+    if stat.S_ISREG(os.fstat(file.fileno()).st_mode):
+        return file
+    file.close()
+    raise OSError(errno.EINVAL, "it is no ordinary file", str(path))
+
+
 def read_whole(path: Path, most_bytes: int) -> bytes:
     """Return what a file holds.
 
@@ -101,14 +117,10 @@ def read_whole(path: Path, most_bytes: int) -> bytes:
     OSError
         If it cannot be read, is no ordinary file or holds more than `most_bytes`.
     """
-    flags = os.O_RDONLY | getattr(os, "O_BINARY", 0) | getattr(os, "O_NONBLOCK", 0)
-    with open(os.open(path, flags), "rb") as file:  # noqa: PTH123  (a descriptor: a pipe must not block)
-        if not stat.S_ISREG(os.fstat(file.fileno()).st_mode):
-            raise OSError(errno.EINVAL, "it is no ordinary file", str(path))
-        content = file.read(most_bytes + 1)
-    if len(content) > most_bytes:
-        raise OSError(errno.EFBIG, f"it is far too large (over {most_bytes // 10**6} MB)", str(path))
-    return content
+    with open_ordinary(path) as file:
+        if os.fstat(file.fileno()).st_size <= most_bytes:
+            return file.read()
+    raise OSError(errno.EFBIG, f"it is far too large (over {most_bytes // 10**6} MB)", str(path))
 
 
 # --- passing files -----------------------------------------------------------------------------------

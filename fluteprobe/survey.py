@@ -4,14 +4,10 @@ Conventions: pitches are in cents above 1 Hz inside; notes are spelt in ASCII wi
 ("C#5"); deviations are positive where the flute is sharp; `uncertainty_cents` is standard (k = 1).
 """
 
-import sys
-from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
-from concurrent.futures import Executor, ThreadPoolExecutor
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from math import log2, sqrt
-from os import cpu_count, environ
 from pathlib import Path
-from threading import active_count
 
 from fluteprobe.flute.bumps import Bump
 from fluteprobe.flute.fingering import Breath, Fingering
@@ -25,16 +21,15 @@ from fluteprobe.flute.register import (
     registers_of,
 )
 from fluteprobe.flute.tuning import A4_HZ, nearest_note, temperature_shift_cents
+from fluteprobe.hearing import MapTakes, hear_recording, hear_takes
+from fluteprobe.kept import Kept
 from fluteprobe.session import FluteFacts, Problem, Session, Sitting, Take, read_session
-from fluteprobe.sound.recording import RecordingError, open_recording
-from fluteprobe.sound.tone import Tone, read_tones
+from fluteprobe.sound.recording import RecordingError
+from fluteprobe.sound.tone import Tone
 
-_FEW_TAKES = 3
 _NO_CALL = RegisterCall(register=None, probability=dict.fromkeys(REGISTERS, 1.0 / 3.0))
 
 Progress = Callable[[int, int], None]
-Heard = tuple[Tone, ...] | RecordingError
-MapTakes = Callable[[Callable[[Take], Heard], Sequence[Take]], Iterable[Heard]]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -91,34 +86,46 @@ def hear(path: Path | str, *, a4_hz: float = A4_HZ, name: str | None = None) -> 
     RecordingError
         If the file cannot be used; the message says what is wrong and what to do.
     """
-    recording = open_recording(Path(path))
-    tones = _with_cautions(read_tones(recording), recording.cautions)
+    tones = hear_recording(Path(path))
     sitting = Sitting(a4_hz=a4_hz)
     return tuple(_reading(name or str(path), None, tone, sitting, _call_alone(tone)) for tone in tones)
 
 
 def measure(
-    folder: Path | str, *, on_take: Progress | None = None, map_takes: MapTakes | None = None
+    folder: Path | str,
+    *,
+    on_take: Progress | None = None,
+    map_takes: MapTakes | None = None,
+    kept: Kept | None = None,
 ) -> Survey:
     """Return the survey of a session folder.
 
-    `map_takes` hears the takes elsewhere than on this machine's cores: see `fluteprobe.cluster`.
+    Parameters
+    ----------
+    map_takes
+        Hears the takes elsewhere than on this machine's cores: see `fluteprobe.cluster`.
+    kept
+        Where to find what was heard before, and to keep what is heard now: see `fluteprobe.kept`.
 
     Raises
     ------
     SessionError
         If the folder is no session; takes that cannot be used are problems of the survey instead.
     """
-    return survey_of(read_session(Path(folder)), on_take=on_take, map_takes=map_takes)
+    return survey_of(read_session(Path(folder)), on_take=on_take, map_takes=map_takes, kept=kept)
 
 
 def survey_of(
-    session: Session, *, on_take: Progress | None = None, map_takes: MapTakes | None = None
+    session: Session,
+    *,
+    on_take: Progress | None = None,
+    map_takes: MapTakes | None = None,
+    kept: Kept | None = None,
 ) -> Survey:
     """Hear every take of a session, decide every register and sum up every fingering."""
     heard: list[tuple[Take, Tone]] = []
     problems = list(session.problems)
-    for done, (take, result) in enumerate(_heard(session.takes, map_takes), start=1):
+    for done, (take, result) in enumerate(hear_takes(session.takes, map_takes=map_takes, kept=kept), start=1):
         if isinstance(result, RecordingError):
             problems.append(Problem(take=take.name, message=str(result)))
         else:
@@ -137,43 +144,6 @@ def survey_of(
         entries=summed_up(readings, session.takes, session.sitting),
         problems=tuple(problems),
     )
-
-
-def _heard(takes: Sequence[Take], map_takes: MapTakes | None) -> Iterator[tuple[Take, Heard]]:
-    """Hear all takes, in order, on all cores where there are several takes."""
-    if map_takes is not None:
-        yield from zip(takes, map_takes(_hear_one, takes), strict=True)
-        return
-    if len(takes) <= _FEW_TAKES:
-        yield from ((take, _hear_one(take)) for take in takes)
-        return
-    with _pool(cpu_count() or 1) as pool:
-        yield from zip(takes, pool.map(_hear_one, takes), strict=True)
-
-
-def _pool(workers: int) -> Executor:
-    """Return forked processes where a fork is cheap and safe (Linux, a single thread), threads elsewhere.
-
-    Threads wait for one another in Python's own part of the work, about half of it; processes do not.
-    """
-    if sys.platform == "linux" and active_count() == 1 and environ.get("OPENBLAS_NUM_THREADS") == "1":
-        from concurrent.futures import ProcessPoolExecutor
-        from multiprocessing import get_context
-
-        return ProcessPoolExecutor(workers, mp_context=get_context("fork"))
-    return ThreadPoolExecutor(workers)
-
-
-def _hear_one(take: Take) -> Heard:
-    try:
-        recording = open_recording(take.path)
-        return _with_cautions(read_tones(recording), recording.cautions)
-    except RecordingError as error:
-        return error
-
-
-def _with_cautions(tones: tuple[Tone, ...], cautions: tuple[str, ...]) -> tuple[Tone, ...]:
-    return tuple(replace(tone, cautions=(*cautions, *tone.cautions)) for tone in tones)
 
 
 def _reading(name: str, take: Take | None, tone: Tone, sitting: Sitting, call: RegisterCall) -> Reading:

@@ -20,6 +20,7 @@ from fluteprobe import __version__
 from fluteprobe import survey as surveying
 from fluteprobe.cli import screen
 from fluteprobe.cli.main import main
+from fluteprobe.kept import Kept
 from fluteprobe.session import FluteFacts, Problem, Sitting, create_session, read_session
 from fluteprobe.sound.recording import RecordingError
 from fluteprobe.survey import Survey
@@ -56,7 +57,7 @@ def measured(monkeypatch: pytest.MonkeyPatch) -> Survey:
 def measures_as(survey: Survey, monkeypatch: pytest.MonkeyPatch) -> None:
     """Let every session that can be read measure as a given survey of three takes."""
 
-    def fake(folder: Path, *, on_take: Callable[[int, int], None]) -> Survey:
+    def fake(folder: Path, *, on_take: Callable[[int, int], None], kept: Kept) -> Survey:
         read_session(folder)
         for done in range(1, 4):
             on_take(done, 3)
@@ -195,7 +196,7 @@ def test_an_output_that_cannot_be_written_is_one_line(here: Path, measured: Surv
 
 
 def test_a_bug_is_a_bug_and_no_error_line(here: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    def broken(folder: Path, *, on_take: Any) -> Survey:
+    def broken(folder: Path, *, on_take: Any, kept: Kept) -> Survey:
         raise ZeroDivisionError
 
     monkeypatch.setattr(surveying, "measure", broken)

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import click
 
 from fluteprobe.cli.measure import measured
-from fluteprobe.cli.options import FOLDER, out_option, reports_folder
+from fluteprobe.cli.options import FOLDER, anew_option, out_option, reports_folder
 
 if TYPE_CHECKING:
     from fluteprobe.survey import Survey
@@ -85,6 +85,7 @@ def _formats(ctx: click.Context, param: click.Parameter, given: tuple[str, ...])
 @click.option(
     "--no-sound", is_flag=True, help="Leave the recordings out of the web page (html), which makes it small."
 )
+@anew_option
 @out_option
 @click.pass_context
 def chart(  # noqa: PLR0913, PLR0917  (click passes every option by name)
@@ -96,9 +97,10 @@ def chart(  # noqa: PLR0913, PLR0917  (click passes every option by name)
     tolerance_cents: float,
     dots_per_inch: float,
     no_sound: bool,
+    anew: bool,
     out: Path | None,
 ) -> None:
-    """Measure every take of a session folder and draw the flute's fingering chart.
+    """Measure the takes of a session folder that have changed and draw the flute's fingering chart.
 
     Writes chart.pdf and map.pdf, the map of its registers (or the formats asked for),
     measurements.json and measurements.csv, and prints where. A card is card.pdf, with the best
@@ -122,8 +124,8 @@ def chart(  # noqa: PLR0913, PLR0917  (click passes every option by name)
         dots_per_inch=dots_per_inch,
         with_sound=not no_sound,
     )
-    survey = measured(folder)
     target = reports_folder(folder, out)
+    survey = measured(folder, target, anew=anew)
     written = [*write_results(survey, target), *_drawn(survey, folder, target, formats, wish)]
     screen.tell_cautions(survey.readings)
     screen.tell_problems(survey.problems)

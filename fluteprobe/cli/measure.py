@@ -5,7 +5,7 @@ from typing import TYPE_CHECKING
 
 import click
 
-from fluteprobe.cli.options import FOLDER, json_option, out_option, reports_folder
+from fluteprobe.cli.options import FOLDER, anew_option, json_option, out_option, reports_folder
 from fluteprobe.cli.second import second_option
 
 if TYPE_CHECKING:
@@ -15,6 +15,7 @@ if TYPE_CHECKING:
 @click.command(short_help="Measure a flute: a table, measurements.json and .csv.")
 @click.argument("folder", type=FOLDER)
 @out_option
+@anew_option
 @second_option
 @click.option(
     "--explain", "takes", metavar="TAKE", multiple=True, help="Say why a take's tones have their registers."
@@ -22,12 +23,19 @@ if TYPE_CHECKING:
 @json_option
 @click.pass_context
 def measure(  # noqa: PLR0913, PLR0917  (one parameter an option)
-    ctx: click.Context, folder: Path, out: Path | None, second: bool, takes: tuple[str, ...], as_json: bool
+    ctx: click.Context,
+    folder: Path,
+    out: Path | None,
+    anew: bool,
+    second: bool,
+    takes: tuple[str, ...],
+    as_json: bool,
 ) -> None:
     """Measure every take of a session folder and print what each fingering gives.
 
     Also writes measurements.json and measurements.csv. A take that cannot be used is named, and all
-    others are measured.
+    others are measured. What was heard is kept beside them, so that the next run hears only the
+    takes that are new or have changed.
 
     \b
     Example:
@@ -38,9 +46,10 @@ def measure(  # noqa: PLR0913, PLR0917  (one parameter an option)
     from fluteprobe.cli.second import asked, told, with_opinions
     from fluteprobe.results import json_text, replace_file, survey_json, write_results
 
-    survey = measured(folder)
+    target = reports_folder(folder, out)
+    survey = measured(folder, target, anew=anew)
     reasons = [explained(survey.readings, take) for take in takes]
-    written = write_results(survey, reports_folder(folder, out))
+    written = write_results(survey, target)
     values = survey_json(survey)
     opinions = asked([(folder / r.take, r) for r in survey.readings]) if second else None
     if opinions is not None:
@@ -60,14 +69,16 @@ def measure(  # noqa: PLR0913, PLR0917  (one parameter an option)
     ctx.exit(1 if survey.problems else 0)
 
 
-def measured(folder: Path) -> "Survey":
-    """Return the survey of a folder, with a progress bar where it takes long."""
+def measured(folder: Path, target: Path, *, anew: bool = False) -> "Survey":
+    """Return the survey of a folder, with a progress bar where it takes long; what is heard is kept."""
     from fluteprobe import survey
     from fluteprobe.cli import screen
+    from fluteprobe.kept import KEPT_FOLDER, Kept
     from fluteprobe.session import SessionError, printable
 
+    kept = Kept(folder=target / KEPT_FOLDER, anew=anew)
     with screen.progress("Listening") as on_take:
-        result = survey.measure(folder, on_take=on_take)
+        result = survey.measure(folder, on_take=on_take, kept=kept)
     if not result.readings:
         screen.tell_problems(result.problems)
         raise SessionError(f"{printable(str(folder))} has no take that could be measured")

@@ -17,6 +17,13 @@ def json_option(command: Command) -> Command:
     return click.option("--json", "as_json", is_flag=True, help="Print JSON instead of a table.")(command)
 
 
+def anew_option(command: Command) -> Command:
+    """Add `--anew`."""
+    return click.option(
+        "--anew", is_flag=True, help="Hear every take anew, also those that have not changed since."
+    )(command)
+
+
 def out_option(command: Command) -> Command:
     """Add `--out DIR`."""
     return click.option(
