@@ -16,6 +16,7 @@ from pathlib import Path
 from threading import Thread, active_count
 
 from fluteprobe.kept import Kept, stamp
+from fluteprobe.memory import keep_freed_memory
 from fluteprobe.session import Take
 from fluteprobe.sound.recording import RecordingError, open_recording
 from fluteprobe.sound.tone import Tone, read_tones
@@ -124,8 +125,14 @@ def _pool(workers: int) -> Executor:
         from multiprocessing import get_context
 
         context = get_context("fork")
-        return ProcessPoolExecutor(workers, mp_context=context, initializer=_end_with_the_parent)
+        return ProcessPoolExecutor(workers, mp_context=context, initializer=_settle_in)
     return ThreadPoolExecutor(workers)
+
+
+def _settle_in() -> None:
+    """Make a forked process ready to hear takes."""
+    keep_freed_memory()
+    _end_with_the_parent()
 
 
 def _end_with_the_parent() -> None:

@@ -226,11 +226,12 @@ def _prominence(spectrum: NoiseSpectrum, usable: NDArray[np.bool_]) -> tuple[Flo
 
 def _windowed(power: Floats, usable: NDArray[np.bool_], low: int, high: int) -> tuple[Floats, Floats]:
     """Return the mean of the usable lines from `low` to `high` about each line, and how many they are."""
-    reach, width = max(abs(low), abs(high)), high - low + 1
+    place = np.arange(len(power))
+    first, after = (np.clip(place + edge, 0, len(power)) for edge in (low, high + 1))
 
     def summed(values: Floats) -> Floats:
-        windows = np.lib.stride_tricks.sliding_window_view(np.pad(values, reach), width)
-        return np.asarray(windows[low + reach :][: len(values)].sum(axis=1))
+        up_to = np.concatenate([[0.0], np.cumsum(values)])
+        return np.asarray(up_to[after] - up_to[first])
 
     lines = summed(usable.astype(np.float64))
     return summed(power) / np.maximum(lines, 1.0), lines

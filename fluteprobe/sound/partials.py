@@ -126,8 +126,8 @@ def _windowed_waves(rate_hz: int, frequency_hz: float, hop: int, orders: Floats)
     """Return windowed cosines and minus sines over both halves of a frame, shape (hop, 4 orders)."""
     n = np.arange(-hop, hop)
     window = 0.5 * (1.0 + np.cos(np.pi * n / hop)) * (2.0 / hop)
-    angle = 2.0 * np.pi * frequency_hz / rate_hz * n[:, None] * orders
-    waves = np.concatenate([np.cos(angle), -np.sin(angle)], axis=1) * window[:, None]
+    turning = unturning(2.0 * np.pi * frequency_hz / rate_hz * n, orders) * window[:, None]
+    waves = np.concatenate([turning.real, turning.imag], axis=1)
     return np.concatenate([waves[:hop], waves[hop:]], axis=1).astype(np.float32)
 
 
@@ -242,9 +242,9 @@ def _frames(
 def _waves(tracks: Tracks, hop: int, orders: Floats) -> Samples:
     """Return windowed cosines and minus sines over one frame of two hops, shape (2 orders, 2 hop)."""
     n = np.arange(-hop, hop)
-    angle = 2.0 * np.pi * tracks.frequency_hz / tracks.rate_hz * orders[:, None] * n
     window = 0.5 * (1.0 + np.cos(np.pi * n / hop))
-    return (np.concatenate([np.cos(angle), -np.sin(angle)]) * window).astype(np.float32)
+    turning = unturning(2.0 * np.pi * tracks.frequency_hz / tracks.rate_hz * n, orders) * window[:, None]
+    return np.concatenate([turning.real, turning.imag], axis=1).T.astype(np.float32)
 
 
 def _smoothed(still: Complexes) -> Complexes:

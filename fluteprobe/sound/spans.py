@@ -214,7 +214,7 @@ def _grid_hz(rate_hz: int) -> NDArray[np.float64]:
 
 def _salience(spectra: Floats, combs: _Combs) -> Floats:
     """Return how far each comb's teeth stand out of the noise floor, in 80 dB, shape (frames, grid)."""
-    level = 10.0 * np.log10(spectra + 1e-20)
+    level = np.log(spectra + 1e-20) * np.float32(10.0 / np.log(10.0))
     lows = [_low_level(level[:, low - combs.first : high - combs.first]) for low, high in combs.bands]
     level -= np.stack(lows, axis=1) @ combs.spread + _CLEARANCE_DB
     return np.asarray(np.clip(level, 0.0, _MOST_DB) @ combs.matrix) * np.float32(1.0 / _UNIT_DB)
