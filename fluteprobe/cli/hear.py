@@ -1,20 +1,16 @@
 """`fluteprobe hear`: what is in single recordings."""
 
-from collections.abc import Sequence
-from itertools import count
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import click
 
 from fluteprobe.cli.options import A4_HZ, FOLDER, json_option, paper_option
-from fluteprobe.cli.second import SLOW, Opinions
+from fluteprobe.cli.second import Opinions
+from fluteprobe.cli.take_pages import draw_pages
 
 if TYPE_CHECKING:
     from fluteprobe.session import Problem
-    from fluteprobe.sound.recording import Recording
-    from fluteprobe.sound.second import SecondOpinion
-    from fluteprobe.sound.view import TakeView
     from fluteprobe.survey import Reading
 
 PAGES_FOLDER = Path("reports", "takes")
@@ -65,7 +61,7 @@ def hear(  # noqa: PLR0913, PLR0917  (click passes every option by name)
     readings = [reading for _, mine in heard for reading in mine]
     opinions: Opinions = [None] * len(readings)
     if page or second:
-        opinions, undrawn = _draw_pages(heard, out or PAGES_FOLDER, paper, second)
+        opinions, undrawn = draw_pages(heard, out or PAGES_FOLDER, paper, second)
         problems += undrawn
     if as_json:
         values = heard_json(readings, problems, a4_hz=a4_hz)
@@ -99,57 +95,3 @@ def _heard(
                 problems.append(Problem(take=name, message=str(error)))
             on_take(done, len(files))
     return heard, problems
-
-
-def _draw_pages(
-    heard: Sequence[tuple[Path, tuple["Reading", ...]]], folder: Path, paper: str, second: bool
-) -> tuple[Opinions, list["Problem"]]:
-    """Draw a page for each recording, named after it; one that has changed since becomes a problem.
-
-    Also returns the second opinion on each reading in turn, None where there is none.
-    """
-    from fluteprobe.cli import screen
-    from fluteprobe.pages.take import write_take
-    from fluteprobe.session import Problem
-    from fluteprobe.sound.recording import RecordingError, open_recording
-
-    opinions: list[SecondOpinion | None] = []
-    problems: list[Problem] = []
-    taken: set[str] = set()
-    if second:
-        screen.say(SLOW, err=True)
-    folder.mkdir(parents=True, exist_ok=True)
-    for path, readings in heard:
-        try:
-            view = _looked_at(open_recording(path), readings, second)
-        except RecordingError as error:
-            problems.append(Problem(take=readings[0].take, message=str(error)))
-            opinions += [None] * len(readings)
-            continue
-        opinions += [part.second.opinion if part.second else None for part in view.tones]
-        target = folder / f"{_page_name(path, taken)}.pdf"
-        screen.tell_written(write_take(view, readings, target, paper=paper))
-    return opinions, problems
-
-
-def _looked_at(recording: "Recording", readings: Sequence["Reading"], second: bool) -> "TakeView":
-    """Return what a page shows; without librosa's opinion where it cannot be had."""
-    from fluteprobe.cli import screen
-    from fluteprobe.session import printable
-    from fluteprobe.sound.second import SecondOpinionError
-    from fluteprobe.sound.view import look
-
-    tones = [reading.tone for reading in readings]
-    try:
-        return look(recording, tones, second=second)
-    except SecondOpinionError as error:
-        screen.say(f"Caution: {printable(readings[0].take)}: {printable(str(error))}", err=True)
-        return look(recording, tones)
-
-
-def _page_name(path: Path, taken: set[str]) -> str:
-    """Return a recording's name without its ending, numbered on where another file has it too."""
-    names = (path.stem if number == 1 else f"{path.stem}_{number}" for number in count(1))
-    name = next(name for name in names if name.lower() not in taken)
-    taken.add(name.lower())
-    return name

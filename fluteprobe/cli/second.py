@@ -67,15 +67,18 @@ def with_opinions(values: Mapping[str, Any], opinions: Opinions) -> dict[str, An
 
 
 def _asked_one(path: Path, reading: "Reading") -> "SecondOpinion | None":
-    from fluteprobe.sound.recording import open_recording
+    from fluteprobe.sound.recording import RecordingError, open_recording
     from fluteprobe.sound.second import second_opinion
 
     tone = reading.tone
     if tone.frequency_hz is None:
         return None
-    recording = open_recording(path)
-    stop = min(round(tone.end_s * recording.rate_hz), recording.frames)
-    samples = recording.read(round(tone.start_s * recording.rate_hz), stop)
+    try:
+        recording = open_recording(path)
+        stop = min(round(tone.end_s * recording.rate_hz), recording.frames)
+        samples = recording.read(round(tone.start_s * recording.rate_hz), stop)
+    except RecordingError:  # it was there a moment ago
+        return None
     return second_opinion(samples, recording.rate_hz, tone.frequency_hz)
 
 
