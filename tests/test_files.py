@@ -5,11 +5,8 @@ There is no outside source here. Locks are the operating system's; a program tha
 
 import errno
 import os
-import signal
 import subprocess
 import sys
-from collections.abc import Callable
-from multiprocessing import get_context
 from pathlib import Path
 
 import pytest
@@ -133,29 +130,27 @@ def test_what_a_killed_run_left_is_swept_and_nothing_else(tmp_path: Path) -> Non
     sweep_passing(tmp_path / "no such folder")
 
 
-def write_slowly(target: Path, begun: Callable[[], None]) -> None:
-    """Replace a file, and wait for long before it is put into its place."""
-
-    def wait(descriptor: object) -> None:
-        begun()
-        signal.pause()
-
-    os.fsync = wait
-    replace_file(target, b"new")
+WRITES_SLOWLY = """
+import os, pathlib, signal, sys
+from fluteprobe.files import replace_file
+def wait(descriptor):
+    print("begun", flush=True)
+    signal.pause()
+os.fsync = wait
+replace_file(pathlib.Path(sys.argv[1]), b"new")
+"""
 
 
 @posix_only
 def test_what_a_run_still_writes_is_left_until_that_run_is_killed(tmp_path: Path) -> None:
-    context = get_context("fork")
-    begun = context.Event()
-    process = context.Process(target=write_slowly, args=(tmp_path / "a.json", begun.set))
-    process.start()
-    assert begun.wait(30.0)
-    assert len(passing(tmp_path)) == 1
-    sweep_passing(tmp_path)
-    assert len(passing(tmp_path)) == 1
-    process.kill()
-    process.join()
+    command = [sys.executable, "-c", WRITES_SLOWLY, str(tmp_path / "a.json")]
+    with subprocess.Popen(command, stdout=subprocess.PIPE) as process:
+        assert process.stdout is not None
+        assert process.stdout.readline() == b"begun\n"
+        assert len(passing(tmp_path)) == 1
+        sweep_passing(tmp_path)
+        assert len(passing(tmp_path)) == 1
+        process.kill()
     sweep_passing(tmp_path)
     assert list(tmp_path.iterdir()) == []
 
