@@ -1,29 +1,32 @@
-"""Session folders: flute.toml and takes/, and every way in which a maker may get them wrong."""
+"""Session folders: what is read where, what is a take, and every way in which a folder may be wrong."""
 
 import os
 import tomllib
+import unicodedata
 from contextlib import suppress
 from pathlib import Path
-from unicodedata import category
+from tempfile import TemporaryDirectory
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
+from sessions import is_harmless, problems, put, takes
 
-from fluteprobe.flute.fingering import BREATHS, STATES, Fingering
 from fluteprobe.session import (
     FluteFacts,
     SessionError,
     Sitting,
     create_session,
     facts_text,
-    parse_take_name,
     printable,
     read_session,
 )
 
-PLAIN = "[flute]\nholes = 6\n"
 TEXT = st.text(st.characters(exclude_categories=("C", "Z")), min_size=1, max_size=20)
+NAMES = [
+    "oxxxxx.wav", "OXXXXX (2).wav", "Möwe oxxxxx 2.wav", "oxxxxx überblasen (1).wav", "oxxxxx_over.wav",
+    "oxxxxx-over_2.wav",
+]  # fmt: skip
 
 
 @pytest.fixture
@@ -32,31 +35,6 @@ def heron(tmp_path: Path) -> Path:
     folder = tmp_path / "heron"
     create_session(folder, FluteFacts(name="Heron", holes=6))
     return folder
-
-
-def put(folder: Path, *names: str) -> None:
-    for name in names:
-        (folder / "takes" / name).write_bytes(b"sound")
-
-
-def is_harmless(text: str) -> bool:
-    """Whether text has neither control characters nor what UTF-8 cannot hold."""
-    return not any(category(letter) in {"Cc", "Cs", "Zl", "Zp"} for letter in text)
-
-
-def faults(folder: Path, text: str | bytes) -> list[str]:
-    """Return what is told about a flute.toml, without the folder's name."""
-    content = text if isinstance(text, bytes) else text.encode()
-    (folder / "flute.toml").write_bytes(content)
-    with pytest.raises(SessionError) as caught:
-        read_session(folder)
-    assert str(caught.value) == "\n".join(caught.value.faults)
-    return [fault.removeprefix(f"{folder}{os.sep}") for fault in caught.value.faults]
-
-
-def fault(folder: Path, text: str | bytes) -> str:
-    (only,) = faults(folder, text)
-    return only
 
 
 # --- a good folder -----------------------------------------------------------------------------------
@@ -111,12 +89,6 @@ def test_what_is_not_given_is_none_and_the_name_is_the_folders(tmp_path: Path) -
     assert session.sitting == Sitting()
 
 
-@pytest.mark.parametrize("text", [PLAIN.encode("utf-8-sig"), PLAIN.replace("\n", "\r\n").encode()])
-def test_files_as_some_editors_save_them_are_read(heron: Path, text: bytes) -> None:
-    (heron / "flute.toml").write_bytes(text)
-    assert read_session(heron).flute.holes == 6
-
-
 def test_takes_are_told_by_their_names_and_sorted_by_fingering_breath_and_number(heron: Path) -> None:
     put(
         heron,
@@ -147,60 +119,42 @@ def test_hidden_files_folders_notes_and_pictures_are_passed_over(heron: Path) ->
     assert session.problems == ()
 
 
-@given(
-    st.text(alphabet=STATES, min_size=1, max_size=10),
-    st.sampled_from(BREATHS),
-    st.integers(1, 9999),
-    st.sampled_from([".wav", ".flac", ".mp3", ""]),
-)
-def test_every_name_of_the_pattern_is_understood(states: str, breath: str, number: int, suffix: str) -> None:
-    expected = (Fingering(states), breath, number)
-    assert parse_take_name(f"{states}-{breath}-{number}{suffix}") == expected
-    assert parse_take_name(f"{states}{suffix}") == (Fingering(states), "normal", 1)
-    assert parse_take_name(f"{states}-{breath}{suffix}") == (Fingering(states), breath, 1)
-    assert parse_take_name(f"{states}-{number}{suffix}") == (Fingering(states), "normal", number)
-
-
 # --- takes that cannot be used -----------------------------------------------------------------------
 
 
-@pytest.mark.parametrize(
-    ("name", "message"),
-    [
+def test_a_name_that_is_not_understood_is_a_problem_and_the_others_are_read(heron: Path) -> None:
+    put(heron, "hello.wav", "oxxxxx-ovr.wav", "xxxxx.wav", "xxxxxx.wav")
+    assert takes(heron) == [("takes/xxxxxx.wav", "xxxxxx", "normal", 1)]
+    assert problems(heron) == [
         (
-            "hello.wav",
-            "the name is no fingering: rename it to its fingering, as oxxxxx.wav or oxxxxx-over-2.wav",
+            "takes/hello.wav",
+            "the name is no fingering: rename it to its fingering, as oxxxxx.wav or oxxxxx-over-2.wav, "
+            "or list it in takes.csv",
         ),
-        ("oxxxxx_over.wav", "the name is no fingering: rename it to oxxxxx-over.wav"),
-        ("oxxxxx over 3.wav", "the name is no fingering: rename it to oxxxxx-over-3.wav"),
-        ("oxxxxx-2-over.wav", "the name is no fingering: rename it to oxxxxx-over-2.wav"),
-        ("oxxxxx (2).WAV", "the name is no fingering: rename it to oxxxxx-2.wav"),
-        ("0xxxxx-overblown.flac", "the name is no fingering: rename it to oxxxxx-over.flac"),
-        ("oxxxxx-ovr.wav", "the name is no fingering: rename it to oxxxxx-over.wav"),
         (
-            "xxxxx.wav",
+            "takes/oxxxxx-ovr.wav",
+            'the name has a word that is not known, "ovr": rename it to oxxxxx-over.wav',
+        ),
+        (
+            "takes/xxxxx.wav",
             "the name has 5 holes where the flute has 6: rename it, or correct holes in flute.toml",
         ),
-        ("x.wav", "the name has 1 hole where the flute has 6: rename it, or correct holes in flute.toml"),
-        (
-            "xxxxxxxxxxxx-over.wav",
-            "the name has 12 holes where the flute has 6: rename it, or correct holes in flute.toml",
-        ),
-        ("oxxxxx-0.wav", "takes are numbered from 1: rename it"),
-        ("oxxxxx-12345.wav", "the name is no fingering: rename it to oxxxxx.wav"),
-    ],
-)
-def test_a_name_that_is_no_take_is_a_problem_with_its_cure(heron: Path, name: str, message: str) -> None:
-    put(heron, name, "xxxxxx.wav")
-    session = read_session(heron)
-    assert [take.name for take in session.takes] == ["takes/xxxxxx.wav"]
-    assert [(problem.take, problem.message) for problem in session.problems] == [(f"takes/{name}", message)]
+    ]
 
 
-def test_the_proposed_name_is_one_that_is_free(heron: Path) -> None:
-    put(heron, "oxxxxx.wav", "oxxxxx-2.wav", "oxxxxx (2).wav")
-    (problem,) = read_session(heron).problems
-    assert problem.message == "the name is no fingering: rename it to oxxxxx-3.wav"
+def test_names_that_mean_the_same_get_numbers_of_their_own(heron: Path) -> None:
+    put(
+        heron, "oxxxxx (2).wav", "oxxxxx.wav", "oxxxxx-2.wav", "OXXXXX copy.wav", "oxxxxx_3.wav", "Oxxxxx.wav"
+    )
+    assert [(name, number) for name, _, _, number in takes(heron)] == [
+        ("takes/Oxxxxx.wav", 1),
+        ("takes/oxxxxx-2.wav", 2),
+        ("takes/oxxxxx.wav", 3),
+        ("takes/oxxxxx (2).wav", 4),
+        ("takes/oxxxxx_3.wav", 5),
+        ("takes/OXXXXX copy.wav", 6),
+    ]
+    assert problems(heron) == []
 
 
 def test_one_take_in_two_formats_counts_once(heron: Path) -> None:
@@ -210,6 +164,43 @@ def test_one_take_in_two_formats_counts_once(heron: Path) -> None:
     (problem,) = session.problems
     assert problem.take == "takes/oxxxxx.wav"
     assert problem.message == "is the same take as oxxxxx.flac: remove one, or rename it to oxxxxx-2.wav"
+
+
+def test_a_copy_of_a_take_counts_once(heron: Path) -> None:
+    put(heron, "oxxxxx.wav", "oxxxxx-over.wav", "oxxxxx-2.wav")
+    recording = (heron / "takes" / "oxxxxx.wav").read_bytes()
+    (heron / "takes" / "oxxxxx - Copy.wav").write_bytes(recording)
+    (heron / "takes" / "oxxxxx (1).flac").write_bytes(recording)
+    assert [name for name, *_ in takes(heron)] == [
+        "takes/oxxxxx.wav",
+        "takes/oxxxxx-2.wav",
+        "takes/oxxxxx-over.wav",
+    ]
+    why = "is a copy of takes/oxxxxx.wav, the same recording: remove one of the two"
+    assert problems(heron) == [("takes/oxxxxx (1).flac", why), ("takes/oxxxxx - Copy.wav", why)]
+
+
+@settings(max_examples=10)
+@given(st.permutations(NAMES), st.sampled_from(["NFC", "NFD"]))
+def test_takes_are_the_same_in_every_order_and_spelling_of_the_file_system(
+    names: list[str], form: str
+) -> None:
+    with TemporaryDirectory() as place:
+        folder = Path(place) / "Möwe"
+        create_session(folder, FluteFacts(name="Möwe", holes=6))
+        for name in names:
+            file = unicodedata.normalize(form, name)  # type: ignore[arg-type]
+            (folder / "takes" / file).write_bytes(name.encode())
+        found = [(unicodedata.normalize("NFC", name), *rest) for name, *rest in takes(folder)]
+        assert problems(folder) == []
+    assert found == [
+        ("takes/oxxxxx.wav", "oxxxxx", "normal", 1),
+        ("takes/Möwe oxxxxx 2.wav", "oxxxxx", "normal", 2),
+        ("takes/OXXXXX (2).wav", "oxxxxx", "normal", 3),
+        ("takes/oxxxxx überblasen (1).wav", "oxxxxx", "over", 1),
+        ("takes/oxxxxx-over_2.wav", "oxxxxx", "over", 2),
+        ("takes/oxxxxx_over.wav", "oxxxxx", "over", 3),
+    ]
 
 
 def test_a_link_out_of_the_folder_is_not_followed(heron: Path, tmp_path: Path) -> None:
@@ -223,6 +214,16 @@ def test_a_link_out_of_the_folder_is_not_followed(heron: Path, tmp_path: Path) -
     assert [problem.message for problem in session.problems] == [
         "is no ordinary file: put the recording itself there",
         "is a link that leads out of the session folder: put the recording itself there",
+    ]
+
+
+def test_recordings_and_a_list_that_lie_where_they_are_not_read_are_told(heron: Path) -> None:
+    for name in ("oxxxxx-over.wav", "xxxxxx", "notes.txt", "takes/takes.csv"):
+        (heron / name).write_bytes(b"sound")
+    put(heron, "xxxxxx.wav")
+    assert problems(heron) == [
+        ("oxxxxx-over.wav", "lies beside flute.toml: move it into takes"),
+        ("takes/takes.csv", "is not read there: move it beside flute.toml"),
     ]
 
 
@@ -247,6 +248,15 @@ def test_a_session_without_recordings_says_where_they_go(heron: Path, exists: bo
     (problem,) = session.problems
     assert problem.take == "takes"
     assert problem.message == "no recordings yet: put them there, as takes/oxxxxx.wav"
+
+
+def test_a_takes_folder_of_another_name_or_with_folders_in_it_is_told(heron: Path) -> None:
+    (heron / "takes" / "monday").mkdir()
+    told = "no recordings yet, only folders: put the recordings themselves there, as takes/oxxxxx.wav"
+    assert problems(heron) == [("takes", told)]
+    for old, new in (("takes", "Takes"), ("Takes", "take")):
+        (heron / old).rename(heron / new)
+        assert problems(heron) == [("takes", f"no such folder, but {new}: rename it to takes")]
 
 
 def test_no_control_character_of_a_file_name_reaches_a_message(heron: Path) -> None:
@@ -287,6 +297,12 @@ def test_a_folder_without_flute_toml_says_how_to_write_one(tmp_path: Path) -> No
     assert refusal(tmp_path) == f"{tmp_path} has no flute.toml: write one with `fluteprobe begin {tmp_path}`"
 
 
+@pytest.mark.parametrize("name", ["flute.toml.txt", "Flute.TOML", "flute.txt", "flute"])
+def test_a_flute_toml_of_another_name_is_told(heron: Path, name: str) -> None:
+    (heron / "flute.toml").rename(heron / name)
+    assert refusal(heron) == f"{heron} has no flute.toml, but {name}: rename it to flute.toml"
+
+
 def test_a_file_or_the_takes_folder_instead_of_the_session(heron: Path) -> None:
     file = heron / "flute.toml"
     assert refusal(file) == f"{file} is a file: give the session folder, the one that holds flute.toml"
@@ -302,181 +318,6 @@ def test_a_flute_toml_that_is_a_folder_or_leads_out(heron: Path, tmp_path: Path)
     file.unlink()
     file.mkdir()
     assert refusal(heron) == f"{file} is no file that can be read"
-
-
-# --- faults in flute.toml ----------------------------------------------------------------------------
-
-
-@pytest.mark.parametrize(
-    ("text", "expected"),
-    [
-        ("", "flute.toml is empty: write at least [flute] and, under it, holes = 6"),
-        (" \n\n", "flute.toml is empty: write at least [flute] and, under it, holes = 6"),
-        ("# just a note\n", "flute.toml: key holes: missing in [flute], expected holes = 1 to 10"),
-        (
-            "[flute]\nname = 'A'\n",
-            "flute.toml line 1: key holes: missing in [flute], expected holes = 1 to 10",
-        ),
-        (
-            "[flute]\nholes = '6'\n",
-            'flute.toml line 2: key holes: found "6", expected a whole number from 1 to 10, without quotes',
-        ),
-        (
-            "[flute]\nholes = 11\n",
-            "flute.toml line 2: key holes: found 11, expected a whole number from 1 to 10",
-        ),
-        (
-            "[flute]\nholes = 0\n",
-            "flute.toml line 2: key holes: found 0, expected a whole number from 1 to 10",
-        ),
-        (
-            "[flute]\nholes = 6.0\n",
-            "flute.toml line 2: key holes: found 6.0, expected a whole number from 1 to 10",
-        ),
-        (
-            "[flute]\nholes = true\n",
-            "flute.toml line 2: key holes: found true, expected a whole number from 1 to 10",
-        ),
-        (PLAIN + "nmae = 'A'\n", "flute.toml line 3: key nmae: not known in [flute]; did you mean name?"),
-        (
-            PLAIN + "name = 5\n",
-            'flute.toml line 3: key name: found 5, expected text in "quotes", on one line',
-        ),
-        (
-            PLAIN + 'wood = "a\\nb"\n',
-            'flute.toml line 3: key wood: found "a\\nb", expected text in "quotes", on one line',
-        ),
-        (
-            PLAIN + "colour = 1\n",
-            "flute.toml line 3: key colour: not known in [flute]; "
-            "known are name, holes, maker, serial, key, wood, bore_mm, wall_mm, holes_mm, length_mm, "
-            "tolerance_mm",
-        ),
-        (
-            PLAIN + "a4_hz = 440\n",
-            "flute.toml line 3: key a4_hz: not known in [flute]; it belongs under [session]",
-        ),
-        (
-            PLAIN + "holes_mm = [[100, 9], [120, 9]]\n",
-            "flute.toml line 3: key holes_mm: found 2 pairs, expected 6, one for each hole",
-        ),
-        (
-            "[flute]\nholes = 2\nholes_mm = [[120, 9], [100, 9]]\n",
-            "flute.toml line 3: key holes_mm: found [[120, 9], [100, 9]], expected [[distance from the sound "
-            "hole, diameter], …] in mm, top hole first, each farther than the one before",
-        ),
-        (
-            "[flute]\nholes = 1\nholes_mm = [120, 9]\n",
-            "flute.toml line 3: key holes_mm: found [120, 9], expected [[distance from the sound hole, "
-            "diameter], …] in mm, top hole first",
-        ),
-        (
-            "[flute]\nholes = 1\nholes_mm = [[120, 9]]\nlength_mm = 120\n",
-            "flute.toml line 4: key length_mm: found 120, expected more than 120, where the lowest hole is: "
-            "from the sound hole to the foot",
-        ),
-        (
-            PLAIN + "length_mm = 38.5e9\n",
-            "flute.toml line 3: key length_mm: found 38500000000.0, expected a number from 20 to 4000 (mm)",
-        ),
-        (
-            PLAIN + "tolerance_mm = 0\n",
-            "flute.toml line 3: key tolerance_mm: found 0, expected a number from 0.01 to 20 (mm)",
-        ),
-        (
-            PLAIN + "[session]\na4_hz = 44.0\n",
-            "flute.toml line 4: key a4_hz: found 44.0, expected a number from 380 to 500 (Hz)",
-        ),
-        (
-            PLAIN + "[session]\nair_temperature_c = 72\n",
-            "flute.toml line 4: key air_temperature_c: found 72, expected a number from -20 to 50 (°C)",
-        ),
-        (
-            PLAIN + "[session]\nair_temperature_c = nan\n",
-            "flute.toml line 4: key air_temperature_c: found NaN, expected a number from -20 to 50 (°C)",
-        ),
-        (
-            PLAIN + "[sesion]\na4_hz = 440\n",
-            "flute.toml line 3: table [sesion]: not known; did you mean [session]?",
-        ),
-        (PLAIN + "[room]\n", "flute.toml line 3: table [room]: not known; known are [flute] and [session]"),
-        (
-            "a4_hz = 440\n" + PLAIN,
-            "flute.toml line 1: key a4_hz: stands outside a table; put it under [session]",
-        ),
-        (PLAIN + "[[session]]\n", "flute.toml line 3: key session: found [{}], expected a line [session]"),
-    ],
-)
-def test_a_fault_is_told_with_its_line_what_was_found_and_what_is_expected(
-    heron: Path, text: str, expected: str
-) -> None:
-    assert fault(heron, text) == expected
-
-
-@pytest.mark.parametrize(
-    ("text", "expected"),
-    [
-        (
-            "[flute]\nname = Heron\n",
-            'flute.toml line 2: found name = Heron, expected quotes around text: key = "text"',
-        ),
-        (
-            "[flute]\nname = “Heron”\n",
-            'flute.toml line 2: found name = “Heron”, expected straight quotes: "text"',
-        ),
-        (
-            "[session]\na4_hz = 440,0\n",
-            "flute.toml line 2: found a4_hz = 440,0, expected a point in numbers: 440.0",
-        ),
-        (
-            "[flute]\nholes = 6\nholes = 5\n",
-            "flute.toml line 3: found holes = 5, expected each key and each [table] once",
-        ),
-        ("[flute\n", 'flute.toml line 1: found [flute, expected key = "text" or key = number'),
-        ("[flute]\nholes = \n", 'flute.toml line 2: found holes =, expected key = "text" or key = number'),
-    ],
-)
-def test_what_is_no_toml_is_told_in_plain_words(heron: Path, text: str, expected: str) -> None:
-    assert fault(heron, text) == expected
-
-
-def test_all_faults_are_told_at_once_in_the_order_of_lines(heron: Path) -> None:
-    text = (
-        "[flute]\nnmae = 'A'\nholes = 'six'\nbore_mm = -1\n[session]\na4_hz = 300\n"
-        + "\n" * 5
-        + "plaice = 'B'\n"
-    )
-    told = faults(heron, text)
-    assert [line.split(":")[0] for line in told] == [f"flute.toml line {line}" for line in (2, 3, 4, 6, 12)]
-
-
-@pytest.mark.parametrize(
-    "content", [b"\xff\xfe[\x00f\x00", b"\x00" * 9, b"x = " + b"[" * 5000, b"[flute]\nholes = " + b"9" * 6000]
-)
-def test_a_damaged_file_is_one_short_printable_line(heron: Path, content: bytes) -> None:
-    told = fault(heron, content)
-    assert told.startswith("flute.toml")
-    assert is_harmless(told)
-    assert len(told) < 200
-
-
-def test_a_file_of_another_kind_is_not_read_whole(heron: Path) -> None:
-    told = fault(heron, b"#" * 2_000_000)
-    assert told == "flute.toml is far too long: is it another file?"
-
-
-@given(st.binary(max_size=60))
-def test_no_content_whatever_breaks_the_reader(
-    tmp_path_factory: pytest.TempPathFactory, content: bytes
-) -> None:
-    folder = tmp_path_factory.mktemp("any")
-    (folder / "flute.toml").write_bytes(b"[flute]\nholes = 6\n" + content)
-    told: tuple[str, ...] = ()
-    try:
-        read_session(folder)
-    except SessionError as error:
-        told = error.faults
-    assert all(is_harmless(line) for line in told)
 
 
 # --- beginning ---------------------------------------------------------------------------------------

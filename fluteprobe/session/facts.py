@@ -69,7 +69,8 @@ def read_facts(text: str, file: str, folder_name: str) -> tuple[FluteFacts, Sitt
     }
     faults += _hole_faults(toml, values.get("flute", {}), place)
     if faults:
-        raise SessionError(*_first(sorted(faults, key=natural), file))
+        faults.sort(key=lambda fault: natural(fault.removeprefix(file).partition(":")[0]))
+        raise SessionError(*_first(faults, file))
     flute = {"name": printable(folder_name).strip() or "flute", **values["flute"]}
     return FluteFacts(**flute), Sitting(**values["session"])
 

@@ -47,13 +47,13 @@ class Toml:
 
 
 def read_toml(text: str) -> Toml:
-    """Return what a flute.toml says, with every fault of its syntax up to `MOST_FAULTS`."""
+    """Return what a flute.toml says, with the faults of its syntax, one more than `MOST_FAULTS` at most."""
     lines = list(enumerate(text.split("\n"), start=1))
     faults: list[Fault] = []
     lines = _without_endless(lines, faults)
     tables: dict[str, Any] | None = None
     excused: set[str] = set()
-    while tables is None and len(faults) < MOST_FAULTS:
+    while tables is None and len(faults) <= MOST_FAULTS:
         try:
             tables = tomllib.loads("\n".join(line for _, line in lines))
         except RecursionError:
@@ -110,7 +110,7 @@ def _mended(lines: list[Line], message: str, told: Sequence[Fault]) -> tuple[lis
     whole = " ".join(text.strip() for _, text in lines[first : last + 1])
     what, expected, mended = _told(line if first == last else whole)
     fault = (number, f"{what}, expected {expected}")
-    mends = _is_toml(mended) and fault not in told
+    mends = mended not in {"", line} and fault not in told
     kept = [(number, part) for part in mended.split("\n")] if mends else []
     return [*lines[:first], *kept, *lines[last + 1 :]], fault
 
@@ -144,8 +144,8 @@ def _starts(line: str) -> bool:
 
 def _is_open(lines: Sequence[Line]) -> bool:
     """Whether a value goes on in the next line: more brackets were opened than closed."""
-    text = "".join(_without_remark(line) for _, line in lines)
-    return "=" in text and text.count("[") > text.count("]")
+    value = "".join(_without_remark(line) for _, line in lines).partition("=")[2]
+    return value.lstrip().startswith("[") and value.count("[") > value.count("]")
 
 
 def _once(lines: list[Line], first: int, last: int) -> tuple[list[Line], Fault]:
@@ -300,7 +300,7 @@ def _quotes(key: str, value: str) -> Cure | None:
 def _number_alone(key: str, value: str) -> Cure | None:
     """Tell a number with a comma, a unit, or something else at its side."""
     home = home_of(key)
-    number = number_in(value.strip(";, \"'") if home else value.rstrip(";, "))
+    number = number_in(value.translate(_CURLY).strip(";, \"'") if home else value.rstrip(";, "))
     if number is None or (home and not KEYS[home][key].is_number):
         return None
     mended = f"{key} = {number}"

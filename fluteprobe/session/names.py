@@ -39,8 +39,8 @@ _LIKELY_WORDS: dict[str, Breath] = {
 _PASSED_OVER = (
     "copy", "of", "kopie", "von", "copie", "de", "copia", "di", "cópia", "kopia", "kopi", "af", "kopio",
     "копия", "duplicate", "take", "takes", "recording", "rec", "aufnahme", "no", "nr", "blown", "breath",
-    "fingering", "wav", "wave", "aif", "aiff", "caf", "flac", "ogg", "oga", "opus", "mp3", "m4a", "mp4",
-    "aac", "3gp", "amr",
+    "flute", "fingering", "wav", "wave", "aif", "aiff", "caf", "flac", "ogg", "oga", "opus", "mp3", "m4a",
+    "mp4", "aac", "3gp", "amr",
 )  # fmt: skip
 _NEIGHBOUR_KEYS = str.maketrans({**dict.fromkeys("czsd", "x"), **dict.fromkeys("pilkq", "o")})
 _MARKS = re.compile(r"\(\s*([0-9]{1,9})\s*\)|([^\W_]+)")
@@ -293,18 +293,17 @@ def _cure(parts: _Parts, holes: int | None, ending: str, others: Sequence[str]) 
 
 def _nearest(parts: _Parts, holes: int | None) -> TakeName | None:
     """Return what a name most likely means, or None."""
-    fits = [
-        states
-        for states in parts.states
-        if len(states) == holes or (holes is None and len(states) <= MAX_HOLES)
-    ]
-    states = fits[0] if len(set(fits)) == 1 else None if fits else _nearest_states(parts.unknown, holes)
+    fits = {states for states in parts.states if len(states) == (holes or min(len(states), MAX_HOLES))}
+    states = _nearest_states(parts.unknown, holes) if not fits else fits.pop() if len(fits) == 1 else None
     if states is None:
         return None
-    numbers = [number for number in (*parts.numbers, *parts.copies) if 1 <= number <= HIGHEST_NUMBER]
-    breath = parts.breaths[0] if parts.breaths else _nearest_breath(parts.unknown)
+    likely = _nearest_breath(parts.unknown)
+    numbers = () if parts.unknown and not likely else parts.numbers or parts.copies
+    alone = len(numbers) == 1 and 1 <= numbers[0] <= HIGHEST_NUMBER
     return TakeName(
-        fingering=Fingering(states), breath=breath or "normal", number=numbers[0] if numbers else None
+        fingering=Fingering(states),
+        breath=parts.breaths[0] if parts.breaths else likely or "normal",
+        number=numbers[0] if alone else None,
     )
 
 
