@@ -18,6 +18,7 @@ from fluteprobe import __version__
 from fluteprobe.cli.begin import begin
 from fluteprobe.cli.chart import chart
 from fluteprobe.cli.compare import compare
+from fluteprobe.cli.forecast import forecast
 from fluteprobe.cli.hear import hear
 from fluteprobe.cli.measure import measure
 from fluteprobe.cli.plays import plays
@@ -64,7 +65,7 @@ class Door(click.Group):
 
 @click.group(
     cls=Door,
-    commands=[begin, sheet, hear, measure, chart, compare, plays, tuning],
+    commands=[begin, sheet, hear, measure, chart, forecast, compare, plays, tuning],
     context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 88, "color": False},
 )
 @click.version_option(__version__, "-V", "--version", prog_name="fluteprobe")

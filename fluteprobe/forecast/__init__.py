@@ -2,9 +2,10 @@
 
 Conventions: as in `values`.
 
-A tube is fitted to everything heard, tones and breath resonances, and foretells every fingering that can matter
-(flute/fit.py, flute/joint.py). What was measured in a higher register is foretold too, without the tones that
-gave it, so that forecast and measurement can be compared. A flute that the model cannot fit gets no forecast.
+A tube is fitted to everything heard, tones and breath resonances, and foretells every fingering that can
+matter (flute/fit.py, flute/joint.py). What was measured in a higher register is foretold too, without the
+tones that gave it, so that forecast and measurement can be compared. A flute that the model cannot fit gets
+no forecast.
 """
 
 from collections.abc import Collection, Sequence

@@ -1,8 +1,8 @@
 """What a forecast is: fingerings foretold, how the tube fits, what a maker may learn.
 
-Conventions: frequencies in Hz, deviations in cents from the nearest note of equal temperament at the session's
-A4, as played (in the session's air); `uncertainty_cents` is standard (k = 1) and takes in how the breath bends a
-tone. Registers are numbers of resonances. None is "not known".
+Conventions: frequencies in Hz, deviations in cents from the nearest note of equal temperament at the
+session's A4, as played (in the session's air); `uncertainty_cents` is standard (k = 1) and takes in how the
+breath bends a tone. Registers are numbers of resonances. None is "not known".
 """
 
 from dataclasses import dataclass
