@@ -1,5 +1,7 @@
 """`fluteprobe compare`: several flutes, or one flute before and after work, side by side."""
 
+from collections.abc import Iterator
+from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -12,6 +14,16 @@ if TYPE_CHECKING:
 
 FORMATS = ("pdf", "png", "svg")
 PLACE = Path("reports", "comparison")
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Wish:
+    """How the pages are to look, and whether every flute gets a sheet of its own."""
+
+    paper: str
+    suffix: str
+    tolerance_cents: float
+    with_sheets: bool
 
 
 @click.command(short_help="Compare flutes, or one flute before and after work.")
@@ -109,7 +121,9 @@ def compare(  # noqa: PLR0913, PLR0917  (click passes every option by name)
         screen.say(told(comparison))
     for caution in comparison.cautions:
         screen.say(f"Caution: {caution}", err=True)
-    screen.tell_written(_written(comparison, json_text(values), out or PLACE))
+    wish = Wish(paper=paper, suffix=suffix, tolerance_cents=tolerance_cents, with_sheets=sheets)
+    folder = out or PLACE
+    screen.tell_written([*_written(comparison, json_text(values), folder), *_drawn(comparison, folder, wish)])
     ctx.exit(1 if sources.faults else 0)
 
 
@@ -122,3 +136,16 @@ def _written(comparison: "Comparison", as_json: str, folder: Path) -> list[Path]
     values, table = folder / "comparison.json", folder / "comparison.csv"
     replace_files({values: as_json.encode("utf-8"), table: comparison_csv(comparison).encode("utf-8")})
     return [values, table]
+
+
+def _drawn(comparison: "Comparison", folder: Path, wish: Wish) -> Iterator[Path]:
+    """Draw the pages and name the files written."""
+    from fluteprobe.pages.comparison import write_comparison
+
+    target = folder / f"comparison.{wish.suffix}"
+    yield from write_comparison(comparison, target, paper=wish.paper, tolerance_cents=wish.tolerance_cents)
+    if wish.with_sheets:
+        from fluteprobe.pages.student import write_students
+
+        sheets = folder / f"students.{wish.suffix}"
+        yield from write_students(comparison, sheets, paper=wish.paper, tolerance_cents=wish.tolerance_cents)

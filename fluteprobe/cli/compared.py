@@ -17,6 +17,7 @@ from fluteprobe.compare.values import (
     Pair,
     Parts,
     Row,
+    Verdict,
 )
 
 MOST_COLUMNS = 6  # flutes whose numbers fit beside one another
@@ -56,8 +57,9 @@ def _table(comparison: Comparison) -> Line:
     if not comparison.rows:
         return ["No flute gave a note of known register."]
     first = ["fingering", "register", "note"] if comparison.by == "fingering" else ["note", "register"]
-    few = len(comparison.flutes) <= MOST_COLUMNS
-    titles, lines = _two(comparison) if len(comparison.flutes) == 2 else _many(comparison, few=few)
+    flutes = len(comparison.flutes)
+    columns = _two if flutes == 2 else _few if flutes <= MOST_COLUMNS else _many
+    titles, lines = columns(comparison)
     named = [_named(comparison, row) for row in comparison.rows]
     table = [[*first, *titles], *([*name, *line] for name, line in zip(named, lines, strict=True))]
     words = {"fingering", "note", ""}
@@ -84,7 +86,7 @@ def _two(comparison: Comparison) -> tuple[Line, list[Line]]:
     same_build = comparison.by == "fingering"
     lines = []
     for k, row in enumerate(comparison.rows):
-        one = ["–" if cell is None else _off(cell.cents, cell.uncertainty_cents) for cell in row.cells]
+        one = ["–" if cell is None else _signed(cell.cents) for cell in row.cells]
         lines.append([*one, *_apart(differences.get(k), same_build=same_build)])
     return ["1", "2", "1 − 2", "", "note alone" if same_build else "", "", "beats"], lines
 
@@ -95,26 +97,35 @@ def _apart(difference: Difference | None, *, same_build: bool) -> Line:
     alone = ["", ""]
     if same_build and difference.alone_cents is not None:
         uncertainty = difference.alone_uncertainty_cents
-        alone = [_off(difference.alone_cents, uncertainty), difference.alone_verdict or ""]
+        alone = [_off(difference.alone_cents, uncertainty), _mark(difference.alone_verdict)]
     whole = _off(difference.cents, difference.uncertainty_cents)
-    return [whole, difference.verdict or "", *alone, f"{difference.beats.rate_hz:.1f}"]
+    return [whole, _mark(difference.verdict), *alone, f"{difference.beats.rate_hz:.1f}"]
 
 
-def _many(comparison: Comparison, *, few: bool) -> tuple[Line, list[Line]]:
-    """Return the columns of several flutes: each, where there is room, and what the group gives."""
-    flutes = len(comparison.flutes)
-    titles = [str(k) for k in range(1, flutes + 1)] if few else ["lowest", "highest"]
+def _mark(verdict: Verdict | None) -> str:
+    return {"different": "*", "likely": "(*)"}.get(verdict or "", "")
+
+
+def _few(comparison: Comparison) -> tuple[Line, list[Line]]:
+    """Return the columns of a few flutes: each of them, their spread and, where there is room, the beats."""
+    titles = [str(k) for k in range(1, len(comparison.flutes) + 1)]
     lines = []
     for row in comparison.rows:
         cells = ["–" if cell is None else _signed(cell.cents) for cell in row.cells]
-        ends = cells if few else _ends(row)
-        scatter = "" if row.scatter_cents is None else f"{row.scatter_cents:.1f}"
         spread = "" if row.spread_cents is None else f"{row.spread_cents:.1f}"
         beats = "" if row.fastest is None else f"{row.fastest.rate_hz:.1f}"
-        lines.append(
-            [*ends, f"{len(row.played)} of {flutes}", _signed(row.middle_cents), scatter, spread, beats]
-        )
-    return [*titles, "played", "middle", "scatter", "spread", "beats"], lines
+        lines.append([*cells, spread, *([beats] if len(cells) < MOST_COLUMNS else [])])
+    return [*titles, "spread", *(["beats"] if len(titles) < MOST_COLUMNS else [])], lines
+
+
+def _many(comparison: Comparison) -> tuple[Line, list[Line]]:
+    """Return the columns of many flutes: who is lowest and highest, and what the group gives."""
+    lines = []
+    for row in comparison.rows:
+        scatter = "" if row.scatter_cents is None else f"{row.scatter_cents:.1f}"
+        played = f"{len(row.played)} of {len(row.cells)}"
+        lines.append([*_ends(row), played, _signed(row.middle_cents), scatter])
+    return ["lowest", "highest", "played", "middle", "scatter"], lines
 
 
 def _ends(row: Row) -> list[str]:
@@ -123,14 +134,18 @@ def _ends(row: Row) -> list[str]:
 
 
 def _explained(comparison: Comparison) -> list[str]:
-    words = "cents: off the note in equal temperament, above 0 is sharp"
+    words = ["cents: off the note in equal temperament, above 0 is sharp"]
     if len(comparison.flutes) == 2:
-        words += ", ± standard uncertainty"
+        words += ["± standard uncertainty", "*: different, (*): likely"]
         if comparison.by == "fingering":
-            words += "; note alone: the difference less that of the flutes as wholes"
+            words += ["note alone: the difference less that of the flutes as wholes"]
+    elif len(comparison.flutes) <= MOST_COLUMNS:
+        words += ["spread: highest minus lowest"]
     else:
-        words += "; middle: the median, scatter: the robust standard deviation, spread: highest minus lowest"
-    return wrap(f"{words}; beats: a second, between the two farthest apart", WIDTH)
+        words += ["lowest, highest: and whose it is", "middle: median", "scatter: robust standard deviation"]
+    if len(comparison.flutes) < MOST_COLUMNS:
+        words += ["beats: a second, between the two farthest apart"]
+    return wrap("; ".join(words), WIDTH)
 
 
 # --- findings ----------------------------------------------------------------------------------------
@@ -291,7 +306,7 @@ def _note(note: str) -> str:
 
 def _off(cents: float, uncertainty_cents: float | None) -> str:
     """Return a number of cents with its uncertainty, which is never told as less than 0.1."""
-    return f"{_signed(cents)} ± {max(uncertainty_cents or 0.0, 0.1):4.1f}"
+    return f"{_signed(cents)} ± {max(uncertainty_cents or 0.0, 0.1):.1f}"
 
 
 def _signed(cents: float) -> str:
