@@ -13,13 +13,14 @@ from fluteprobe.flute.scales import Scale, tonic_name
 from fluteprobe.repertoire.keyboard import Key
 from fluteprobe.repertoire.report import note_name
 from fluteprobe.repertoire.scales import ScaleFit
-from fluteprobe.repertoire.sounds import Match, Sound, Standard, Way
-from fluteprobe.repertoire.tunes import TuneFit
+from fluteprobe.repertoire.sounds import Grade, Match, Sound, Standard, Way
+from fluteprobe.repertoire.tunes import TuneFit, short_notes
 from fluteprobe.score.tune import Tune, TuneNote
 from fluteprobe.session import FluteFacts, printable
 
 MOST_TRANSPOSITIONS = 6
 MOST_PLACES = 8
+MOST_NAMED = 5
 WORTH_A_LOOK = 0.5  # share of a tune below which a transposition is not worth a line
 
 _NUMBERS = {"cents", "register", "surely", "perhaps", "off", "A4", "fingers", "short", "Hz", "key"}
@@ -59,18 +60,18 @@ def _keys(fits: Sequence[ScaleFit], *, show_all: bool) -> list[str]:
     shown = [fit for fit in fits if show_all or fit.grade != "not"]
     if not shown:
         near = min(fits, key=lambda fit: len(fit.missing) - 0.01 * (fit.run[1] - fit.run[0]))
-        return [
-            f"  no octave in any key; nearest is {_note(tonic_name(near.tonic))}, without {_missing(near)}"
-        ]
+        key, missing = _note(tonic_name(near.tonic)), _named(near, "not")
+        return [f"  no octave in any key; nearest is {key}, without {missing}"]
     moving = len({round(fit.a4_hz, 1) for fit in fits}) > 1
-    table = [["  tonic", "octave", "A4", "unbroken", "not playable"]]
+    table = [["  tonic", "octave", "A4", "unbroken", "doubtful", "not"]]
     table += [
         [
             f"  {_note(tonic_name(fit.tonic))}",
             _CAN[fit.grade],
             f"{fit.a4_hz:.1f}",
             _run(fit),
-            _missing(fit),
+            _named(fit, "perhaps"),
+            _named(fit, "not"),
         ]
         for fit in shown
     ]
@@ -88,9 +89,10 @@ def _run(fit: ScaleFit) -> str:
     return f"{end - start}: {low} to {high}" if end - start > 1 else f"1: {low}"
 
 
-def _missing(fit: ScaleFit) -> str:
-    names = [_note(note_name(match.target_semitones)) for match in fit.missing]
-    return " ".join([*names[:6], "…"] if len(names) > 6 else names) or "–"
+def _named(fit: ScaleFit, grade: Grade) -> str:
+    """Return the notes of one grade, the first few of them."""
+    names = [_note(note_name(match.target_semitones)) for match in fit.notes if match.grade == grade]
+    return " ".join([*names[:MOST_NAMED], "…"] if len(names) > MOST_NAMED else names) or "–"
 
 
 def _one_key(fit: ScaleFit) -> str:
@@ -149,7 +151,7 @@ def tune_told(tune: Tune, fits: Sequence[TuneFit], *, show_all: bool) -> str:
         "",
         f"Moved {moved(fits[0].semitones)}:" if fits[0].semitones else "As written:",
         *_notes(fits[0].matches),
-        *_short(fits[0]),
+        *_short(tune, fits[0]),
     ])  # fmt: skip
 
 
@@ -179,7 +181,7 @@ def _fit_row(fit: TuneFit) -> list[str]:
         "–" if fit.off_cents is None else f"{fit.off_cents:.1f}",
         f"{fit.a4_hz:.1f}",
         "–" if fit.moves is None else f"{fit.moves:.1f}",
-        str(len(fit.short)) if fit.short else "–",
+        str(fit.short) if fit.short else "–",
     ]
 
 
@@ -188,14 +190,14 @@ def _span(tune: Tune) -> str:
     return f"{_note(note_name(min(pitches)))} to {_note(note_name(max(pitches)))}"
 
 
-def _short(fit: TuneFit) -> Iterator[str]:
+def _short(tune: Tune, fit: TuneFit) -> Iterator[str]:
     """Return where each pitch that cannot be played comes in the tune."""
     if not fit.short:
         return
     yield ""
     yield "Falls short:"
     by_pitch: dict[float, list[TuneNote]] = {}
-    for note in fit.short:
+    for note in short_notes(tune, fit):
         by_pitch.setdefault(note.pitch_semitones, []).append(note)
     for pitch, notes in sorted(by_pitch.items()):
         places = [f"bar {note.bar} beat {note.beat:.3g}" for note in notes[:MOST_PLACES]]

@@ -202,6 +202,8 @@ def _tune(path: Path, part: str | None) -> "Tune":
         require_playable(tune)
     except ScoreError as error:
         raise SessionError(f"{printable(str(path))}: {printable(str(error))}") from None
+    except OSError as error:
+        raise SessionError(f"{printable(str(path))} cannot be read: {error.strerror}") from None
     return tune
 
 

@@ -16,7 +16,7 @@ from fluteprobe.flute.tuning import Note
 from fluteprobe.repertoire.keyboard import Address, Key
 from fluteprobe.repertoire.scales import ScaleFit
 from fluteprobe.repertoire.sounds import Match, Sound, Standard, Way
-from fluteprobe.repertoire.tunes import TuneFit
+from fluteprobe.repertoire.tunes import TuneFit, short_notes
 from fluteprobe.score.tune import Tune, TuneNote
 
 PLAYS_SCHEMA = "fluteprobe/plays/1"
@@ -63,7 +63,9 @@ def tune_json(tune: Tune, fits: Sequence[TuneFit]) -> dict[str, Any]:
         "cautions": list(tune.cautions),
         "transpositions": [_fit_json(fit) for fit in fits],
         "fingerings": [_match_json(match) for match in fits[0].matches] if fits else [],
-        "short": [_short_json(note, fits[0].semitones) for note in fits[0].short] if fits else [],
+        "short": [_short_json(note, fits[0].semitones) for note in short_notes(tune, fits[0])]
+        if fits
+        else [],
     }
 
 
@@ -129,7 +131,7 @@ def _fit_json(fit: TuneFit) -> dict[str, Any]:
         "expected": _rounded(fit.expected, 4),
         "off_cents": None if fit.off_cents is None else _rounded(fit.off_cents, 2),
         "moves": None if fit.moves is None else _rounded(fit.moves, 2),
-        "short": len(fit.short),
+        "short": fit.short,
     }
 
 

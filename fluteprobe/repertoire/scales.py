@@ -5,7 +5,7 @@ from half a semitone under its lowest tone to half a semitone over its highest. 
 its best octave, from tonic to tonic.
 """
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 
 from fluteprobe.flute.scales import Scale
@@ -55,7 +55,7 @@ def scale_fit(scale: Scale, tonic: int, compass: Compass, standard: Standard) ->
     )
 
 
-def suited_offset_cents(weights: dict[float, float], compass: Compass, standard: Standard) -> float:
+def suited_offset_cents(weights: Mapping[float, float], compass: Compass, standard: Standard) -> float:
     """Return how far to move A4 from the standard's so that most of some notes is within the tolerance."""
     reach = REACH_CENTS + standard.tolerance_cents
     deviations = {

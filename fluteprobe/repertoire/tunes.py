@@ -5,7 +5,7 @@ of the tune into the flute's compass is tried, octaves among them. Notes count b
 where none has a duration, each counts once. Shares run from 0 to 1.
 """
 
-from collections import defaultdict
+from collections import Counter, defaultdict
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from itertools import pairwise
@@ -24,9 +24,9 @@ class TuneFit:
 
     `surely` and `perhaps` are the shares of its time that can be played so; `expected` weighs each note by
     the chance that its best fingering speaks in tune. `off_cents` is the root mean square deviation
-    of what can be played. `moves` is how many fingers move from note to note, on average, a change of
-    register counting as one. `matches` has each pitch once, low to high, transposed; `short` are the notes
-    that fall short, as the score has them, in the order of time.
+    of what can be played. `moves` is how many fingers move between neighbouring notes, on average, a change
+    of register counting as one. `matches` has each pitch once, low to high, transposed; `short` is how
+    many notes cannot be played.
     """
 
     semitones: int
@@ -37,7 +37,7 @@ class TuneFit:
     off_cents: float | None
     moves: float | None
     matches: tuple[Match, ...]
-    short: tuple[TuneNote, ...]
+    short: int
 
 
 def require_playable(tune: Tune) -> None:
@@ -58,42 +58,24 @@ def tune_fits(tune: Tune, compass: Compass, standard: Standard) -> tuple[TuneFit
     Best is what can be expected in tune, to the nearest 1 %; then what needs fewer fingers moved, to the
     nearest tenth of a finger; then what is nearer in tune.
     """
-    weights = _weights(tune.notes)
-    if not compass.sounds or not weights:
+    if not compass.sounds or not tune.notes:
         return ()
-    low = floor(compass.sounds[0].pitch_semitones - standard.offset_cents / 100.0 - max(weights))
-    high = ceil(compass.sounds[-1].pitch_semitones - standard.offset_cents / 100.0 - min(weights))
-    fits = (tune_fit(tune, semitones, compass, standard) for semitones in range(low, high + 1))
+    outline, a4 = _outline(tune.notes), standard.offset_cents / 100.0
+    low = floor(compass.sounds[0].pitch_semitones - a4 - max(outline.weights))
+    high = ceil(compass.sounds[-1].pitch_semitones - a4 - min(outline.weights))
+    fits = (_fit(outline, semitones, compass, standard) for semitones in range(low, high + 1))
     return tuple(sorted(fits, key=_rank))
 
 
 def tune_fit(tune: Tune, semitones: int, compass: Compass, standard: Standard) -> TuneFit:
     """Return how a flute plays a tune in one transposition, by so many semitones up."""
-    weights = {pitch + semitones: weight for pitch, weight in _weights(tune.notes).items()}
-    offset = standard.offset_cents
-    if standard.best_a4:
-        offset += suited_offset_cents(weights, compass, standard)
-    matches = {pitch: compass.match(pitch, offset, standard.tolerance_cents) for pitch in sorted(weights)}
-    total = sum(weights.values())
-    shares = {grade: _share(matches, weights, grade) / total for grade in ("surely", "perhaps")}
-    played = {pitch: match.ways[0] for pitch, match in matches.items() if match.ways}
-    return TuneFit(
-        semitones=semitones,
-        a4_hz=440.0 * 2.0 ** (offset / 1200.0),
-        surely=shares["surely"],
-        perhaps=shares["perhaps"],
-        expected=sum(weights[pitch] * way.chance for pitch, way in played.items()) / total,
-        off_cents=_off_cents({pitch: way.deviation_cents for pitch, way in played.items()}, weights),
-        moves=_moves(
-            [
-                played[note.pitch_semitones + semitones].sound
-                for note in tune.notes
-                if note.pitch_semitones + semitones in played
-            ]
-        ),
-        matches=tuple(matches.values()),
-        short=tuple(note for note in tune.notes if note.pitch_semitones + semitones not in played),
-    )
+    return _fit(_outline(tune.notes), semitones, compass, standard)
+
+
+def short_notes(tune: Tune, fit: TuneFit) -> tuple[TuneNote, ...]:
+    """Return the notes that cannot be played, as the score has them, in the order of time."""
+    missing = {match.target_semitones for match in fit.matches if match.grade == "not"}
+    return tuple(note for note in tune.notes if note.pitch_semitones + fit.semitones in missing)
 
 
 def finger_moves(one: Sound, other: Sound) -> int:
@@ -102,13 +84,47 @@ def finger_moves(one: Sound, other: Sound) -> int:
     return sum(before != after for before, after in states) + (one.register != other.register)
 
 
-def _weights(notes: Sequence[TuneNote]) -> dict[float, float]:
-    """Return for how long each pitch is held, in quarter notes; where none is, how often it comes."""
-    held = any(note.duration_quarters > 0.0 for note in notes)
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Outline:
+    """A tune in brief: for how long each pitch is held, how often it comes, and how often after which."""
+
+    weights: Mapping[float, float]
+    times: Mapping[float, int]
+    steps: Mapping[tuple[float, float], int]
+
+
+def _outline(notes: Sequence[TuneNote]) -> _Outline:
+    """Return a tune in brief; where no note has a duration, each weighs the same."""
+    pitches = [note.pitch_semitones for note in notes]
+    times = Counter(pitches)
     weights: dict[float, float] = defaultdict(float)
     for note in notes:
-        weights[note.pitch_semitones] += note.duration_quarters if held else 1.0
-    return dict(weights)
+        weights[note.pitch_semitones] += note.duration_quarters
+    held = any(weight > 0.0 for weight in weights.values())
+    return _Outline(weights=weights if held else times, times=times, steps=Counter(pairwise(pitches)))
+
+
+def _fit(outline: _Outline, semitones: int, compass: Compass, standard: Standard) -> TuneFit:
+    weights, offset = outline.weights, standard.offset_cents
+    if standard.best_a4:
+        targets = {pitch + semitones: weight for pitch, weight in weights.items()}
+        offset += suited_offset_cents(targets, compass, standard)
+    matches = {
+        pitch: compass.match(pitch + semitones, offset, standard.tolerance_cents) for pitch in sorted(weights)
+    }
+    played = {pitch: match.ways[0] for pitch, match in matches.items() if match.ways}
+    total = sum(weights.values())
+    return TuneFit(
+        semitones=semitones,
+        a4_hz=440.0 * 2.0 ** (offset / 1200.0),
+        surely=_share(matches, weights, "surely") / total,
+        perhaps=_share(matches, weights, "perhaps") / total,
+        expected=sum(weights[pitch] * way.chance for pitch, way in played.items()) / total,
+        off_cents=_off_cents({pitch: way.deviation_cents for pitch, way in played.items()}, weights),
+        moves=_moves(outline.steps, {pitch: way.sound for pitch, way in played.items()}),
+        matches=tuple(matches.values()),
+        short=sum(times for pitch, times in outline.times.items() if pitch not in played),
+    )
 
 
 def _share(matches: Mapping[float, Match], weights: Mapping[float, float], grade: str) -> float:
@@ -123,11 +139,13 @@ def _off_cents(deviations: Mapping[float, float], weights: Mapping[float, float]
     return sqrt(sum(weights[pitch] * off**2 for pitch, off in deviations.items()) / total)
 
 
-def _moves(sounds: Sequence[Sound]) -> float | None:
-    """Return how many fingers move from one tone to the next, on average; None for fewer than two tones."""
-    if len(sounds) < 2:
+def _moves(steps: Mapping[tuple[float, float], int], sounds: Mapping[float, Sound]) -> float | None:
+    """Return how many fingers move between neighbours that can both be played; None where there are none."""
+    able = {step: times for step, times in steps.items() if step[0] in sounds and step[1] in sounds}
+    if not able:
         return None
-    return sum(finger_moves(one, other) for one, other in pairwise(sounds)) / (len(sounds) - 1)
+    moved = sum(finger_moves(sounds[low], sounds[high]) * times for (low, high), times in able.items())
+    return moved / sum(able.values())
 
 
 def _rank(fit: TuneFit) -> tuple[float, float, float, int]:

@@ -10,10 +10,11 @@ from bisect import bisect_right
 from collections import defaultdict
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
+from itertools import islice
 
 from fluteprobe.score.tune import MOST_NOTES, Part, Score, ScoreError, TuneNote
 
-LARGEST_BYTES = 8_000_000
+LARGEST_BYTES = 4_000_000
 LEGATO_SHARE = 0.3  # of a note: players and sequencers overlap notes by less
 TICKS_PER_QUARTER = 480
 QUARTERS_PER_MINUTE = 60
@@ -21,6 +22,9 @@ QUARTERS_PER_MINUTE = 60
 _DRUMS = 9
 _GAP_TICKS = 24  # between two notes of a scale
 _HEADER_BYTES = 14
+_MOST_TRACKS = 1000
+_MOST_PRESSED = 15  # times that one key may be down at once, and one more
+_TOO_MANY = f"it has more than {MOST_NOTES} notes: export the melody alone"
 _LATEST_TICK = 1 << 40
 _DATA_BYTES = {0x80: 2, 0x90: 2, 0xA0: 2, 0xB0: 2, 0xC0: 1, 0xD0: 1, 0xE0: 2}
 _TRACK_NAME, _LYRIC, _END_OF_TRACK, _TEMPO, _TIME_SIGNATURE = 0x03, 0x05, 0x2F, 0x51, 0x58
@@ -61,9 +65,10 @@ def read_midi(content: bytes) -> Score:
     if len(content) > LARGEST_BYTES:
         raise ScoreError(f"it is larger than {LARGEST_BYTES // 1_000_000} MB: export the melody alone")
     ticks_per_quarter = _ticks_per_quarter(content)
-    tracks = [_read_track(chunk, k) for k, chunk in enumerate(_track_chunks(content), start=1)]
+    chunks = islice(_track_chunks(content), _MOST_TRACKS)
+    tracks = [_read_track(chunk, k) for k, chunk in enumerate(chunks, start=1)]
     if sum(len(notes) for track in tracks for notes in track.notes.values()) > MOST_NOTES:
-        raise ScoreError(f"it has more than {MOST_NOTES} notes: export the melody alone")
+        raise ScoreError(_TOO_MANY)
     bars = _Bars([each for track in tracks for each in track.signatures], ticks_per_quarter)
     whole = bool(tracks) and all(track.is_whole for track in tracks)
     return Score(
@@ -163,9 +168,11 @@ def _take_channel(  # noqa: PLR0913, PLR0917
     if kind in {0x80, 0x90} and channel != _DRUMS:
         starts = track.pressed[channel, key]
         if kind == 0x90 and chunk[place + 1] > 0:
-            starts.append(tick)
+            starts[_MOST_PRESSED:] = [tick]
         elif starts:
             track.notes[channel].append((starts.pop(0), tick, key))
+            if len(track.notes[channel]) > MOST_NOTES:
+                raise ScoreError(_TOO_MANY)
     return place + _DATA_BYTES[kind]
 
 

@@ -18,7 +18,7 @@ from xml.parsers import expat
 
 from fluteprobe.score.tune import MOST_NOTES, Part, Score, ScoreError, TuneNote
 
-LARGEST_BYTES = 32_000_000  # of XML, also after decompression
+LARGEST_BYTES = 16_000_000  # of XML, also after decompression
 LARGEST_ARCHIVE_BYTES = 8_000_000
 
 _ROOTS = {"score-partwise": ("part", "measure"), "score-timewise": ("measure", "part")}
@@ -26,6 +26,11 @@ _STEPS = {"C": 0, "D": 2, "E": 4, "F": 5, "G": 7, "A": 9, "B": 11}
 _DEEPEST = 64
 _LONGEST_TEXT = 10_000
 _MOST_ELEMENTS = 200_000  # in one bar
+_MOST_PARTS = 1000
+_BROKEN_ARCHIVE = (  # what zipfile raises for one
+    zipfile.BadZipFile, zlib.error, EOFError, OSError, RuntimeError, NotImplementedError,
+    LookupError, ValueError,
+)  # fmt: skip
 _CONTAINER = "META-INF/container.xml"
 
 
@@ -42,12 +47,10 @@ def read_compressed(content: bytes) -> Score:
     try:
         with zipfile.ZipFile(BytesIO(content)) as archive:
             return read_xml(_unpacked(archive, _root_file(archive)))
-    except (zipfile.BadZipFile, zlib.error, EOFError, RuntimeError, NotImplementedError, OSError) as error:
-        raise ScoreError(f"it cannot be unpacked ({error}): export the score again") from None
-    except (ValueError, IndexError) as error:
-        if isinstance(error, ScoreError):
-            raise
-        raise ScoreError("it cannot be unpacked: export the score again") from None
+    except ScoreError:
+        raise
+    except _BROKEN_ARCHIVE:
+        raise ScoreError("it is a damaged or encrypted archive: export the score again") from None
 
 
 def read_xml(content: bytes) -> Score:
@@ -151,7 +154,7 @@ class _Reader:
         self._parts: dict[str, _PartState] = {}
         self._title: str | None = None
         self._outer = self._inner = ""
-        self._count = self._held = 0
+        self._count = self._held = self._kept = 0  # notes; elements in memory, and those that stay
 
     def score(self) -> Score:
         parts = (Part(name=part.name, notes=tuple(part.notes)) for part in self._parts.values())
@@ -166,11 +169,11 @@ class _Reader:
             self._outer, self._inner = _ROOTS[tag]
         if len(self._open) >= _DEEPEST:
             raise ScoreError("its elements are nested too deeply for a score")
-        self._held = self._held + 1 if len(self._open) > 2 else 0
+        self._held += 1
         if self._held > _MOST_ELEMENTS:
-            raise ScoreError(
-                f"a bar of it has more than {_MOST_ELEMENTS} elements: it is no score for a flute"
-            )
+            raise ScoreError(f"a bar has more than {_MOST_ELEMENTS} elements: it is no score for a flute")
+        if tag == self._inner and len(self._open) == 2:
+            self._kept = self._held - 1
         element = Element(tag, attributes)
         if len(self._open) > 1:
             self._open[-1].append(element)
@@ -185,17 +188,26 @@ class _Reader:
         if tag == self._inner and len(self._open) == 2 and self._open[1].tag == self._outer:
             self._take_bar(self._open[1], element)
             self._open[1].remove(element)
+            self._held = self._kept
         elif tag == "score-part":
             identity = element.get("id", "")
-            self._parts.setdefault(identity, _PartState(_said(element, "part-name") or f"part {identity}"))
+            self._part(identity, _said(element, "part-name"))
         elif tag in {"work-title", "movement-title"}:
             self._title = self._title or (element.text or "").strip() or None
+
+    def _part(self, identity: str, name: str = "") -> _PartState:
+        """Return what is known of a part, in the order in which parts are first named."""
+        if identity not in self._parts:
+            if len(self._parts) >= _MOST_PARTS:
+                raise ScoreError(f"it has more than {_MOST_PARTS} parts: export one part alone")
+            self._parts[identity] = _PartState(name or f"part {identity}")
+        return self._parts[identity]
 
     def _take_bar(self, outer: Element, inner: Element) -> None:
         """Read one bar of one part."""
         part, bar = (outer, inner) if self._inner == "measure" else (inner, outer)
         identity, number = part.get("id", ""), bar.get("number", "?")[:20]
-        state = self._parts.setdefault(identity, _PartState(f"part {identity}"))
+        state = self._part(identity)
         before = len(state.notes)
         _read_bar(state, inner, number)
         self._count += len(state.notes) - before
