@@ -228,7 +228,7 @@ def _entry(values: Any, fingering: Reader[Fingering]) -> Entry:
         stretch_cents=field(values, "stretch_cents", _perhaps_number),
         takes=field(values, "takes", _takes),
         tones=field(values, "tones", _one_or_more),
-        reliability=field(values, "reliability", _share),
+        reliability=round(field(values, "reliability", _share), 4),  # as it is written
     )
 
 

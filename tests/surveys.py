@@ -1,10 +1,14 @@
 """Invented surveys for the tests of the pages: flutes, makers and numbers are made up and measure nothing."""
 
+import copy
+from dataclasses import replace
+from typing import Any
+
 from fluteprobe.flute.fingering import Breath, Fingering
-from fluteprobe.flute.register import Register, RegisterCall
+from fluteprobe.flute.register import Evidence, Register, RegisterCall
 from fluteprobe.flute.tuning import nearest_note
 from fluteprobe.session import FluteFacts, Problem, Sitting
-from fluteprobe.sound.tone import Kind, Tone
+from fluteprobe.sound.tone import BreathResonance, Kind, Partial, Tone, Vibrato
 from fluteprobe.survey import Entry, Reading, Survey
 
 A4_HZ = 440.0
@@ -221,3 +225,56 @@ def high_flute() -> Survey:
         flute=FluteFacts(name="Firecrest", holes=6), sitting=Sitting(), readings=(),
         entries=(*entries, *upper), problems=(),
     )  # fmt: skip
+
+
+def full_reading() -> Reading:
+    """Return a reading in which everything is known."""
+    plain = reading("oxxxxx", breath="over", kind="tone", frequency_hz=938.12345678)
+    tone = replace(
+        plain.tone,
+        uncertainty_cents=0.0123456,
+        partials=(
+            Partial(order=1, frequency_hz=938.12345678, level_db=-0.0),
+            Partial(order=2, frequency_hz=1876.2, level_db=-17.256),
+        ),
+        harmonic_to_noise_db=31.23456,
+        breath_resonances=(
+            BreathResonance(frequency_hz=470.123, width_hz=12.345, prominence_db=14.567, chance=1.23456e-7),
+        ),
+        drift_cents=-0.00001,
+        vibrato=Vibrato(rate_hz=5.12345, extent_cents=14.5678),
+        attack_ms=41.26,
+        cautions=("clipped: record with less gain",),
+    )
+    call = RegisterCall(
+        register=2,
+        probability={1: 0.01, 2: 0.98, 3: 0.01},
+        evidence=(Evidence(source="ladder", favours=2, log_odds=3.89182, detail="above the ladder"),),
+    )
+    return replace(plain, tone=tone, call=call, cents_at_reference=1.23456)
+
+
+def full_survey() -> Survey:
+    """Return a flute of which everything is known, one tone in every detail."""
+    survey = heron()
+    return replace(
+        survey,
+        flute=replace(
+            survey.flute,
+            holes_mm=((105.0, 9.0), (127.0, 9.5)),
+            bore_mm=19.0,
+            length_mm=385.0,
+            tolerance_mm=0.5,
+        ),
+        readings=(full_reading(), *survey.readings),
+    )
+
+
+def changed(values: dict[str, Any], path: tuple[Any, ...], value: Any) -> dict[str, Any]:
+    """Return a copy of JSON values with one of them replaced."""
+    new = copy.deepcopy(values)
+    place: Any = new
+    for step in path[:-1]:
+        place = place[step]
+    place[path[-1]] = value
+    return new

@@ -1,6 +1,5 @@
-"""Measurements on disk: the JSON contract and its schemas, the table for spreadsheets, and the way back."""
+"""Measurements on disk: the JSON contract and its schemas, and the table for spreadsheets."""
 
-import copy
 import csv
 import io
 import json
@@ -10,13 +9,21 @@ from typing import Any
 
 import jsonschema
 import pytest
-from surveys import first_register_only, heron, nothing_heard, one_take, reading, sixty_entries, strange_words
+from surveys import (
+    changed,
+    first_register_only,
+    full_reading,
+    full_survey,
+    heron,
+    nothing_heard,
+    one_take,
+    sixty_entries,
+    strange_words,
+)
 
 from fluteprobe import __version__
-from fluteprobe.flute.register import Evidence, RegisterCall
 from fluteprobe.results import (
     CSV_FIELDS,
-    ResultsError,
     heard_json,
     json_text,
     read_results,
@@ -28,8 +35,6 @@ from fluteprobe.results import (
     write_results,
 )
 from fluteprobe.session import Problem
-from fluteprobe.sound.tone import BreathResonance, Partial, Vibrato
-from fluteprobe.survey import Reading, Survey
 
 NAN = float("nan")
 
@@ -43,48 +48,6 @@ ENTRY_FIELDS = {
     "fingering", "register", "frequency_hz", "uncertainty_cents", "note", "cents", "cents_at_reference",
     "stretch_cents", "takes", "tones", "reliability",
 }  # fmt: skip
-
-
-def full_reading() -> Reading:
-    """Return a reading in which everything is known."""
-    plain = reading("oxxxxx", breath="over", kind="tone", frequency_hz=938.12345678)
-    tone = replace(
-        plain.tone,
-        uncertainty_cents=0.0123456,
-        partials=(
-            Partial(order=1, frequency_hz=938.12345678, level_db=-0.0),
-            Partial(order=2, frequency_hz=1876.2, level_db=-17.256),
-        ),
-        harmonic_to_noise_db=31.23456,
-        breath_resonances=(
-            BreathResonance(frequency_hz=470.123, width_hz=12.345, prominence_db=14.567, chance=1.23456e-7),
-        ),
-        drift_cents=-0.00001,
-        vibrato=Vibrato(rate_hz=5.12345, extent_cents=14.5678),
-        attack_ms=41.26,
-        cautions=("clipped: record with less gain",),
-    )
-    call = RegisterCall(
-        register=2,
-        probability={1: 0.01, 2: 0.98, 3: 0.01},
-        evidence=(Evidence(source="ladder", favours=2, log_odds=3.89182, detail="above the ladder"),),
-    )
-    return replace(plain, tone=tone, call=call, cents_at_reference=1.23456)
-
-
-def full_survey() -> Survey:
-    survey = heron()
-    return replace(
-        survey,
-        flute=replace(
-            survey.flute,
-            holes_mm=((105.0, 9.0), (127.0, 9.5)),
-            bore_mm=19.0,
-            length_mm=385.0,
-            tolerance_mm=0.5,
-        ),
-        readings=(full_reading(), *survey.readings),
-    )
 
 
 SURVEYS = [full_survey, heron, one_take, nothing_heard, first_register_only, sixty_entries, strange_words]
@@ -167,16 +130,6 @@ def test_fields_may_be_added_anywhere() -> None:
     assert survey_from_json(values).flute.name == "Heron"
 
 
-def changed(values: dict[str, Any], path: tuple[Any, ...], value: Any) -> dict[str, Any]:
-    """Return a copy of JSON values with one of them replaced."""
-    new = copy.deepcopy(values)
-    place: Any = new
-    for step in path[:-1]:
-        place = place[step]
-    place[path[-1]] = value
-    return new
-
-
 # --- numbers -----------------------------------------------------------------------------------------
 
 
@@ -213,68 +166,6 @@ def test_what_is_no_finite_number_is_written_as_null() -> None:
 def test_text_that_json_must_not_hold_is_refused() -> None:
     with pytest.raises(ValueError, match="not JSON compliant"):
         json_text({"value": NAN})
-
-
-# --- the way back ------------------------------------------------------------------------------------
-
-
-@pytest.mark.parametrize("make", SURVEYS)
-def test_a_survey_comes_back_as_it_was_written(make: Any) -> None:
-    values = json.loads(json_text(survey_json(make())))
-    back = survey_from_json(values)
-    assert survey_json(back) == values
-    assert back.flute == make().flute
-    assert back.sitting == make().sitting
-    assert back.problems == make().problems
-    assert [entry.fingering for entry in back.entries] == [entry.fingering for entry in make().entries]
-
-
-def test_a_survey_from_before_the_length_was_told_reads_as_one_without_it() -> None:
-    values = survey_json(full_survey())
-    older = {key: value for key, value in values["flute"].items() if key not in {"length_mm", "tolerance_mm"}}
-    flute = survey_from_json({**values, "flute": older}).flute
-    assert (flute.length_mm, flute.tolerance_mm) == (None, None)
-
-
-@pytest.mark.parametrize(
-    ("path", "value", "message"),
-    [
-        (("schema",), "other/1", 'schema is "other/1", expected "fluteprobe/measurements/1"'),
-        (("flute", "holes"), "six", 'flute.holes is "six", expected a whole number from 1 to 10'),
-        (
-            ("flute", "holes_mm"),
-            [[1]],
-            "flute.holes_mm[0] is a list of 1, expected a distance and a diameter",
-        ),
-        (("flute", "length_mm"), -1, "flute.length_mm is -1, expected a number above 0"),
-        (("session", "a4_hz"), True, "session.a4_hz is true, expected a number"),
-        (("tones",), {}, "tones is an object, expected a list"),
-        (("tones", 0), 5, "tones[0] is 5, expected an object"),
-        (("tones", 0, "fingering"), "oxz", 'tones[0].fingering is "oxz", expected 1 to 10 of x, o, h and v'),
-        (("tones", 0, "fingering"), 7, "tones[0].fingering is 7, expected text"),
-        (("tones", 0, "register"), True, "tones[0].register is true, expected one of 1, 2, 3"),
-        (("tones", 0, "breath"), "loud", 'tones[0].breath is "loud", expected one of soft, normal, over'),
-        (("tones", 0, "partials"), [{"order": 1}], "tones[0].partials[0].frequency_hz is missing"),
-        (("tones", 0, "frequency_hz"), -1, "tones[0].frequency_hz is -1, expected a number above 0"),
-        (
-            ("entries", 0, "frequency_hz"),
-            NAN,
-            "entries[0].frequency_hz is NaN, expected a number within ±1e+09",
-        ),
-        (("entries", 0, "reliability"), 2, "entries[0].reliability is 2, expected a number from 0 to 1"),
-        (("problems", 0, "message"), None, "problems[0].message is null, expected text"),
-    ],
-)
-def test_what_is_wrong_in_a_file_is_told_with_its_place(path: Any, value: Any, message: str) -> None:
-    with pytest.raises(ResultsError) as caught:
-        survey_from_json(changed(survey_json(full_survey()), path, value))
-    assert str(caught.value) == message
-
-
-@pytest.mark.parametrize("values", [None, [], "text", 5])
-def test_what_is_no_object_is_told(values: Any) -> None:
-    with pytest.raises(ResultsError, match=r"the file is .*, expected an object"):
-        survey_from_json(values)
 
 
 # --- the table ---------------------------------------------------------------------------------------
@@ -342,15 +233,3 @@ def test_a_write_that_fails_leaves_the_old_file_whole(
     assert caught.value.filename == str(target)
     assert target.read_bytes() == b"old"
     assert list(tmp_path.iterdir()) == [target]
-
-
-def test_files_that_cannot_be_read_are_named(tmp_path: Path) -> None:
-    missing, broken, other = tmp_path / "a.json", tmp_path / "b.json", tmp_path / "c.json"
-    broken.write_text("{")
-    other.write_text('{"schema": 3}')
-    with pytest.raises(ResultsError, match=r"a\.json cannot be read: No such file"):
-        read_results(missing)
-    with pytest.raises(ResultsError, match=r"b\.json is no JSON: measure the flute again"):
-        read_results(broken)
-    with pytest.raises(ResultsError, match=r"c\.json: schema is 3, expected"):
-        read_results(other)
