@@ -14,7 +14,7 @@ import re
 import secrets
 import stat
 import time
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from contextlib import ExitStack, contextmanager, suppress
 from pathlib import Path
 from typing import BinaryIO
@@ -85,6 +85,27 @@ def replace_files(contents: Mapping[Path, bytes], *, lasting: bool = True) -> No
                 raise _told(error, path) from error
 
 
+def add_files(contents: Iterable[tuple[Path, bytes]], *, lasting: bool = True) -> None:
+    """Write new files as wholes, over no other; all of them are put into their places, or none is.
+
+    The contents are asked for one after the other, so that one at a time is in memory.
+
+    Raises
+    ------
+    OSError
+        If one cannot be written or is there already: it names that file.
+    """
+    with ExitStack() as held, ExitStack() as undone:
+        written = [(held.enter_context(_written(path, content, lasting)), path) for path, content in contents]
+        for passing, path in written:
+            try:
+                _put_beside(passing, path)
+            except OSError as error:
+                raise _told(error, path) from error
+            undone.callback(path.unlink, missing_ok=True)
+        undone.pop_all()
+
+
 def sweep_passing(folder: Path) -> None:
     """Remove what runs that were ended while they wrote have left in a folder; what cannot be is left."""
     with suppress(OSError):
@@ -142,6 +163,18 @@ def _written(path: Path, content: bytes, lasting: bool) -> Iterator[Path]:
     finally:
         with suppress(OSError):
             passing.unlink(missing_ok=True)
+
+
+def _put_beside(passing: Path, path: Path) -> None:
+    """Give a passing file its own name, unless another file has it."""
+    try:
+        os.link(passing, path)
+    except FileExistsError:
+        raise
+    except OSError:  # memory cards know no second name for a file
+        if os.path.lexists(path):
+            raise FileExistsError(errno.EEXIST, "a file is in the way", str(path)) from None
+        passing.rename(path)
 
 
 def _opened(path: Path) -> tuple[Path, BinaryIO]:

@@ -23,6 +23,7 @@ from fluteprobe.cli.hear import hear
 from fluteprobe.cli.measure import measure
 from fluteprobe.cli.plays import plays
 from fluteprobe.cli.sheet import sheet
+from fluteprobe.cli.split import split
 from fluteprobe.cli.tuning import tuning
 
 os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")  # read when numpy is first loaded, in a command's body
@@ -65,7 +66,7 @@ class Door(click.Group):
 
 @click.group(
     cls=Door,
-    commands=[begin, sheet, hear, measure, chart, forecast, compare, plays, tuning],
+    commands=[begin, sheet, split, hear, measure, chart, forecast, compare, plays, tuning],
     context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 88, "color": False},
 )
 @click.version_option(__version__, "-V", "--version", prog_name="fluteprobe")
