@@ -60,7 +60,7 @@ def read_facts(text: str, file: str, folder_name: str) -> tuple[FluteFacts, Sitt
     """
     toml = read_toml(text)
     place = _Place(file=file, lines=toml.lines)
-    faults = [f"{file} line {line}: {fault}" for line, fault in toml.faults]
+    faults = [f"{file} line {line}: {fault}" if line else f"{file} {fault}" for line, fault in toml.faults]
     faults += _stray_faults(toml.tables, place)
     values = {
         table: _read_table(table, toml.tables.get(table, {}), place, faults)

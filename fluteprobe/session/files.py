@@ -74,6 +74,14 @@ def read_text(path: Path, folder: Path, largest_bytes: int, kind: str) -> str:
     return text.replace("\r\n", "\n").replace("\r", "\n")
 
 
+def require_recording(path: Path, folder: Path) -> None:
+    """Raise an UnfitFileError unless a path is a file inside the session folder."""
+    if not is_inside(path, folder):
+        raise UnfitFileError("is a link that leads out of the session folder: put the recording itself there")
+    if not path.is_file():
+        raise UnfitFileError("is no ordinary file: put the recording itself there")
+
+
 def is_same_content(one: Path, other: Path) -> bool:
     """Whether two files hold the same, byte for byte; not so where they are empty or cannot be read."""
     try:

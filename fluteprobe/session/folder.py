@@ -17,6 +17,7 @@ from fluteprobe.session.files import (
     is_inside,
     is_same_content,
     read_text,
+    require_recording,
 )
 from fluteprobe.session.listing import read_listing
 from fluteprobe.session.names import (
@@ -238,22 +239,13 @@ def _named_takes(
         stem = split_ending(name)[0]
         try:
             says = read_take_name(name, flute.holes, names, known)
-            _require_recording(folder, name)
+            require_recording(folder / TAKES_FOLDER / name, folder)
             _require_one_format(name, first_of.setdefault(same_name(stem), name), says, names)
         except (UnfitNameError, UnfitFileError) as error:
             problems.append(Problem(take=f"{TAKES_FOLDER}/{printable(name)}", message=str(error)))
             continue
         rank = 0 if same_name(stem) == says.stem else 1 if says.number else 2
         yield _Found(name=f"{TAKES_FOLDER}/{name}", says=says, rank=rank)
-
-
-def _require_recording(folder: Path, name: str) -> None:
-    """Raise an UnfitFileError unless a take is a file inside the session folder."""
-    path = folder / TAKES_FOLDER / name
-    if not is_inside(path, folder):
-        raise UnfitFileError("is a link that leads out of the session folder: put the recording itself there")
-    if not path.is_file():
-        raise UnfitFileError("is no ordinary file: put the recording itself there")
 
 
 def _require_one_format(name: str, first: str, says: TakeName, names: Sequence[str]) -> None:

@@ -15,7 +15,8 @@ from difflib import get_close_matches
 from pathlib import Path, PurePosixPath
 from typing import TypeVar
 
-from fluteprobe.session.files import LIST_FILE, TAKES_FOLDER, UnfitFileError, is_inside, read_text
+from fluteprobe.session.files import LIST_FILE, UnfitFileError, read_text, require_recording
+from fluteprobe.session.finder import Finder
 from fluteprobe.session.names import (
     HIGHEST_NUMBER,
     TakeName,
@@ -23,16 +24,14 @@ from fluteprobe.session.names import (
     read_breath,
     read_fingering,
     same_name,
-    split_ending,
 )
-from fluteprobe.session.words import UNSAFE, Problem, shown
+from fluteprobe.session.words import Problem, shown
 
 COLUMNS = ("file", "fingering", "breath", "number")
 
-_LARGEST_BYTES, _MOST_ROWS, _MOST_COLUMNS = 500_000, 5000, 100
-_MOST_PROBLEMS, _MOST_COMPARED, _LONGEST_PATH = 50, 1000, 500
+_LARGEST_BYTES, _MOST_ROWS, _MOST_COLUMNS = 500_000, 1000, 100
+_MOST_PROBLEMS, _LONGEST_HEADER = 50, 5000
 _DELIMITERS = (",", ";", "\t")
-_DRIVE = re.compile(r"[A-Za-z]:|[/\\]|~[/\\]")
 
 Cells = Mapping[str, str]
 T = TypeVar("T")
@@ -50,6 +49,14 @@ class Listed:
     take: TakeName | None
 
 
+class _HeaderError(ValueError):
+    """A first line that does not name the columns; where it is and what is wrong with it."""
+
+    def __init__(self, line: int, text: str) -> None:
+        super().__init__(text)
+        self.line = line
+
+
 def read_listing(folder: Path, holes: int) -> tuple[tuple[Listed, ...], tuple[Problem, ...]]:
     """Return the recordings that takes.csv lists, in its order, and what is wrong in it, line by line.
 
@@ -61,9 +68,11 @@ def read_listing(folder: Path, holes: int) -> tuple[tuple[Listed, ...], tuple[Pr
     try:
         text = read_text(path, folder, _LARGEST_BYTES, "CSV (UTF-8)")
         columns, delimiter, first = _header(text)
+    except _HeaderError as error:
+        return (), (Problem(take=f"{path.name} line {error.line}", message=str(error)),)
     except UnfitFileError as error:
         return (), (Problem(take=path.name, message=str(error)),)
-    finder = _Finder(folder)
+    finder = Finder(folder)
     listed: dict[PurePosixPath, Listed] = {}
     problems: list[Problem] = []
     for line, cells in _rows(text, columns, delimiter, first):
@@ -103,7 +112,9 @@ def _header(text: str) -> tuple[tuple[str | None, ...], str, int]:
     Raises
     ------
     UnfitFileError
-        If there are no rows, or no columns file and fingering.
+        If there is nothing in it, or far too much.
+    _HeaderError
+        If there are no columns file and fingering.
     """
     lines = text.split("\n")
     if len(lines) > _MOST_ROWS:
@@ -114,13 +125,15 @@ def _header(text: str) -> tuple[tuple[str | None, ...], str, int]:
     told = re.fullmatch(r"\s*sep=(.)\s*", lines[number])  # some spreadsheets write it before the table
     number += 1 if told else 0
     line = lines[number] if number < len(lines) else ""
+    if len(line) > _LONGEST_HEADER:
+        raise _HeaderError(number + 1, "is far too long: is it another file?")
     found = [(tuple(_column(cell) for cell in _cells(line, mark)), mark) for mark in _DELIMITERS]
-    columns, mark = max(found, key=lambda read: len({column for column in read[0] if column}))
+    columns, mark = max(found, key=lambda read: (len({column for column in read[0] if column}), len(read[0])))
     missing = [column for column in COLUMNS[:2] if column not in columns]
     if len(columns) > _MOST_COLUMNS:
-        raise UnfitFileError(f"line {number + 1}: has over {_MOST_COLUMNS} columns: is it another file?")
+        raise _HeaderError(number + 1, f"has over {_MOST_COLUMNS} columns: is it another file?")
     if missing or any(columns.count(column) > 1 for column in COLUMNS):
-        raise UnfitFileError(f"line {number + 1}: {_header_fault(_cells(line, mark), columns, missing)}")
+        raise _HeaderError(number + 1, _header_fault(_cells(line, mark), columns, missing))
     return columns, mark, number + 1
 
 
@@ -184,9 +197,7 @@ def _named(delimiter: str) -> str:
 # --- a row ---------------------------------------------------------------------------------------------
 
 
-def _read_row(
-    line: int, cells: Cells | str, finder: "_Finder", holes: int
-) -> tuple[Listed | None, list[str]]:
+def _read_row(line: int, cells: Cells | str, finder: Finder, holes: int) -> tuple[Listed | None, list[str]]:
     """Return what a row says, without a take where it has a fault, and all its faults."""
     if isinstance(cells, str):
         return None, [cells]
@@ -197,6 +208,7 @@ def _read_row(
     number = _tried("number", cells, _number, faults)
     if file is None:
         return None, faults
+    _tried("file", cells, lambda _: require_recording(finder.folder / file, finder.folder), faults)
     if faults or fingering is None or breath is None:
         return Listed(line=line, file=file, take=None), faults
     return Listed(
@@ -217,7 +229,7 @@ def _tried(column: str, cells: Cells, read: Callable[[str], T], faults: list[str
 
 
 def _number(text: str) -> int | None:
-    match = re.fullmatch(r"0*([1-9][0-9]{0,3})(\.0*)?", text)
+    match = re.fullmatch(r"0*([1-9][0-9]{0,3})([.,]0*)?", text)
     if not text:
         return None
     if not match:
@@ -245,72 +257,3 @@ def _agreed(first: Listed, row: Listed) -> Listed:
 def _same(first: Listed, row: Listed) -> bool:
     kinds = [(each.take.fingering, each.take.breath) for each in (first, row) if each.take]
     return kinds[0] == kinds[-1]
-
-
-class _Finder:
-    """Finds files of a session folder by what people write, never outside it; remembers what folders hold."""
-
-    def __init__(self, folder: Path) -> None:
-        self._folder = folder
-        self._names: dict[PurePosixPath, list[str]] = {}
-        self._misses = 0
-
-    def find(self, text: str) -> PurePosixPath:
-        """Return a file's path in the session folder.
-
-        Raises
-        ------
-        UnfitNameError, UnfitFileError
-            If nothing is written, or there is no such file inside the folder.
-        """
-        parts = [part for part in text.replace("\\", "/").split("/") if part not in {"", "."}]
-        if not parts:
-            raise UnfitNameError("the name of a recording")
-        if UNSAFE.search(text) or len(text) > _LONGEST_PATH:
-            raise UnfitFileError("is no name that a recording can have")
-        if _DRIVE.match(text) or ".." in parts:
-            raise UnfitFileError(f"leads out of the session folder: put the recording into {TAKES_FOLDER}")
-        walked = (self._walk(base, parts) for base in (PurePosixPath(TAKES_FOLDER), PurePosixPath()))
-        found = next((path for path in walked if path is not None), None)
-        if found is None:
-            raise UnfitFileError(f"is not there{self._nearest(parts[-1])}")
-        if not is_inside(self._folder / found, self._folder):
-            raise UnfitFileError(
-                "is a link that leads out of the session folder: put the recording itself there"
-            )
-        if not (self._folder / found).is_file():
-            raise UnfitFileError("is no ordinary file: put the recording itself there")
-        return found
-
-    def _walk(self, base: PurePosixPath, parts: Sequence[str]) -> PurePosixPath | None:
-        """Follow the parts of a path from a folder; stop where it leads out, None where it leads nowhere."""
-        here = base
-        for part in parts:
-            if not is_inside(self._folder / here, self._folder):
-                return here
-            names = self._in(here)
-            same = [part] if part in names else [name for name in names if same_name(name) == same_name(part)]
-            if not same and part is parts[-1]:
-                same = [name for name in names if same_name(split_ending(name)[0]) == same_name(part)]
-            if len(same) != 1:
-                return None
-            here /= same[0]
-        return here
-
-    def _in(self, folder: PurePosixPath) -> list[str]:
-        """Return the names in a folder of the session, none where it is no folder."""
-        if folder not in self._names:
-            try:
-                self._names[folder] = os.listdir(self._folder / folder)  # noqa: PTH208
-            except OSError:
-                self._names[folder] = []
-        return self._names[folder]
-
-    def _nearest(self, name: str) -> str:
-        """Return a guess at the file that was meant; none any more where very many are not there."""
-        self._misses += 1
-        if self._misses > _MOST_PROBLEMS:
-            return ""
-        there = sorted(self._in(PurePosixPath(TAKES_FOLDER)))[:_MOST_COMPARED]
-        near = get_close_matches(name, there, n=1)
-        return f"; did you mean {shown(near[0])}?" if near else f": put it into {TAKES_FOLDER}"
