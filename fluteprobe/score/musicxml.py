@@ -24,6 +24,7 @@ LARGEST_ARCHIVE_BYTES = 8_000_000
 _ROOTS = {"score-partwise": ("part", "measure"), "score-timewise": ("measure", "part")}
 _STEPS = {"C": 0, "D": 2, "E": 4, "F": 5, "G": 7, "A": 9, "B": 11}
 _DEEPEST = 64
+_PIECE_BYTES = 1 << 16
 _LONGEST_TEXT = 10_000
 _MOST_ELEMENTS = 200_000  # in one bar
 _MOST_PARTS = 1000
@@ -65,7 +66,9 @@ def read_xml(content: bytes) -> Score:
         raise ScoreError(f"it is larger than {LARGEST_BYTES // 1_000_000} MB: export one part alone")
     reader = _Reader()
     try:
-        reader.parser.Parse(content, True)
+        for place in range(0, len(content), _PIECE_BYTES):
+            reader.parser.Parse(content[place : place + _PIECE_BYTES], False)
+        reader.parser.Parse(b"", True)
     except expat.ExpatError as error:
         what = expat.errors.messages.get(error.code, str(error.code))
         raise ScoreError(f"it is no whole XML, line {error.lineno}: {what}: export the score again") from None
