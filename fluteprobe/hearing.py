@@ -17,7 +17,7 @@ from threading import Thread, active_count
 
 from fluteprobe.kept import Kept, stamp
 from fluteprobe.memory import keep_freed_memory
-from fluteprobe.session import Take
+from fluteprobe.session import SessionError, Take, printable
 from fluteprobe.sound.recording import RecordingError, open_recording
 from fluteprobe.sound.tone import Tone, read_tones
 
@@ -55,13 +55,27 @@ def hear_takes(
         Hears takes elsewhere than on this machine's cores: see `fluteprobe.cluster`.
     kept
         What was heard before; without it every take is heard anew and nothing is kept.
+
+    Raises
+    ------
+    SessionError
+        At the end, if recordings went away meanwhile: what is left of a flute whose drive was removed must
+        not take the place of the whole.
     """
+    there = {take.path for take in takes if stamp(take.path) is not None}
     known = {} if kept is None else kept.found(take.path for take in takes)
     new = [take for take in takes if take.path not in known]
     anew = iter(_heard_elsewhere(new, map_takes, kept) if map_takes else _heard_here(new, kept))
+    gone: list[Path] = []
     for take in takes:
-        yield take, known[take.path] if take.path in known else next(anew)
+        heard = known[take.path] if take.path in known else next(anew)
+        if isinstance(heard, RecordingError) and take.path in there and stamp(take.path) is None:
+            gone.append(take.path)
+        yield take, heard
     next(anew, None)
+    if gone:
+        more = f" and {len(gone) - 1} more" if len(gone) > 1 else ""
+        raise SessionError(f"{printable(str(gone[0]))}{more}: gone while it was heard; was a drive removed?")
     if kept is not None:
         kept.sweep(len(takes))
 

@@ -9,7 +9,8 @@ import signal
 import subprocess
 import sys
 import time
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -20,7 +21,7 @@ from fluteprobe import hearing
 from fluteprobe.cluster import joblib_map
 from fluteprobe.hearing import FEW_TAKES, Heard, hear_recording, hear_takes
 from fluteprobe.kept import Kept
-from fluteprobe.session import Session, Take, read_session
+from fluteprobe.session import Session, SessionError, Take, read_session
 from fluteprobe.sound.recording import RecordingError
 
 HERON = Path(__file__).parent.parent / "samples" / "heron"
@@ -125,6 +126,31 @@ def test_a_map_that_loses_or_adds_a_take_is_no_silent_loss(session: Session, kep
     for wrong in (lambda h, t: in_turn(h, t)[1:], lambda h, t: [*in_turn(h, t), ()]):
         with pytest.raises(ValueError, match=r"shorter|longer"):
             list(hear_takes(session.takes, map_takes=wrong, kept=kept))
+
+
+def test_recordings_that_go_away_meanwhile_are_no_flute_with_fewer_takes(
+    session: Session, kept: Kept, tmp_path: Path
+) -> None:
+    taken_away = tmp_path / "elsewhere"
+
+    def removed(hear: Callable[[Take], Heard], takes: Sequence[Take]) -> Iterator[Heard]:
+        for k, take in enumerate(takes):
+            if k == 3:
+                session.folder.rename(taken_away)
+            yield hear(take)
+
+    with pytest.raises(SessionError) as caught:
+        list(hear_takes(session.takes, map_takes=removed, kept=kept))
+    first_lost = session.takes[3].path
+    assert str(caught.value) == f"{first_lost} and 2 more: gone while it was heard; was a drive removed?"
+    assert len(kept.found(taken_away / take.name for take in session.takes)) == 2  # the first is no recording
+
+
+def test_a_link_that_leads_nowhere_from_the_start_is_one_bad_take(session: Session) -> None:
+    take = replace(session.takes[1], path=session.folder / "takes" / "nowhere.wav")
+    take.path.symlink_to("nothing")
+    heard = by_name(hear_takes([*session.takes, take]))
+    assert str(heard["nowhere"]) == "no such file"
 
 
 def test_the_survey_is_the_same_whether_heard_or_found(session: Session, kept: Kept) -> None:
