@@ -66,7 +66,7 @@ class BreathResonance:
     chance: float = 0.0
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class NoiseSpectrum:
     """An averaged spectrum of noise: power (lines,) at `line_hz` apart, from `segments` segments.
 

@@ -26,7 +26,7 @@ _EVEN = 0.55
 _EVEN_DB = 10.0
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Measured:
     """Pitch, partial amplitudes (orders,), what is left without the partials (samples,), and evenness.
 

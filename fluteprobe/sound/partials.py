@@ -44,7 +44,7 @@ class Partial:
     level_db: float
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Tracks:
     """Phasors of some partials over time, (frames, orders); frame m is centred on `(m + 1) * hop`."""
 
@@ -124,14 +124,14 @@ def quick_length(longest: int) -> int:
 
 def _windowed_waves(rate_hz: int, frequency_hz: float, hop: int, orders: Floats) -> Samples:
     """Return windowed cosines and minus sines over both halves of a frame, shape (hop, 4 orders)."""
-    n = np.arange(-hop, hop)
+    n = np.arange(-hop, hop, dtype=np.float64)
     window = 0.5 * (1.0 + np.cos(np.pi * n / hop)) * (2.0 / hop)
     turning = unturning(2.0 * np.pi * frequency_hz / rate_hz * n, orders) * window[:, None]
     waves = np.concatenate([turning.real, turning.imag], axis=1)
     return np.concatenate([waves[:hop], waves[hop:]], axis=1).astype(np.float32)
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Lines:
     """What the spectrum of standing phasors says of each order, shapes (orders,).
 
@@ -241,7 +241,7 @@ def _frames(
 
 def _waves(tracks: Tracks, hop: int, orders: Floats) -> Samples:
     """Return windowed cosines and minus sines over one frame of two hops, shape (2 orders, 2 hop)."""
-    n = np.arange(-hop, hop)
+    n = np.arange(-hop, hop, dtype=np.float64)
     window = 0.5 * (1.0 + np.cos(np.pi * n / hop))
     turning = unturning(2.0 * np.pi * tracks.frequency_hz / tracks.rate_hz * n, orders) * window[:, None]
     return np.concatenate([turning.real, turning.imag], axis=1).T.astype(np.float32)

@@ -33,6 +33,8 @@ CENTS = 1200.0 / np.log(2.0)
 
 GUIDES = 4
 _ROUNDS = 2
+_ASTRAY = 0.5  # rad²: phases that scatter as much do not know how often they have turned
+_NEXT_TO_NOTHING = 1e4  # rad²: the variance by which they count
 _POINT_S = 0.02
 _FASTEST_WANDER_HZ = 12.0
 _MOST_TERMS = 160
@@ -56,7 +58,7 @@ class Vibrato:
     extent_cents: float
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class PhaseTrack:
     """The fundamental's phase along a tone, (frames,) at `time_s`; `noise_rad` is one frame's noise."""
 
@@ -71,7 +73,7 @@ class PhaseTrack:
         return float(self.time_s[1] - self.time_s[0])
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class Pitch:
     """The mean pitch of a tone over its span, how it moves, and how sure the mean is (k = 1).
 
@@ -107,10 +109,11 @@ def refined(guide: Tracks) -> float:
 def phase_track(tracks: Tracks) -> PhaseTrack:
     """Combine the phases of all partials into the fundamental's, each weighted by its own noise."""
     phase = guide_phase(tracks)
-    noise = _noise_variances(tracks, phase)
+    noise = _own_noise_variances(tracks)
     for _ in range(_ROUNDS):
         errors = _phase_errors(tracks, phase)
-        weights = tracks.orders**2 / np.maximum(noise, np.mean(errors**2, axis=0))
+        scatter = np.mean(errors**2, axis=0)
+        weights = tracks.orders**2 / np.where(scatter > _ASTRAY, _NEXT_TO_NOTHING, noise)
         phase = phase + (errors / tracks.orders) @ weights / weights.sum()
     noise = _noise_variances(tracks, phase)
     return PhaseTrack(
@@ -134,6 +137,17 @@ def _phase_errors(tracks: Tracks, phase: Floats) -> Floats:
     """Return each partial's phase against order × `phase`, shape (frames, orders)."""
     still = standing(tracks, phase).phasors
     return np.asarray(np.angle(still * still.mean(axis=0).conj()))
+
+
+def _own_noise_variances(tracks: Tracks) -> Floats:
+    """Return the phase-noise variance of each partial from how rough its loudness is, rad² (orders,).
+
+    Noise is as strong along a phasor as across it, so that no phase has to be known.
+    """
+    level = np.abs(tracks.phasors)
+    rough = level[2:-2] - 0.5 * (level[:-4] + level[4:])
+    noise = np.mean(rough**2, axis=0) / 1.5
+    return np.asarray(noise / np.maximum(np.mean(level**2, axis=0) - 2.0 * noise, 1e-30) + 1e-14)
 
 
 def _noise_variances(tracks: Tracks, phase: Floats) -> Floats:
@@ -175,7 +189,7 @@ def measure_pitch(track: PhaseTrack) -> Pitch:
     )
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class _Points:
     """Phases averaged over `group_s` of frames that are `frame_s` long, and the noise of each average."""
 
@@ -202,7 +216,7 @@ def _thinned(track: PhaseTrack) -> _Points:
     )
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class PhaseCurve:
     """The phase as a line, a parabola and cosines over a span; `terms` counts them beside the constant."""
 

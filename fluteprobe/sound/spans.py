@@ -65,7 +65,7 @@ class Span:
     level_db: float
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class _Frames:
     """What is kept of every frame: its level and its coarse pitch as a grid index."""
 
@@ -153,7 +153,7 @@ def _power_spectra(rows: Floats, combs: "_Combs") -> Floats:
     return np.square(spectra.real) + np.square(spectra.imag)
 
 
-@dataclass(frozen=True, slots=True, kw_only=True)
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class _Combs:
     """Combs over spectrum bins first to last, shape (bins, grid), and how band floors become bin floors.
 
