@@ -15,7 +15,7 @@ from fluteprobe.sound.boxes import announces_too_much, is_unfinished
 from fluteprobe.sound.decoding import NO_SOUND_FOUND, RecordingError, Samples
 
 if TYPE_CHECKING:
-    from av import AudioFrame, AudioStream, Packet
+    from av import AudioFrame, AudioStream, CodecContext, Packet
     from av.container import InputContainer
 
 Timed = tuple[int, "AudioFrame"]  # the gap before it, and what the decoder gave
@@ -34,7 +34,7 @@ _SHORT_BESIDE_VIDEO_S = 1.0
 _MOST_CHANNELS = 64
 _LEAST_GAP_S = 0.01
 _SURE_GAP_S = 0.25  # clocks of phones jitter by less
-_LONGEST_GAP_S = 2.0
+_LONGEST_GAP_S = 10.0  # longer ones are cuts, or nonsense
 _LONGEST_ALAC_PACKET = 2**16
 
 _OVERHEAD = 2  # packets hold fewer bytes than the file; some kinds strip what is the same in each
@@ -231,7 +231,7 @@ def _chosen(container: "InputContainer") -> "AudioStream":
 def _fault_of(track: "AudioStream") -> str | None:
     """Return why a sound track cannot be read."""
     context = track.codec_context
-    if context is not None and context.codec_tag.strip() in _PROTECTED_TAGS:
+    if context is not None and _tag(context) in _PROTECTED_TAGS:
         return "copy-protected: it cannot be read; record it anew, or save an unprotected copy"
     if context is None or context.codec.name not in _CODECS.split(","):
         return "its kind of sound cannot be read; save it as WAV or FLAC"
@@ -239,6 +239,13 @@ def _fault_of(track: "AudioStream") -> str | None:
     if context.codec.name == "alac" and int.from_bytes(extra[12:16], "big") > _LONGEST_ALAC_PACKET:
         return NO_SOUND_FOUND
     return None
+
+
+def _tag(context: "CodecContext") -> str:
+    try:
+        return context.codec_tag
+    except UnicodeDecodeError:
+        return ""
 
 
 def _why_no_sound(container: "InputContainer") -> str:
