@@ -6,87 +6,148 @@ from typing import Any
 
 import click
 
-from fluteprobe.cli.options import A4_HZ, FOLDER
+from fluteprobe.cli.options import FOLDER
 
-_TEMPERATURE_C = click.FloatRange(-20.0, 50.0)
 _USUAL_HOLES = 6
+_A4_HZ = 440.0
+
+
+class Fact(click.ParamType):  # type: ignore[type-arg]  # generic in some versions of click alone
+    """A value of flute.toml as it is typed: checked as in the file; numbers may have a comma and a unit."""
+
+    def __init__(self, table: str, key: str) -> None:
+        self.table, self.key, self.name = table, key, key
+
+    def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> Any:
+        """Return the value, None where nothing was typed."""
+        from fluteprobe.session.keys import UnfitError, typed
+
+        try:
+            return typed(self.table, self.key, str(value))
+        except UnfitError as error:
+            self.fail(str(error), param, ctx)
+
+    def answered(self, answer: str) -> Any:
+        """Return the value of an answer to a question; a wrong one is a click.UsageError."""
+        return self.convert(answer, None, None)
+
+
+_HOLES = Fact("flute", "holes")
+_TEMPERATURE = Fact("session", "air_temperature_c")
+
+
+def _hole_pairs(_ctx: click.Context, _param: click.Parameter, words: tuple[tuple[str, str], ...]) -> Any:
+    """Return each hole's distance and diameter, top hole first, None where none were typed."""
+    from fluteprobe.session.keys import KEYS, UnfitError, number_in
+
+    if not words:
+        return None
+    try:
+        return KEYS["flute"]["holes_mm"].read([[number_in(word) for word in pair] for pair in words])
+    except UnfitError as error:
+        found = ", ".join(" ".join(pair) for pair in words)
+        raise click.BadParameter(f"found {found}, expected {error}") from None
 
 
 @click.command(short_help="Make a session folder, ready for recordings.")
 @click.argument("folder", type=FOLDER)
-@click.option("--name", help="What the flute is called.  [default: the folder's name]")
-@click.option("--holes", type=click.IntRange(1, 10), metavar="N", help="How many finger holes.  [default: 6]")
-@click.option("--maker", help="Who made it.")
-@click.option("--serial", help="Its number.")
-@click.option("--key", help="The key it is in.")
-@click.option("--wood", help="What it is made of.")
 @click.option(
-    "--bore-mm", type=click.FloatRange(2.0, 100.0), metavar="MM", help="Inner diameter of the sounding tube."
+    "--name", type=Fact("flute", "name"), metavar="TEXT", help="The flute's.  [default: the folder's]"
 )
-@click.option("--wall-mm", type=click.FloatRange(0.2, 50.0), metavar="MM", help="Thickness of its wall.")
-@click.option("--a4-hz", type=A4_HZ, default=440.0, metavar="HZ", help="What A4 is tuned to.  [default: 440]")
+@click.option("--holes", type=_HOLES, metavar="N", help="How many finger holes.  [default: 6]")
+@click.option("--maker", type=Fact("flute", "maker"), metavar="TEXT", help="Who made it.")
+@click.option("--serial", type=Fact("flute", "serial"), metavar="TEXT", help="Its number.")
+@click.option("--key", type=Fact("flute", "key"), metavar="TEXT", help="The key it is in.")
+@click.option("--wood", type=Fact("flute", "wood"), metavar="TEXT", help="What it is made of.")
 @click.option(
-    "--temperature",
-    "air_temperature_c",
-    type=_TEMPERATURE_C,
-    metavar="°C",
-    help="Of the air while recording.",
+    "--bore-mm", type=Fact("flute", "bore_mm"), metavar="MM", help="Inner diameter of the sounding tube."
+)
+@click.option("--wall-mm", type=Fact("flute", "wall_mm"), metavar="MM", help="Thickness of its wall.")
+@click.option(
+    "--length-mm", type=Fact("flute", "length_mm"), metavar="MM", help="From the sound hole to the foot."
+)
+@click.option(
+    "--hole-mm",
+    "holes_mm",
+    type=(str, str),
+    multiple=True,
+    callback=_hole_pairs,
+    metavar="FAR WIDE",
+    help="A hole's distance from the sound hole and its diameter; once for each hole, top hole first.",
+)
+@click.option(
+    "--tolerance-mm",
+    type=Fact("flute", "tolerance_mm"),
+    metavar="MM",
+    help="How exact these dimensions are.",
+)
+@click.option(
+    "--a4-hz", type=Fact("session", "a4_hz"), metavar="HZ", help="What A4 is tuned to.  [default: 440]"
+)
+@click.option(
+    "--temperature", "air_temperature_c", type=_TEMPERATURE, metavar="°C", help="Of the air while recording."
 )
 @click.option(
     "--reference-temperature",
     "reference_temperature_c",
-    type=_TEMPERATURE_C,
+    type=Fact("session", "reference_temperature_c"),
     metavar="°C",
     help="Carry pitches to this one too, as an estimate.",
 )
-@click.option("--date", help="When it was recorded.")
-@click.option("--player", help="Who played.")
-@click.option("--place", help="Where.")
-@click.option("--microphone", help="With what, and from how far.")
+@click.option("--date", type=Fact("session", "date"), metavar="TEXT", help="When it was recorded.")
+@click.option("--player", type=Fact("session", "player"), metavar="TEXT", help="Who played.")
+@click.option("--place", type=Fact("session", "place"), metavar="TEXT", help="Where.")
+@click.option(
+    "--microphone", type=Fact("session", "microphone"), metavar="TEXT", help="With what, and from how far."
+)
 def begin(folder: Path, **given: Any) -> None:
     """Make a session folder: one flute, one sitting.
 
     FOLDER gets a flute.toml, with comments, and takes/ for the recordings. What is there already
-    stays. In a terminal, what was not given and matters most is asked for.
+    stays. In a terminal, what was not given and matters most is asked for: the name, the holes, the
+    key and the temperature. An empty answer takes what is offered, or leaves it out.
 
     \b
     Example:
       fluteprobe begin heron --holes 6 --temperature 21.5
     """  # noqa: D301  (click reads the \b)
-    from fluteprobe.session import FluteFacts, Sitting, create_session, require_new
+    from fluteprobe.session import FluteFacts, Sitting, create_session, printable, require_new
 
     require_new(folder)
+    offered = printable(folder.resolve().name).strip() or "flute"
+    if given["holes"] is None and given["holes_mm"]:
+        given["holes"] = len(given["holes_mm"])
     if _on_terminal():
-        _ask(folder, given)
-    given["name"] = given["name"] or folder.resolve().name
-    given["holes"] = given["holes"] or _USUAL_HOLES
-    flute = {key: given.pop(key) for key in FluteFacts.__dataclass_fields__ if key in given}
+        _ask(given, offered)
+    usual = {"name": offered, "holes": _USUAL_HOLES, "a4_hz": _A4_HZ}
+    given |= {key: value for key, value in usual.items() if given[key] is None}
+    flute = {key: given.pop(key) for key in FluteFacts.__dataclass_fields__}
     facts = create_session(folder, FluteFacts(**flute), Sitting(**given))
     _say_what_next(folder, facts, flute["holes"])
 
 
 def _on_terminal() -> bool:
-    return sys.stdin.isatty()
+    """Whether somebody sees questions and can answer them."""
+    return sys.stdin.isatty() and sys.stderr.isatty()
 
 
-def _ask(folder: Path, given: dict[str, Any]) -> None:
-    """Ask for what was not given; an empty answer takes what is offered."""
-    if given["name"] is None:
-        given["name"] = click.prompt("Name of the flute", default=folder.resolve().name, err=True)
-    if given["holes"] is None:
-        given["holes"] = click.prompt(
-            "Finger holes", default=_USUAL_HOLES, type=click.IntRange(1, 10), err=True
-        )
-    if given["air_temperature_c"] is None:
-        question = "Temperature of the air in °C, if known"
-        given["air_temperature_c"] = click.prompt(
-            question, default="", show_default=False, value_proc=_temperature, err=True
-        )
-
-
-def _temperature(answer: str) -> Any:
-    """Return a temperature in °C, None where nothing was answered."""
-    return _TEMPERATURE_C(answer.replace(",", ".")) if answer.strip() else None
+def _ask(given: dict[str, Any], name: str) -> None:
+    """Ask for what was not given; an empty answer takes what is offered, a wrong one is asked for again."""
+    questions = (
+        (Fact("flute", "name"), "Name of the flute", name),
+        (_HOLES, "Finger holes", str(_USUAL_HOLES)),
+        (Fact("flute", "key"), "Key it is in, if known", ""),
+        (_TEMPERATURE, "Temperature of the air in °C, if known", ""),
+    )
+    for fact, question, offered in questions:
+        if given[fact.key] is None:
+            given[fact.key] = click.prompt(
+                question,
+                default=offered,
+                show_default=bool(offered),
+                value_proc=fact.answered,
+                err=True,
+            )
 
 
 def _say_what_next(folder: Path, facts: Path, holes: int) -> None:

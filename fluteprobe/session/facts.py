@@ -212,7 +212,7 @@ def _pair_faults(flute: Mapping[str, Any], place: _Place) -> Iterator[str]:
     pairs = flute.get("holes_mm")
     if pairs is not None and "holes" in flute and len(pairs) != flute["holes"]:
         yield (
-            f"{place('flute', 'holes_mm')}: key holes_mm: found {len(pairs)} pairs, "
+            f"{place('flute', 'holes_mm')}: key holes_mm: found {len(pairs)} pair{'' if len(pairs) == 1 else 's'}, "
             f"expected {flute['holes']}, one for each hole"
         )
     if pairs and flute.get("length_mm", pairs[-1][0] + 1.0) <= pairs[-1][0]:
