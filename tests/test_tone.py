@@ -123,11 +123,19 @@ def test_cautions_in_plain_words(tmp_path: Path) -> None:
     assert tone.cautions[1].startswith("short: 0.2") or tone.cautions[1].startswith("short: 0.3")
 
 
-def test_two_tones_at_once_are_a_multiphonic(tmp_path: Path) -> None:
+def test_two_tones_that_the_jet_mixes_are_a_multiphonic(tmp_path: Path) -> None:
+    """A square law mixes the two: lines at their sum and difference."""
+    both = note(500.0, 2.0) + 0.4 * note(683.0, 2.0)
+    (tone,) = read_tones(as_recording(tmp_path, room(both + 0.8 * both**2)))
+    assert tone.kind == "multiphonic"
+    assert tone.cautions[0] == "two tones at once: 500 and 683 Hz; blow until one holds, one flute alone"
+
+
+def test_two_tones_that_only_add_are_two_instruments(tmp_path: Path) -> None:
     both = note(500.0, 2.0) + 0.4 * note(683.0, 2.0)
     (tone,) = read_tones(as_recording(tmp_path, room(both)))
     assert tone.kind == "multiphonic"
-    assert tone.cautions[0].startswith("two tones at once: 500 and 68")
+    assert tone.cautions[0] == "more than one instrument: 500 and 683 Hz; record one flute alone"
 
 
 def test_a_whistle_that_follows_the_breath_is_an_edge_tone(tmp_path: Path) -> None:
@@ -146,4 +154,4 @@ def test_a_tone_that_turns_between_registers_is_a_warble(tmp_path: Path) -> None
     parts = [note(392.0, 0.4), note(790.0, 0.4)] * 3
     (tone,) = read_tones(as_recording(tmp_path, room(np.concatenate([pause(0.2), *parts, pause(0.2)]))))
     assert tone.kind == "multiphonic"
-    assert tone.cautions == ("warbles between 392 and 790 Hz: steady the breath",)
+    assert tone.cautions[0] == "warbles between 392 and 790 Hz: steady the breath"

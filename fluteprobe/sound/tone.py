@@ -20,14 +20,22 @@ from fluteprobe.sound.breath import (
     breath_resonances,
     noise_spectrum,
     segment_length,
-    steady_lines,
 )
 from fluteprobe.sound.measured import Measured, take_apart
 from fluteprobe.sound.partials import Partial, Samples, partials_of
-from fluteprobe.sound.pitch import Pitch, Vibrato
+from fluteprobe.sound.pitch import Vibrato
+from fluteprobe.sound.quality import LONGEST_S, Part, take_cautions
 from fluteprobe.sound.recording import Recording
 from fluteprobe.sound.spans import SHORTEST_TONE_S, Span, find_spans
 from fluteprobe.sound.steady import LONGEST_TONE_S, Steady, steady_parts
+from fluteprobe.sound.tone_quality import (
+    SECOND_TONE_DB,
+    beside,
+    other_tones,
+    room_cautions,
+    tone_cautions,
+    two_tones,
+)
 
 __all__ = ["LONGEST_TONE_S", "BreathResonance", "Kind", "Partial", "Tone", "Vibrato", "read_tones"]
 
@@ -39,17 +47,13 @@ _GLIDING_CENTS = 80.0
 _PAUSE_S = 0.3
 _PAUSE_MARGIN_S = 0.15
 _MOST_PAUSES = 20
-_SECOND_TONE_DB = -20.0
 _EDGE_TONE_CENTS = 12.0
 _EDGE_TONE_DB = 18.0
 _EDGE_TONE_PARTIALS_DB = -26.0
 _WARBLE_S = 0.6
 _WARBLE_TURNS = 4
-_SHORT_S = 0.4
-_NOISY_DB = 12.0
-_UNSTEADY_CENTS = 12.0
-_DRIFTING_CENTS = 20.0
-_QUIET_DB = -50.0
+_LEAD_S = 2.0
+_CREST_TONES = 8
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -73,15 +77,49 @@ class Tone:
     cautions: tuple[str, ...]
 
 
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Around:
+    """What a tone is held against: the take's quietest pause, if it has one, and its highest crest."""
+
+    pause: Samples | None
+    crest: float
+
+
 def read_tones(recording: Recording) -> tuple[Tone, ...]:
     """Find and measure every steady tone of a recording; a recording without one gives the breath alone."""
     spans = find_spans(recording)
     parts = steady_parts(recording, spans)
-    room = _room(recording, spans)
-    tones = [_read_tone(recording, steady, room) for steady in parts]
+    around = _Around(pause=_pause(recording, spans), crest=_crest(recording, parts))
+    tones = [_read_tone(recording, steady, around) for steady in parts]
     found = [tone for tone in tones if tone is not None and tone.kind != "breath only"]
     clear = [tone for tone in found if not _is_passing(tone)]
-    return _without_warble(clear or found) or (_breath_alone(recording, spans),)
+    kept = _without_warble(clear or found) or (_breath_alone(recording, spans),)
+    told = _take_cautions(recording, found)
+    already = {caution.split(":")[0] for caution in recording.cautions}
+    return tuple(replace(tone, cautions=_once((*tone.cautions, *told), already)) for tone in kept)
+
+
+def _once(cautions: tuple[str, ...], already: set[str]) -> tuple[str, ...]:
+    """Leave out what the recording says itself, by the word before the colon."""
+    return tuple(caution for caution in cautions if caution.split(":")[0] not in already)
+
+
+def _take_cautions(recording: Recording, tones: list[Tone]) -> tuple[str, ...]:
+    """Say what is wrong with the take as a whole, by its first tones and the pauses about them."""
+    rate = recording.rate_hz
+    lead = round((min((tone.start_s for tone in tones), default=0.0) - _LEAD_S) * rate)
+    first = max(lead, 0) if recording.frames > LONGEST_S * rate else 0
+    samples = recording.read(first, min(first + int(LONGEST_S * rate), recording.frames))
+    parts = [
+        Part(
+            start=round(tone.start_s * rate) - first,
+            stop=round(tone.end_s * rate) - first,
+            frequency_hz=tone.frequency_hz or 0.0,
+            harmonic_to_noise_db=tone.harmonic_to_noise_db or 0.0,
+        )
+        for tone in tones
+    ]
+    return take_cautions(samples, rate, parts)
 
 
 def _is_passing(tone: Tone) -> bool:
@@ -90,7 +128,7 @@ def _is_passing(tone: Tone) -> bool:
     return noisy and tone.end_s - tone.start_s < _PASSING_S
 
 
-def _room(recording: Recording, spans: tuple[Span, ...]) -> Samples | None:
+def _pause(recording: Recording, spans: tuple[Span, ...]) -> Samples | None:
     """Return the quietest pause of the recording, where it has one: what the room does when nobody plays."""
     rate = recording.rate_hz
     length, margin = int(_PAUSE_S * rate), int(_PAUSE_MARGIN_S * rate)
@@ -108,7 +146,14 @@ def _room(recording: Recording, spans: tuple[Span, ...]) -> Samples | None:
     return min(pauses, key=lambda pause: float(np.mean(pause**2)), default=None)
 
 
-def _read_tone(recording: Recording, steady: Steady, room: Samples | None) -> Tone | None:
+def _crest(recording: Recording, parts: list[Steady]) -> float:
+    """Return the highest crest of the first tones, looking at each one's first second."""
+    ends = [(part.start, min(part.stop, part.start + recording.rate_hz)) for part in parts[:_CREST_TONES]]
+    heads = [recording.read(start, stop) for start, stop in ends if start < stop]
+    return max((float(np.abs(head).max(initial=0.0)) for head in heads), default=0.0)
+
+
+def _read_tone(recording: Recording, steady: Steady, around: _Around) -> Tone | None:
     """Measure one steady part; None if it is too short or glides."""
     rate = recording.rate_hz
     if steady.stop - steady.start < SHORTEST_TONE_S * rate:
@@ -123,7 +168,7 @@ def _read_tone(recording: Recording, steady: Steady, room: Samples | None) -> To
         steady = replace(steady, start=start, stop=start + cycles)
         samples = recording.read(steady.start, steady.stop)
         measured = take_apart(samples, rate, steady.frequency_hz)
-    return _tone(samples, rate, steady, measured, room)
+    return _tone(samples, rate, steady, measured, around)
 
 
 def _whole_cycles(vibrato: Vibrato | None, length: int, rate_hz: int) -> int:
@@ -134,13 +179,13 @@ def _whole_cycles(vibrato: Vibrato | None, length: int, rate_hz: int) -> int:
     return min(int(cycles / vibrato.rate_hz * rate_hz), length) if cycles >= 2 else length
 
 
-def _tone(samples: Samples, rate_hz: int, steady: Steady, measured: Measured, room: Samples | None) -> Tone:
+def _tone(samples: Samples, rate_hz: int, steady: Steady, measured: Measured, around: _Around) -> Tone:
     """Put the facts of one tone together."""
     start_s, end_s = steady.start / rate_hz, steady.stop / rate_hz
     if not measured.sounds:
         return _breath_between(start_s, end_s)
     pitch = measured.pitch
-    spectrum, pause = _noise(measured.residual, room, rate_hz, pitch.frequency_hz)
+    spectrum, pause = _noise(measured.residual, around.pause, rate_hz, pitch.frequency_hz)
     resonances = () if spectrum is None else breath_resonances(spectrum, pitch.frequency_hz, pause)
     partials = partials_of(pitch.frequency_hz, measured.orders, measured.amplitude)
     hnr = measured.harmonic_to_noise_db
@@ -157,7 +202,11 @@ def _tone(samples: Samples, rate_hz: int, steady: Steady, measured: Measured, ro
         drift_cents=pitch.drift_cents,
         vibrato=pitch.vibrato,
         attack_ms=steady.attack_ms,
-        cautions=(*words, *_cautions(samples, rate_hz, pitch, hnr)),
+        cautions=(
+            *words,
+            *tone_cautions(samples, rate_hz, measured, around.crest),
+            *room_cautions(spectrum, pause, pitch.frequency_hz),
+        ),
     )
 
 
@@ -179,17 +228,16 @@ def _kind(
 ) -> tuple[Kind, tuple[str, ...]]:
     """Tell a clean tone from a multiphonic and an edge tone, with the reason in words."""
     own = measured.pitch.frequency_hz
-    least = float(measured.amplitude.max()) * 10.0 ** (_SECOND_TONE_DB / 20.0)
-    others = [] if spectrum is None else [hz for hz, level in steady_lines(spectrum, own) if level > least]
-    if others:
-        return "multiphonic", (f"two tones at once: {own:.0f} and {others[0]:.0f} Hz",)
+    others = other_tones(spectrum, own, float(measured.amplitude.max()))
+    if others and others[0][1] > SECOND_TONE_DB:
+        return "multiphonic", (two_tones(own, [hz for hz, _ in others]),)
     moves = float(np.hypot(measured.pitch.wander_cents, measured.pitch.drift_cents / 3.5))
     bare = all(partial.level_db < _EDGE_TONE_PARTIALS_DB for partial in partials if partial.order > 1)
     held = any(abs(resonance.frequency_hz / own - 1.0) < 0.02 for resonance in resonances)
     faint = measured.harmonic_to_noise_db < _EDGE_TONE_DB
     if moves > _EDGE_TONE_CENTS and bare and faint and not held:
         return "edge tone", ("an edge tone: its pitch follows the breath; blow until the flute speaks",)
-    return "tone", ()
+    return "tone", tuple(beside(*line) for line in others[:1])
 
 
 def _without_warble(tones: list[Tone]) -> tuple[Tone, ...]:
@@ -208,23 +256,6 @@ def _without_warble(tones: list[Tone]) -> tuple[Tone, ...]:
             longest, start_s=tones[0].start_s, end_s=tones[-1].end_s, kind="multiphonic", cautions=(words,)
         ),
     )
-
-
-def _cautions(samples: Samples, rate_hz: int, pitch: Pitch, harmonic_to_noise_db: float) -> list[str]:
-    """Say in plain words what makes this tone's numbers less sure."""
-    cautions = []
-    level_db = 20.0 * np.log10(float(np.sqrt(np.mean(samples.astype(np.float64) ** 2))) + 1e-20)
-    if level_db < _QUIET_DB:
-        cautions.append(f"very quiet ({level_db:.0f} dB under full scale): record closer")
-    if harmonic_to_noise_db < _NOISY_DB:
-        cautions.append(f"noisy: the tone stands only {harmonic_to_noise_db:.0f} dB over the noise")
-    if len(samples) < _SHORT_S * rate_hz:
-        cautions.append(f"short: {len(samples) / rate_hz:.2f} s steady; hold the tone for two seconds")
-    if pitch.wander_cents > _UNSTEADY_CENTS:
-        cautions.append(f"unsteady: the pitch wanders by {pitch.wander_cents:.0f} cents")
-    if abs(pitch.drift_cents) > _DRIFTING_CENTS:
-        cautions.append(f"drifting: the pitch moves by {pitch.drift_cents:+.0f} cents from start to end")
-    return cautions
 
 
 def _breath_alone(recording: Recording, spans: tuple[Span, ...]) -> Tone:
