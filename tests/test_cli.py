@@ -115,7 +115,9 @@ def test_every_example_runs(name: str | None, here: Path) -> None:
 
 def test_commands_are_listed_in_the_order_of_work() -> None:
     listed = re.findall(r"^  (\w+)  ", run("--help").output.split("Commands:")[1], re.MULTILINE)
-    assert listed == ["begin", "sheet", "hear", "measure", "chart"]
+    assert listed == [
+        "begin", "sheet", "split", "hear", "measure", "chart", "forecast", "compare", "plays", "tuning",
+    ]  # fmt: skip
 
 
 def test_the_version() -> None:
