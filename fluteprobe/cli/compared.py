@@ -22,6 +22,7 @@ from fluteprobe.compare.values import (
 
 MOST_COLUMNS = 6  # flutes whose numbers fit beside one another
 MOST_LISTED = 10
+MOST_NAMED = 40
 
 Line = list[str]
 
@@ -38,17 +39,22 @@ def told(comparison: Comparison) -> str:
 def _heading(comparison: Comparison) -> list[str]:
     matched = "fingering" if comparison.by == "fingering" else "sounding note"
     parts = [f"{len(comparison.flutes)} flutes by {matched}", f"A4 = {comparison.a4_hz:g} Hz"]
-    if comparison.temperature_c is not None:
+    if comparison.is_carried:
         parts.append(f"carried to {comparison.temperature_c:g} °C, an estimate")
+    elif comparison.temperature_c is not None:
+        parts.append(f"air {comparison.temperature_c:g} °C")
     facts = [[f"{k}", flute.label, *_facts(flute)] for k, flute in enumerate(comparison.flutes, start=1)]
-    return [" · ".join(parts), "", *(line[:WIDTH].rstrip() for line in _aligned(facts, numbers={0}))]
+    lines = [line[:WIDTH].rstrip() for line in _aligned(facts, numbers={0})]
+    if len(lines) > MOST_NAMED + 1:
+        lines = [*lines[:MOST_NAMED], f"… and {len(lines) - MOST_NAMED} more, in the order they were given"]
+    return [" · ".join(parts), "", *lines]
 
 
 def _facts(flute: Flute) -> list[str]:
     air = flute.sitting.air_temperature_c
     return [
         f"{flute.facts.holes} hole{'s' if flute.facts.holes > 1 else ''}",
-        "air not given" if air is None else f"air {air:g} °C",
+        "air not given" if air is None else f"air {round(air, 1):g} °C",
         flute.sitting.date or "",
     ]
 

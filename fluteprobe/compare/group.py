@@ -1,7 +1,7 @@
 """All flutes at once: what each note is over the group, who plays it, and the A4 that suits all best.
 
 Conventions: those of `values`. Means are weighted by inverse variances, the variance between flutes included
-(DerSimonian & Laird 1986), so that one very sure flute does not speak for all; medians, scatter and what
+(Paule & Mandel 1982), so that one very sure flute does not speak for all; medians, scatter and what
 stands out are robust (see `statistics`).
 """
 

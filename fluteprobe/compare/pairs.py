@@ -28,7 +28,7 @@ from fluteprobe.compare.table import Table
 from fluteprobe.compare.values import Beats, Difference, Flute, Pair, Verdict
 from fluteprobe.flute.tuning import temperature_shift_cents
 
-PAIRS_UP_TO = 16  # flutes; of more, every pair is more than anybody reads
+PAIRS_UP_TO = 32  # flutes; of more, every pair is more than anybody reads
 FEWEST_FOR_OFFSET = 3
 # A blown flute is warmed by the breath, so that its air follows the room's only in part: a tenth of what a
 # pitch is carried counts as its standard uncertainty. An estimate of ours, no source.

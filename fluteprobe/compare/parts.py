@@ -2,7 +2,7 @@
 
 Conventions: those of `values`; parts and levels in cents. The model is additive: a pitch is the instrument's
 own in that row, plus what the player adds to the whole flute, plus a rest. It is fitted by weighted least
-squares (see `statistics.two_way`), with the players of each group adding up to zero: only differences
+squares (see `statistics.steady_two_way`), with the players of each group adding up to zero: only differences
 between players who share an instrument can be told.
 """
 
@@ -18,7 +18,7 @@ from fluteprobe.compare.statistics import (
     TwoWay,
     Wholes,
     line_through,
-    two_way,
+    steady_two_way,
 )
 from fluteprobe.compare.table import Table
 from fluteprobe.compare.values import (
@@ -46,10 +46,12 @@ def parts_of(table: Table, flutes: Sequence[Flute]) -> Parts | None:
     if not any(len(players) > 1 for players in played_by.values()):
         return None
     rows, columns = np.nonzero(np.isfinite(table.pitch[:, named]))
+    if not len(rows):
+        return None
     sitting = np.array(named)[columns]
     blocks, block = np.unique(np.stack([rows, [flutes[k].kin for k in sitting]]), axis=1, return_inverse=True)
     players, player = np.unique([_player(flutes[k]) for k in sitting], return_inverse=True)
-    fit = two_way(table.cents[rows, sitting], table.uncertainty[rows, sitting], block.ravel(), player)
+    fit = steady_two_way(table.cents[rows, sitting], table.uncertainty[rows, sitting], block.ravel(), player)
     return Parts(
         players=tuple(_players_parts(fit, [str(name) for name in players])),
         flutes=tuple(
@@ -154,7 +156,7 @@ def _drift(table: Table, kin: int, dated: Sequence[tuple[int, int]]) -> Drift | 
     if len(np.unique(columns)) < len(sittings):
         return None
     block = np.unique(rows, return_inverse=True)[1]
-    fit = two_way(pitch[rows, columns], doubt[rows, columns], block, columns)
+    fit = steady_two_way(pitch[rows, columns], doubt[rows, columns], block, columns)
     if fit.group.max() > 0:
         return None
     years = days / DAYS_A_YEAR

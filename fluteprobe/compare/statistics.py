@@ -126,14 +126,26 @@ def birge_ratio(rests: Reals, uncertainties: Reals, freedom: int) -> float:
 
 
 def between_variance(values: Reals, uncertainties: Reals) -> float:
-    """Return the variance between values beyond their own (DerSimonian & Laird 1986, see `survey`)."""
-    if len(values) < 2:
+    """Return the variance between values beyond their own uncertainty.
+
+    It is what makes the weighted squares add up to the degrees of freedom (Paule & Mandel, J. Res. Natl. Bur.
+    Stand. 87, 377 (1982)), found by halving; 0 where they do not exceed them.
+    """
+    freedom = len(values) - 1
+    own = _at_least(uncertainties) ** 2
+
+    def excess(between: float) -> float:
+        weights = 1.0 / (own + between)
+        mean = weights @ values / weights.sum()
+        return float(weights @ (values - mean) ** 2) - freedom
+
+    if freedom < 1 or excess(0.0) <= 0.0:
         return 0.0
-    weights = _weights(uncertainties)
-    total = weights.sum()
-    mean = weights @ values / total
-    excess = float(weights @ (values - mean) ** 2) - (len(values) - 1)
-    return max(0.0, excess / float(total - (weights**2).sum() / total))
+    low, high = 0.0, float(np.ptp(values)) ** 2  # with which the squares are less than one each
+    for _ in range(60):
+        middle = 0.5 * (low + high)
+        low, high = (middle, high) if excess(middle) > 0.0 else (low, middle)
+    return high
 
 
 def middle_and_scatter(values: Reals) -> tuple[Reals, Reals]:
@@ -179,42 +191,67 @@ def line_through(times: Reals, values: Reals, uncertainties: Reals) -> Line:
     return Line(slope=slope, uncertainty=uncertainty, freedom=freedom, probability=probability)
 
 
-def two_way(values: Reals, uncertainties: Reals, block: Wholes, column: Wholes) -> TwoWay:
+def two_way(
+    values: Reals, uncertainties: Reals, block: Wholes, column: Wholes, kept: Flags | None = None
+) -> TwoWay:
     """Fit value = block + column by weighted least squares, the columns of each group adding up to zero.
 
     `block` and `column` number each value's, from 0 without gaps, shape (values,). Columns that share no
     block, not even through others, are in different groups: nothing can be told of their difference. The
     blocks are eliminated from the normal equations, whose least-norm solution is the one that adds up to zero
-    (Scheffé, The Analysis of Variance, 1959, ch. 4).
+    (Scheffé, The Analysis of Variance, 1959, ch. 4). The columns rest on the values `kept`, whole blocks;
+    blocks are told by all.
     """
     weights = _weights(uncertainties)
-    blocks, columns = int(block.max()) + 1, int(column.max()) + 1
-    table, totals = np.zeros((blocks, columns)), np.zeros(blocks)
-    np.add.at(table, (block, column), weights)
-    np.add.at(totals, block, weights * values)
-    per_block, per_column = table.sum(axis=1), table.sum(axis=0)
+    kept = np.ones(len(values), dtype=np.bool_) if kept is None else kept
+    table, totals = _sums(weights, values, block, column)
+    per_block = table.sum(axis=1)
     shares = table / per_block[:, None]
-    normal = np.diag(per_column) - table.T @ shares
-    wanted = np.bincount(column, weights * values, columns) - shares.T @ totals
+    steady = kept[np.unique(block, return_index=True)[1]]
+    normal = np.diag(table[steady].sum(axis=0)) - table[steady].T @ shares[steady]
+    wanted = np.bincount(column[kept], (weights * values)[kept], table.shape[1])
     spread = np.linalg.pinv(normal, rcond=1e-10, hermitian=True)
-    columns_fit = spread @ wanted
-    blocks_fit = (totals - table @ columns_fit) / per_block
-    rest = values - blocks_fit[block] - columns_fit[column]
-    rank = blocks + int(np.linalg.matrix_rank(normal, tol=1e-9 * max(1e-300, float(per_column.max()))))
-    ratio = birge_ratio(rest, uncertainties, len(values) - rank)
+    columns = spread @ (wanted - shares[steady].T @ totals[steady])
+    blocks = (totals - table @ columns) / per_block
+    rest = values - blocks[block] - columns[column]
+    group = _groups(table[steady] > 0.0)
+    freedom = int(kept.sum()) - int(steady.sum()) - (table.shape[1] - int(group.max()) - 1)
+    ratio = birge_ratio(rest[kept], uncertainties[kept], freedom)
+    apart = np.eye(table.shape[1])[column] - shares[block]
+    tilted = np.einsum("vi,ij,vj->v", apart, spread, apart)
+    rest_variance = 1.0 / weights - 1.0 / per_block[block] + np.where(kept, -tilted, tilted)
     block_variance = 1.0 / per_block + np.einsum("bi,ij,bj->b", shares, spread, shares)
-    crossed = -(shares @ spread)[block, column]
-    fitted = block_variance[block] + np.diag(spread)[column] + 2.0 * crossed
     return TwoWay(
-        block=blocks_fit,
+        block=blocks,
         block_uncertainty=ratio * np.sqrt(block_variance),
-        column=columns_fit,
+        column=columns,
         column_uncertainty=ratio * np.sqrt(np.maximum(np.diag(spread), 0.0)),
         rest=rest,
-        rest_uncertainty=np.sqrt(np.maximum(1.0 / weights - fitted, 0.0)),
-        group=_groups(table > 0.0),
+        rest_uncertainty=np.sqrt(np.maximum(rest_variance, 0.0)),
+        group=group,
         ratio=ratio,
     )
+
+
+def steady_two_way(values: Reals, uncertainties: Reals, block: Wholes, column: Wholes) -> TwoWay:
+    """Fit `two_way`, the columns resting on blocks of which no value stands far off.
+
+    One block that goes its own way would tilt all columns; those beyond SURE uncertainties, themselves
+    widened by how the rests scatter, are left out of the columns once, unless what is left would no longer
+    join them.
+    """
+    fit = two_way(values, uncertainties, block, column)
+    told = fit.rest_uncertainty > _LEAST_UNCERTAINTY
+    if not told.any():
+        return fit
+    scores = np.where(told, np.abs(fit.rest) / np.maximum(fit.rest_uncertainty, _LEAST_UNCERTAINTY), 0.0)
+    scale = max(1.0, MAD_TO_SIGMA * float(np.median(scores[told])))
+    kept = ~np.isin(block, block[scores > SURE * scale])
+    still = np.unique(column[kept])
+    if kept.all() or len(still) < len(fit.column):
+        return fit
+    steadier = two_way(values, uncertainties, block, column, kept)
+    return steadier if (steadier.group == fit.group).all() else fit
 
 
 # --- helpers -----------------------------------------------------------------------------------------
@@ -236,6 +273,13 @@ def _nanmedian(values: Reals) -> Reals:
     last = ordered.shape[-1] - 1
     pair = [np.take_along_axis(ordered, np.minimum(k, last)[..., None], axis=-1)[..., 0] for k in (low, high)]
     return np.where(count > 0, 0.5 * (pair[0] + pair[1]), nan)
+
+
+def _sums(weights: Reals, values: Reals, block: Wholes, column: Wholes) -> tuple[Reals, Reals]:
+    """Return the weights (blocks, columns), and the weighted values of each block."""
+    table = np.zeros((int(block.max()) + 1, int(column.max()) + 1))
+    np.add.at(table, (block, column), weights)
+    return table, np.asarray(np.bincount(block, weights * values, len(table)), dtype=np.float64)
 
 
 def _groups(joined: Flags) -> Wholes:

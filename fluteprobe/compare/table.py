@@ -188,13 +188,12 @@ def _told_apart(labels: Sequence[str], words: Sequence[str]) -> list[str]:
 
 def _fits_the_others(pitch: Reals, flute: int, entries: int) -> bool:
     """Whether a flute's shared fingerings, pitch (rows, flutes), sound near the middle of the others'."""
-    own = pitch[:, flute]
-    mine = pitch[np.isfinite(own)]
-    if len(mine) < min(FEWEST_ALIKE, entries):
-        return False
+    mine = pitch[np.isfinite(pitch[:, flute])]
+    if not len(mine) or len(mine) < min(FEWEST_ALIKE, entries):
+        return entries == 0  # one that gave nothing says nothing against it
     others = np.nanmedian(np.delete(mine, flute, axis=1), axis=1)
     near = np.abs(mine[:, flute] - others) <= ALIKE_CENTS
-    return bool(near.mean() >= ALIKE_SHARE) if len(near) else False
+    return bool(near.mean() >= ALIKE_SHARE)
 
 
 def _by_fingering(found: Sequence[Sequence[Found]], a4_pitch: float) -> Table:

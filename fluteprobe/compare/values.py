@@ -235,3 +235,8 @@ class Comparison:
     parts: Parts | None
     drifts: tuple[Drift, ...]
     cautions: tuple[str, ...]
+
+    @property
+    def is_carried(self) -> bool:
+        """Whether any pitch was carried from one temperature to another."""
+        return any(flute.shift_cents for flute in self.flutes)

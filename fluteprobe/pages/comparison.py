@@ -17,6 +17,7 @@ from math import ceil
 from pathlib import Path
 
 from matplotlib.figure import Figure
+from matplotlib.path import Path as Outline
 
 from fluteprobe.compare.values import Cell, Comparison, Difference, Row
 from fluteprobe.flute.fingering import Fingering
@@ -58,7 +59,8 @@ from fluteprobe.pages.paper import (
 )
 
 MOST_COLUMNS = 36
-NUMBERED_UP_TO = 8  # columns with room for a number under the mark's own sign
+NUMBERED_UP_TO = 8  # columns with room for a number beside the mark
+SHAPED_UP_TO = 3  # flutes that can be told apart on the strip, each with its uncertainty
 LIMITS_CENTS = (20.0, 30.0, 40.0, 60.0, 100.0)
 
 _LEAST_ROW_MM, _MOST_ROW_MM = 4.4, 12.0
@@ -70,7 +72,7 @@ _GAP_MM = 4.0
 _HEADS_MM = 7.0
 _LINE_MM = 3.7
 _LABEL_MM = 24.0
-_KEY_MM = 8.0
+_KEY_MM, _KEY_LINE_MM = 12.6, 4.6
 _FOOT_MM = 5.0
 _MOST_NAME_LINES = 5
 _NOTE, _NUMBER, _BOLD = Type(size_pt=10.0), Type(size_pt=8.5), Type(size_pt=8.5, bold=True)
@@ -254,8 +256,10 @@ def _draw_page(
 
 def _head(comparison: Comparison) -> Head:
     facts = [f"A4 = {comparison.a4_hz:g} Hz"]
-    if comparison.temperature_c is not None:
+    if comparison.is_carried:
         facts.append(f"carried to {comparison.temperature_c:g} °C: an estimate")
+    elif comparison.temperature_c is not None:
+        facts.append(f"air {comparison.temperature_c:g} °C")
     by = "fingering" if comparison.by == "fingering" else "sounding note"
     count = len(comparison.rows)
     things = "fingering" if comparison.by == "fingering" else "note"
@@ -276,9 +280,9 @@ def _draw_columns(page: Page, plan: Plan, bottom: float) -> None:
     for k, name in enumerate(short_names(plan.comparison)):
         words, voice = str(k + 1), _COLUMN
         if plan.column_mm >= 14.0:
-            words, voice = f"{k + 1} {name}", SMALL
+            words, voice = shortened(f"{k + 1} {name}", SMALL, plan.column_mm - 0.6), SMALL
         x = plan.middle_mm(k)
-        page.text(x, y, shortened(words, voice, plan.column_mm - 0.4), voice, align="center", colour=QUIET)
+        page.text(x, y, words, voice, align="center", colour=QUIET)
         page.line((x, plan.top_mm), (x, bottom), colour=BAND)
 
 
@@ -347,17 +351,22 @@ def _draw_on_strip(page: Page, plan: Plan, row: Row, y: float) -> None:
         page.box((low, y - 0.62 * tall), (high - low, 1.24 * tall), HAIRLINE)
         middle = plan.x_mm(row.middle_cents)
         page.line((middle, y - tall), (middle, y + tall), colour=INK, pt=FIRM_PT)
-    few = len(plan.comparison.flutes) <= 3
+    few = len(plan.comparison.flutes) <= SHAPED_UP_TO
     if plan.is_pair and (difference := _difference(plan.comparison, row)) and difference.verdict:
         ends = [plan.x_mm(cell.cents) for cell in row.played]
         page.line((ends[0], y), (ends[1], y), colour=ACCENT, pt=1.4)
-    for cell in row.played:
-        x = plan.x_mm(cell.cents)
-        if few:
-            _draw_few(page, plan, cell, (x, y))
-        else:
-            page.line((x, y - 0.5 * tall), (x, y + 0.5 * tall), colour=INK, pt=FINE_PT)
+    if few:
+        for cell in row.played:
+            _draw_few(page, plan, cell, (plan.x_mm(cell.cents), y))
+    else:
+        _draw_ticks(page, [plan.x_mm(cell.cents) for cell in row.played], (y - 0.5 * tall, y + 0.5 * tall))
     _draw_numbers_of_outstanding(page, plan, row, y)
+
+
+def _draw_ticks(page: Page, xs_mm: Sequence[float], ends_mm: tuple[float, float]) -> None:
+    """Draw an upright tick at each place, all as one line."""
+    points = [(x, y) for x in xs_mm for y in ends_mm]
+    page.path(Outline(points, [Outline.MOVETO, Outline.LINETO] * len(xs_mm)), edge=INK, pt=FINE_PT)
 
 
 def _draw_few(page: Page, plan: Plan, cell: Cell, at: tuple[float, float]) -> None:
@@ -428,13 +437,16 @@ def _draw_findings(page: Page, findings: Sequence[Finding], top: float) -> None:
 
 
 def _draw_key(page: Page, plan: Plan, y: float) -> None:
-    """Draw every sign of the page with what it means, on one line."""
+    """Draw every sign of the page with what it means, on one line or two."""
     page.line((MARGIN_MM, y - 4.0), (page.right_mm, y - 4.0), colour=HAIRLINE)
     x = MARGIN_MM
     for words, draw in _signs(page, plan):
+        wide = 3.2 + width_mm(words, LABEL)
+        if x + wide > page.right_mm:
+            x, y = MARGIN_MM, y + _KEY_LINE_MM
         draw((x + 1.3, y))
         page.text(x + 3.2, y + 1.0, words, LABEL, colour=QUIET)
-        x += 3.2 + width_mm(words, LABEL) + 3.6
+        x += wide + 3.6
 
 
 def _signs(page: Page, plan: Plan) -> Iterator[tuple[str, partial[None]]]:
@@ -443,7 +455,7 @@ def _signs(page: Page, plan: Plan) -> Iterator[tuple[str, partial[None]]]:
         yield f"within {tolerance:g} cents", partial(draw_mark, page, cents=0.0, tolerance_cents=tolerance)
         yield "sharper", partial(draw_mark, page, cents=2.0 * tolerance, tolerance_cents=tolerance)
         yield "flatter", partial(draw_mark, page, cents=-2.0 * tolerance, tolerance_cents=tolerance)
-    if plan.is_pair:
+    if len(plan.comparison.flutes) <= SHAPED_UP_TO:
         for flute, name in enumerate(short_names(plan.comparison)):
             yield shortened(name, LABEL, 34.0), partial(draw_flutes_shape, page, flute=flute)
     if any(cell.stands_out for row in plan.comparison.rows for cell in row.played):
