@@ -13,25 +13,54 @@ import click
 
 from fluteprobe.cli.screen import WIDTH
 from fluteprobe.session import printable
+from fluteprobe.session.names import UnfitNameError, read_take_name
 from fluteprobe.survey import Reading
 
 _MOST_ODDS = 1000.0
+_LONGEST_NAME = 100
 
 
 def explained(readings: Sequence[Reading], take: str) -> str:
-    """Return the reasons for the register of every tone of a take, named as in the folder or by its stem.
+    """Return the reasons for the register of every tone of a take.
+
+    A take is named as in the folder, with or without its ending, or by its fingering and breath in the plain
+    form, whatever its file is called.
 
     Raises
     ------
     click.BadParameter
         If no take is called so; the message names the nearest.
     """
-    names = dict.fromkeys(reading.take for reading in readings)
-    wanted = [name for name in names if take in {name, PurePosixPath(name).name, PurePosixPath(name).stem}]
+    wanted = _called(readings, take)
     if not wanted:
-        near = get_close_matches(take, [PurePosixPath(name).stem for name in names], n=1, cutoff=0.0)
-        raise click.BadParameter(f"no take is called {printable(take)}; the nearest is {near[0]}")
+        stems = [PurePosixPath(reading.take).stem for reading in readings]
+        near = get_close_matches(take[:_LONGEST_NAME], stems, n=1, cutoff=0.0)
+        hint = f"; the nearest is {printable(near[0])}" if near else ", for nothing was heard in any"
+        raise click.BadParameter(f"no take is called {printable(take)}{hint}")
     return "\n\n".join(_reasons(reading) for reading in readings if reading.take in wanted)
+
+
+def _called(readings: Sequence[Reading], take: str) -> set[str]:
+    """Return the takes of that name, or else those that are of the fingering, breath and number it says."""
+    paths = {reading.take: PurePosixPath(reading.take) for reading in readings}
+    named = {name for name, path in paths.items() if take in {name, path.name, path.stem}}
+    if named:
+        return named
+    try:
+        says = read_take_name(PurePosixPath(take).name)
+    except UnfitNameError:
+        return set()
+    kind = (says.fingering, says.breath)
+    alike = {reading.take for reading in readings if (reading.fingering, reading.breath) == kind}
+    return {name for name in alike if says.number is None or says.number == _number(paths[name].name)}
+
+
+def _number(name: str) -> int | None:
+    """Return the number that a take's file name says."""
+    try:
+        return read_take_name(name).number or 1
+    except UnfitNameError:
+        return None
 
 
 def _reasons(reading: Reading) -> str:

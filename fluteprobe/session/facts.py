@@ -211,10 +211,9 @@ def _pair_faults(flute: Mapping[str, Any], place: _Place) -> Iterator[str]:
     """Tell whether there are more or fewer pairs than holes, or the flute ends above a hole."""
     pairs = flute.get("holes_mm")
     if pairs is not None and "holes" in flute and len(pairs) != flute["holes"]:
-        yield (
-            f"{place('flute', 'holes_mm')}: key holes_mm: found {len(pairs)} pair{'' if len(pairs) == 1 else 's'}, "
-            f"expected {flute['holes']}, one for each hole"
-        )
+        found = "1 pair" if len(pairs) == 1 else f"{len(pairs)} pairs"
+        expected = f"expected {flute['holes']}, one for each hole"
+        yield f"{place('flute', 'holes_mm')}: key holes_mm: found {found}, {expected}"
     if pairs and flute.get("length_mm", pairs[-1][0] + 1.0) <= pairs[-1][0]:
         yield (
             f"{place('flute', 'length_mm')}: key length_mm: found {flute['length_mm']:g}, expected more than "
