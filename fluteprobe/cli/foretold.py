@@ -4,17 +4,19 @@ Conventions: deviations in cents with a sign, ± the standard uncertainty; chanc
 """
 
 import textwrap
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from statistics import median
 
 from fluteprobe.cli.screen import WIDTH
+from fluteprobe.flute.fingering import Fingering
 from fluteprobe.flute.sensitivity import CHANGE_MM, Measure, Sensitivity
 from fluteprobe.flute.tuning import cents_between
 from fluteprobe.forecast.contract import CAUTIONS
 from fluteprobe.forecast.values import Disagreement, FitWords, Forecast, Prediction
 from fluteprobe.session import printable
 
-_HOLES_A_TABLE = 5
+_SHOWN = 12
+_LEAST_CHANGE_CENTS = 0.1
 
 Line = Sequence[str]
 
@@ -24,7 +26,7 @@ def told(forecast: Forecast, *, show_all: bool, maker: bool) -> str:
     rest = [each for each in forecast.predictions if each.rank is None and each.measured_hz is None]
     blocks = [
         [_heading(forecast)],
-        _next_lines([each for each in forecast.predictions if each.rank is not None]),
+        _next_lines([each for each in forecast.predictions if each.rank is not None], show_all=show_all),
         ["Will hardly speak", *_foretold_table(rest)] if show_all and rest else [],
         _played_lines([each for each in forecast.predictions if each.measured_hz is not None]),
         [] if forecast.fit is None else _fit_lines(forecast.fit),
@@ -53,12 +55,14 @@ def _heading(forecast: Forecast) -> str:
 # --- predictions -------------------------------------------------------------------------------------
 
 
-def _next_lines(predictions: Sequence[Prediction]) -> list[str]:
+def _next_lines(predictions: Sequence[Prediction], *, show_all: bool) -> list[str]:
+    shown = predictions if show_all else predictions[:_SHOWN]
     if not predictions:
         return ["Nothing more to try: what was not played yet will hardly speak."]
     return [
         "What to try next, best first",
-        *_foretold_table(predictions),
+        *_foretold_table(shown),
+        *([f"  and {len(predictions) - len(shown)} more: --all"] if len(shown) < len(predictions) else []),
         "",
         *_wrapped(
             "cents: off the note as it should sound, ± standard uncertainty; speaks: how likely, overblown; "
@@ -163,28 +167,41 @@ def _disagreement(disagreement: Disagreement) -> str:
 
 
 def _maker_lines(changes: Sequence[Sensitivity]) -> list[str]:
-    """Return tables of what a change of each hole does, a column for each hole, few holes at a time."""
-    lines = ["For the maker, estimates in cents"]
-    holes = max((each.hole for each in changes), default=0)
-    for what, key in (("wider", "wider_cents"), ("nearer the foot", "lower_cents")):
-        for first in range(1, holes + 1, _HOLES_A_TABLE):
-            chosen = range(first, min(first + _HOLES_A_TABLE, holes + 1))
-            lines += ["", f"if a hole is {CHANGE_MM:g} mm {what}", *_change_table(changes, chosen, key)]
-    return [*lines, "", *(line for caution in CAUTIONS for line in _wrapped(caution))]
+    """Return what a change of each hole does to the notes that it moves, both registers side by side."""
+    notes: dict[tuple[int, Fingering], dict[int, Sensitivity]] = {}
+    for each in changes:
+        notes.setdefault((each.hole, each.fingering), {})[each.register] = each
+    rows = [
+        (str(hole), str(fingering), *_changes(registers, "wider_cents"), *_changes(registers, "lower_cents"))
+        for (hole, fingering), registers in notes.items()
+        if any(_moves(each) for each in registers.values())
+    ]
+    how = f"{CHANGE_MM:g} mm"
+    titles = [
+        ("", "", f"{how} wider", "", f"{how} to the foot", ""),
+        ("hole", "fingering", "register 1", "register 2", "register 1", "register 2"),
+    ]
+    return [
+        "For the maker: estimates in cents, for a small change of one hole",
+        *_aligned([*titles, *rows], numbers={0}),
+        *_wrapped(
+            "holes are counted from the mouth; "
+            f"what moves by less than {_LEAST_CHANGE_CENTS:g} cents is left out"
+        ),
+        "",
+        *(line for caution in CAUTIONS for line in _wrapped(caution)),
+    ]
 
 
-def _change_table(changes: Sequence[Sensitivity], holes: range, key: str) -> list[str]:
-    cells = {(each.fingering, each.register, each.hole): getattr(each, key) for each in changes}
-    notes = dict.fromkeys((fingering, register) for fingering, register, _ in cells)
-    rows = [("fingering", "register", *(f"hole {hole}" for hole in holes))]
-    for fingering, register in notes:
-        moved = [cells[fingering, register, hole] for hole in holes]
-        rows.append((str(fingering), str(register), *(_change(each) for each in moved)))
-    return _aligned(rows, numbers=set(range(1, len(holes) + 2)))
+def _moves(change: Sensitivity) -> bool:
+    moves = max(abs(change.wider_cents.value), abs(change.lower_cents.value))
+    return moves >= _LEAST_CHANGE_CENTS
 
 
-def _change(measure: Measure) -> str:
-    return f"{measure.value:+.2f}±{measure.uncertainty:.2f}".replace("-", "−")
+def _changes(registers: Mapping[int, Sensitivity], key: str) -> Iterable[str]:
+    for register in (1, 2):
+        measure: Measure | None = getattr(registers.get(register), key, None)
+        yield "" if measure is None else f"{_signed(measure.value, 2)} ± {measure.uncertainty:.2f}"
 
 
 # --- words -------------------------------------------------------------------------------------------
@@ -210,5 +227,5 @@ def _note(note: str) -> str:
     return note.replace("#", "♯")
 
 
-def _signed(cents: float) -> str:
-    return f"{round(cents, 1) + 0.0:+.1f}".replace("-", "−")
+def _signed(cents: float, digits: int = 1) -> str:
+    return f"{round(cents, digits) + 0.0:+.{digits}f}".replace("-", "−")

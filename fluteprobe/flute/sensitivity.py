@@ -5,7 +5,8 @@ standard (k = 1) and follow from the fit's covariance. All are estimates from a 
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from math import hypot
 
 import numpy as np
 
@@ -26,11 +27,12 @@ from fluteprobe.flute.tube import FOOT_CORRECTION, Tube, hole_pressures, opennes
 
 CHANGE_MM = 0.1
 
-_DRAWS = 24
+_DRAWS = 14
 _SEED = 7
-_PROBES = 160
+_PROBES = 25
 _PROBE_MM = 0.02
 _PROBE_CLEAR_MM = 0.01
+_FORMULA_SHARE = 0.05  # how exact the formulas for holes are: common practice, no source
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -79,8 +81,14 @@ def tube_words(shape: Shape) -> TubeWords:
     """Return what the fit says of the whole tube."""
     draws = _drawn(shape)
     foot = FOOT_CORRECTION * draws[:, BORE] / 2.0
-    largest = np.array([pressure_maximum_mm(tube_of(each, shape.temperature_c)) for each in draws])
-    stretch = np.array([_stretch_cents(tube_of(each, shape.temperature_c)) for each in draws])
+    tubes = [tube_of(each, shape.temperature_c) for each in draws]
+    closed = np.zeros((1, shape.holes))
+    middle = pitches(shape.tube, closed, 2)
+    heard = np.array([followed(tube, closed, middle)[0] for tube in tubes])
+    largest = np.array([
+        pressure_maximum_mm(tube, float(2.0 ** (first / 1200.0)))
+        for tube, (first, _) in zip(tubes, heard, strict=True)
+    ])  # fmt: skip
     top = draws[:, FIRST_PLACE]
     return TubeWords(
         effective_length_mm=_measure(draws[:, LENGTH] + draws[:, HEAD] + foot),
@@ -91,7 +99,7 @@ def tube_words(shape: Shape) -> TubeWords:
         pressure_maximum_mm=_measure(largest),
         top_hole_mm=_measure(top),
         maximum_below_top_hole_mm=_measure(largest - top),
-        stretch_cents=_measure(stretch),
+        stretch_cents=_measure(heard[:, 1] - heard[:, 0] - 1200.0),
     )
 
 
@@ -113,8 +121,8 @@ def sensitivities(
             hole=hole + 1,
             fingering=fingering,
             register=register,
-            wider_cents=_measure(changes[:, row, register - 1, FIRST_PLACE + shape.holes + hole]),
-            lower_cents=_measure(changes[:, row, register - 1, FIRST_PLACE + hole]),
+            wider_cents=_change(changes[:, row, register - 1, FIRST_PLACE + shape.holes + hole]),
+            lower_cents=_change(changes[:, row, register - 1, FIRST_PLACE + hole]),
         )
         for hole in range(shape.holes)
         for row, fingering in enumerate(fingerings)
@@ -123,36 +131,23 @@ def sensitivities(
     )
 
 
-def pressure_maximum_mm(tube: Tube) -> float:
-    """Return where the pressure of the all-closed first register swings most, in mm from the sound hole.
+def pressure_maximum_mm(tube: Tube, frequency_hz: float) -> float:
+    """Return where the pressure swings most with all holes closed, in mm from the sound hole.
 
-    It is looked for with probe holes so small that they change nothing, and refined by a parabola.
+    It is looked for between a fifth and four fifths of the length, with probe holes so small that they change
+    nothing, and refined by a parabola.
     """
-    closed = np.zeros((1, len(tube.holes_mm)))
-    frequency = 2.0 ** (pitches(tube, closed, 1)[0, 0] / 1200.0)
-    places = np.linspace(0.02, 0.98, _PROBES) * tube.length_mm
+    places = np.linspace(0.2, 0.8, _PROBES) * tube.length_mm
     taken = np.array([place for place, _ in tube.holes_mm])
-    places = places[np.abs(places[:, None] - taken[None, :]).min(axis=1, initial=np.inf) > _PROBE_CLEAR_MM]
-    holes = sorted([*tube.holes_mm, *((float(place), _PROBE_MM) for place in places)])
-    probed = Tube(
-        bore_mm=tube.bore_mm,
-        length_mm=tube.length_mm,
-        wall_mm=tube.wall_mm,
-        holes_mm=tuple(holes),
-        head_correction_mm=tube.head_correction_mm,
-        temperature_c=tube.temperature_c,
-    )
-    swing = np.abs(hole_pressures(probed, np.zeros(len(holes)), frequency))[:, 0]
+    free = np.abs(places[:, None] - taken[None, :]).min(axis=1, initial=np.inf) > _PROBE_CLEAR_MM
+    holes = sorted([*tube.holes_mm, *((float(place), _PROBE_MM) for place in places[free])])
+    probed = replace(tube, holes_mm=tuple(holes))
+    swing = np.abs(hole_pressures(probed, np.zeros(len(holes)), frequency_hz))[:, 0]
     at = np.array([place for place, _ in holes])
     top = int(np.clip(np.argmax(swing), 2, len(at) - 3))
     near = slice(top - 2, top + 3)
     curve = np.polynomial.Polynomial.fit(at[near], swing[near], 2).convert().coef
     return float(np.clip(-curve[1] / (2.0 * curve[2]), at[top - 2], at[top + 2]))
-
-
-def _stretch_cents(tube: Tube) -> float:
-    first, second = pitches(tube, np.zeros((1, len(tube.holes_mm))), 2)[0]
-    return float(second - first - 1200.0)
 
 
 def _drawn(shape: Shape) -> Reals:
@@ -165,3 +160,9 @@ def _drawn(shape: Shape) -> Reals:
 
 def _measure(draws: Reals) -> Measure:
     return Measure(value=float(np.mean(draws)), uncertainty=float(np.std(draws, ddof=1)))
+
+
+def _change(draws: Reals) -> Measure:
+    """Return a change with the fit's uncertainty and that of the hole's formulas."""
+    fit = _measure(draws)
+    return Measure(value=fit.value, uncertainty=hypot(fit.uncertainty, _FORMULA_SHARE * fit.value))
