@@ -104,13 +104,23 @@ def create_session(folder: Path | str, flute: FluteFacts, sitting: Sitting | Non
     text = facts_text(flute, sitting or Sitting())
     try:
         (folder / TAKES_FOLDER).mkdir(parents=True, exist_ok=True)
-        with facts.open("x", encoding="utf-8", newline="\n") as file:
-            file.write(text)
+        _write_new(facts, text)
     except FileExistsError as error:
         raise SessionError(f"{printable(str(error.filename))} is a file, where a folder is needed") from None
     except (OSError, ValueError) as error:
         raise SessionError(f"{printable(str(folder))} cannot be made: {plain_reason(error)}") from None
     return facts
+
+
+def _write_new(path: Path, text: str) -> None:
+    """Write a file that is not there yet, whole or not at all."""
+    with path.open("x", encoding="utf-8", newline="\n") as file:
+        try:
+            file.write(text)
+            file.flush()
+        except OSError:
+            path.unlink()
+            raise
 
 
 def require_new(folder: Path) -> None:
