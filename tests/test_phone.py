@@ -5,6 +5,8 @@ colours sound, but changes neither its pitch nor the order of its samples.
 """
 
 import os
+import resource
+import struct
 import subprocess
 import sys
 from collections.abc import Sequence
@@ -258,6 +260,8 @@ def _middle(path: Path) -> Heard:
 NO_SOUND = "damaged or cut off: no sound can be read from it; copy or record it again"
 NO_KIND = "not a sound file that can be read (WAV, AIFF, CAF, FLAC, Ogg, Opus, MP3, M4A, 3GP …)"
 UNFINISHED = "cut off: the recorder did not finish this file, so its index is missing; record it again"
+PROTECTED = "copy-protected: it cannot be read; record it anew, or save an unprotected copy"
+MANY = "80 channels; save the one to measure as WAV or FLAC"
 CUT_OFF = "cut off: the file is shorter than its header says; copy or record it again"
 
 
@@ -376,7 +380,26 @@ def test_a_video_without_sound(tmp_path: Path) -> None:
 def test_a_copy_protected_file(tmp_path: Path, tag: bytes) -> None:
     path = written(tmp_path / "take.m4a")
     path.write_bytes(path.read_bytes().replace(b"mp4a", tag, 1))
-    assert fault(path) == "copy-protected: it cannot be read; record it anew, or save an unprotected copy"
+    assert fault(path) == PROTECTED
+
+
+def test_a_file_under_common_encryption(tmp_path: Path) -> None:
+    # ISO/IEC 14496-12, section 8.12: the entry is renamed; a `sinf` box tells its true kind and the scheme.
+    path = written(tmp_path / "take.m4a")
+    content = bytearray(path.read_bytes())
+    scheme = box(b"sinf", box(b"frma", b"mp4a") + box(b"schm", b"\0\0\0\0cenc\0\1\0\0"))
+    for name in (b"moov", b"trak", b"mdia", b"minf", b"stbl", b"stsd", b"mp4a"):
+        start = content.find(name) - 4
+        length = int.from_bytes(content[start : start + 4], "big")
+        content[start : start + 4] = (length + len(scheme)).to_bytes(4, "big")
+    content[start + 4 : start + 8] = b"enca"
+    content[start + length : start + length] = scheme
+    path.write_bytes(content)
+    assert fault(path) == PROTECTED
+
+
+def box(name: bytes, content: bytes) -> bytes:
+    return (8 + len(content)).to_bytes(4, "big") + name + content
 
 
 def test_a_kind_of_sound_that_nothing_reads(tmp_path: Path) -> None:
@@ -393,6 +416,47 @@ def test_a_file_that_another_tool_cut_starts_at_its_first_sound(tmp_path: Path) 
     assert recording.duration_s == pytest.approx(2.5, abs=0.1)
     offset = late_by(whole(recording), truth)
     assert -offset == pytest.approx(1.5 * 48_000, abs=3000)
+
+
+@pytest.mark.parametrize("announced", [10**6, 2**31, 2**32 - 1])
+def test_an_absurd_number_of_packets_takes_no_memory(tmp_path: Path, announced: int) -> None:
+    # A decoder would list them all before it reads the first: 24 bytes for each.
+    path = written(tmp_path / "take.m4a")
+    content = bytearray(path.read_bytes())
+    sizes, chunks, times = (content.find(name) for name in (b"stsz", b"stsc", b"stts"))
+    content[sizes + 8 : sizes + 16] = struct.pack(">II", 1, announced)
+    content[chunks + 16 : chunks + 20] = content[times + 12 : times + 16] = struct.pack(">I", announced)
+    path.write_bytes(content)
+    before_kb = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
+    assert fault(path) == NO_SOUND
+    assert resource.getrusage(resource.RUSAGE_SELF).ru_maxrss - before_kb < 5000
+
+
+def test_an_absurd_duration_is_not_believed(tmp_path: Path) -> None:
+    path = written(tmp_path / "take.m4a")
+    content = bytearray(path.read_bytes())
+    for name, at in ((b"mvhd", 20), (b"tkhd", 24), (b"mdhd", 20), (b"elst", 12)):
+        content[content.find(name) + at : content.find(name) + at + 4] = b"\x7f\xff\xff\xff"
+    path.write_bytes(content)
+    recording = open_recording(path)
+    assert recording.duration_s == pytest.approx(1.0, abs=0.1)
+
+
+@pytest.mark.parametrize("rate_hz", [1, 4000])
+def test_an_absurd_rate_is_refused(tmp_path: Path, rate_hz: int) -> None:
+    path = written(tmp_path / "take.mov")
+    content = bytearray(path.read_bytes())
+    at = content.find(b"sowt") + 28  # 16.16 fixed point (ISO/IEC 14496-12, section 12.2.3)
+    content[at : at + 4] = struct.pack(">HH", rate_hz, 0)
+    path.write_bytes(content)
+    assert fault(path) == f"recorded at {rate_hz} samples a second; at least 8000 are needed"
+
+
+@pytest.mark.parametrize(("channels", "words"), [(0, NO_SOUND), (80, MANY), (255, MANY.replace("80", "255"))])
+def test_an_absurd_number_of_channels_is_refused(tmp_path: Path, channels: int, words: str) -> None:
+    path = phone_files.written(tmp_path / "take.mkv", tone(48_000), 48_000, "pcm_s16le")
+    path.write_bytes(path.read_bytes().replace(b"\x9f\x81\x01", bytes([0x9F, 0x81, channels])))  # RFC 9559
+    assert fault(path) == words
 
 
 def test_samples_that_are_no_numbers_become_silence(tmp_path: Path) -> None:

@@ -422,6 +422,19 @@ def test_a_long_file_cut_off_in_its_sound_is_streamed_as_far_as_it_goes(tmp_path
     assert sum(len(block) for _, block in recording.blocks(10_000)) == recording.frames
 
 
+def test_a_long_flac_damaged_amid_its_sound_is_streamed_as_far_as_it_goes(tmp_path: Path) -> None:
+    path = written(tmp_path / "take.flac", tone(8000, seconds=200.0), 8000)
+    content = bytearray(path.read_bytes())
+    content[len(content) // 2] ^= 0x55
+    path.write_bytes(content)
+    recording = open_recording(path)
+    assert recording.cautions == (
+        "cut off: the file is shorter than its header says; copy or record it again",
+    )
+    assert recording.duration_s == pytest.approx(100.0, abs=2.0)
+    assert sum(len(block) for _, block in recording.blocks(10_000)) == recording.frames
+
+
 def test_a_recorder_that_did_not_know_the_length_yet_is_believed(tmp_path: Path) -> None:
     path = written(tmp_path / "take.wav", tone())
     content = bytearray(path.read_bytes())

@@ -11,6 +11,8 @@ import re
 from collections.abc import Iterator
 from typing import BinaryIO
 
+from fluteprobe.sound.decoding import NO_SOUND_FOUND, PROTECTED
+
 _STARTS = (b"ftyp", b"moov", b"mdat", b"wide", b"free", b"skip", b"pnot")
 _UNREAD = (b"mdat", b"free", b"skip", b"wide", b"uuid")
 _MOST_EDITS = 1000
@@ -19,25 +21,27 @@ _COUNTS = re.compile(rb"(?:(?:stsz|stz2).{8}|trun.{4})(.{4})", re.DOTALL)
 _EDITS = re.compile(rb"elst.{4}(.{4})", re.DOTALL)
 
 
-def announces_too_much(descriptor: int) -> bool:
-    """Return whether an MP4 file announces more pieces than it has bytes, or more edits than a person makes.
+def fault_of(descriptor: int) -> str | None:
+    """Return, in words, why an MP4 file had better not be given to a decoder; None where it may be.
 
-    A decoder makes a list of all pieces that are announced, 24 bytes for each, before it reads the first.
+    A decoder lists all pieces that are announced, 24 bytes for each, before it reads the first; so there may be
+    no more pieces than the file has bytes, and no more edits than a person makes.
     """
     with os.fdopen(descriptor, "rb", closefd=False) as file:
-        size = os.fstat(descriptor).st_size
-        pieces = 0
+        pieces, size = 0, os.fstat(descriptor).st_size
         for name, start, stop in _boxes(file, size):
             if name in _UNREAD:
                 continue
-            if stop - start > _MOST_INDEX_BYTES:
-                return True
             file.seek(start)
-            content = file.read(stop - start)
+            content = file.read(min(stop - start, _MOST_INDEX_BYTES + 1))
             pieces += _sum(_COUNTS, content)
-            if pieces > size or _sum(_EDITS, content) > _MOST_EDITS or b"cmov" in content:
-                return True
-    return False
+            if pieces > size or len(content) > _MOST_INDEX_BYTES or _sum(_EDITS, content) > _MOST_EDITS:
+                return NO_SOUND_FOUND
+            if b"cmov" in content:  # a compressed index, which could hold anything; unused for twenty years
+                return NO_SOUND_FOUND
+            if b"schm" in content:
+                return PROTECTED
+    return None
 
 
 def is_unfinished(descriptor: int) -> bool:

@@ -23,6 +23,8 @@ CUT_OFF = "cut off: the file is shorter than its header says; copy or record it 
 DAMAGED = "damaged: it cannot be read to its end; copy or record it again"
 NO_SOUND_FOUND = "damaged or cut off: no sound can be read from it; copy or record it again"
 
+PROTECTED = "copy-protected: it cannot be read; record it anew, or save an unprotected copy"
+
 
 class RecordingError(ValueError):
     """A recording that cannot be used. Its text is one line for people, without the file's name."""

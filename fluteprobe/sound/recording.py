@@ -16,7 +16,7 @@ from pathlib import Path
 import numpy as np
 
 from fluteprobe.sound.channels import LEAST_CLIPPED_SHARE, Choice, choose_channel
-from fluteprobe.sound.decoding import Decoder, RecordingError, Samples, UnknownKindError
+from fluteprobe.sound.decoding import DAMAGED, Decoder, RecordingError, Samples, UnknownKindError
 from fluteprobe.sound.soundfiles import SoundFileDecoder
 
 __all__ = ["LOWEST_RATE_HZ", "SHORTEST_S", "Recording", "RecordingError", "Samples", "open_recording"]
@@ -302,10 +302,12 @@ def _salvaged(decoder: Decoder, frames: int) -> Iterator[Samples]:
 
 
 def _probes(decoder: Decoder, frames: int) -> Iterator[Samples]:
+    """Yield a dozen stretches spread over the recording; fewer where it is damaged."""
     length = int(_PROBE_S * decoder.rate_hz)
     for start in np.linspace(0, frames - length, _PROBES).astype(int):
         decoder.seek(int(start))
-        yield decoder.read(length)
+        if len(probe := decoder.read(length)) >= SHORTEST_S * decoder.rate_hz:
+            yield probe
 
 
 def _first_sound(decoder: Decoder, frames: int) -> Samples:
@@ -316,7 +318,7 @@ def _first_sound(decoder: Decoder, frames: int) -> Samples:
         piece = _mended(decoder.read(min(frames, decoder.chunk_frames)))
         frames -= len(piece)
         if len(piece) < shortest:
-            break
+            raise RecordingError(DAMAGED)
         if _sounds([piece]):
             return piece
     raise RecordingError("silent: every sample is the same; check which microphone was recording")

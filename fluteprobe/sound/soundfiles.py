@@ -109,11 +109,20 @@ class SoundFileDecoder:
             raise RecordingError(DAMAGED) from None
 
     def reaches(self, frame: int) -> bool:
-        """Return whether a frame can be decoded."""
+        """Return whether a frame can be decoded.
+
+        FLAC is decoded all the way there: libsndfile seeks past damage, but does not read past it.
+        """
         if not self._file.seekable():
             raise RecordingError("too long for its kind of sound file; save it as WAV or FLAC")
         try:
-            self.seek(frame)
+            if self._file.format == "FLAC":
+                while (at := self._file.tell()) < frame and len(
+                    self.read(min(self.chunk_frames, frame - at))
+                ):
+                    pass
+            else:
+                self.seek(frame)
             return len(self.read(1)) == 1
         except RecordingError:
             return False

@@ -11,8 +11,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from fluteprobe.sound.boxes import announces_too_much, is_unfinished
-from fluteprobe.sound.decoding import NO_SOUND_FOUND, RecordingError, Samples
+from fluteprobe.sound.boxes import fault_of, is_unfinished
+from fluteprobe.sound.decoding import NO_SOUND_FOUND, PROTECTED, RecordingError, Samples
 
 if TYPE_CHECKING:
     from av import AudioFrame, AudioStream, CodecContext, Packet
@@ -66,8 +66,8 @@ class Track:
 
     def __init__(self, descriptor: int) -> None:
         self._descriptor = descriptor
-        if announces_too_much(descriptor):
-            raise RecordingError(NO_SOUND_FOUND)
+        if (fault := fault_of(descriptor)) is not None:
+            raise RecordingError(fault)
         self.rate_hz, self.channels = 0, 0
         self.is_damaged, self._is_cut = False, False
         self._open()
@@ -232,7 +232,7 @@ def _fault_of(track: "AudioStream") -> str | None:
     """Return why a sound track cannot be read."""
     context = track.codec_context
     if context is not None and _tag(context) in _PROTECTED_TAGS:
-        return "copy-protected: it cannot be read; record it anew, or save an unprotected copy"
+        return PROTECTED
     if context is None or context.codec.name not in _CODECS.split(","):
         return "its kind of sound cannot be read; save it as WAV or FLAC"
     extra = context.extradata or b""
