@@ -43,11 +43,9 @@ _VIBRATO_HZ = (2.5, 9.0)
 _LEAST_VIBRATO_CENTS = 3.0
 _VIBRATO_SHARE = 0.5
 _FINER = 8
-_SLOW_TERMS = 3
 _DRIFT_RATIO = 20.0
-# Student's t for 95 % over 2, by degrees of freedom (JCGM 100:2008, table G.2): a scatter known from few
-# independent values needs a wider interval.
-_STUDENT = {1: 6.35, 2: 2.15, 3: 1.59, 4: 1.39, 5: 1.285}
+_FEWEST_WAVES, _MOST_WAVES = 3, 24
+_MEMORIES = np.geomspace(0.005, 1.0, 20)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -175,10 +173,10 @@ def measure_pitch(track: PhaseTrack) -> Pitch:
     moving = curve.terms > 1
     trend, vibrato, rest = _movement(points.time_s, deviation, curve.span_s)
     slow = rest + trend * (points.time_s - points.time_s.mean())
-    wander_cents, freedom = _uncertainty_of_mean(slow) if moving else (0.0, 1)
+    mean_wanders_cents = _uncertainty_of_mean(slow, curve.terms - 2) if moving else 0.0
     return Pitch(
         frequency_hz=mean_hz,
-        uncertainty_cents=float(np.hypot(noise_cents, _STUDENT.get(freedom, 1.0) * wander_cents)),
+        uncertainty_cents=float(np.hypot(noise_cents, mean_wanders_cents)),
         noise_cents=noise_cents,
         drift_cents=trend * curve.span_s if moving else 0.0,
         vibrato=vibrato,
@@ -339,18 +337,26 @@ def _vibrato_rate(centred: Floats, deviation: Floats, span_s: float) -> float | 
     return 2.0 * np.pi * (best + shift) * float(step)
 
 
-def _uncertainty_of_mean(slow: Floats) -> tuple[float, int]:
-    """Return the standard uncertainty of the mean of a correlated series, and its degrees of freedom.
+def _uncertainty_of_mean(slow: Floats, waves: int) -> float:
+    """Return the standard uncertainty of the mean of a series whose values hang together in time.
 
-    The variance of a mean is the series' spectrum at zero frequency over its length (Priestley, Spectral
-    Analysis and Time Series, 1981, eq. 5.3.5); the slowest cosine terms of the series estimate it, which is
-    the type A evaluation of JCGM 100:2008 (4.2) with the correlation taken into account (4.2.7). The first
-    term holds the drift too: it is left out where it is no more of the kind of the others.
+    The type A evaluation of JCGM 100:2008 (4.2), the correlation taken into account (4.2.7). The series
+    (points,) is taken as one that forgets exponentially (Uhlenbeck & Ornstein, Phys. Rev. 36, 823, 1930): its
+    spectrum falls as 1 / (1 + (2π f τ)²) from S, and the mean over T has the variance S/T (1 - τ/T (1 -
+    exp(-T/τ))). Its cosine terms, chi-square distributed about that spectrum, say how likely every memory τ
+    is, from next to nothing to the length of the series, and how large S then is; the variance is the average
+    over τ. So a wander too slow to have shown all of itself makes the mean as unsure as it is.
     """
     points = len(slow)
-    order = np.arange(1, min(_SLOW_TERMS, points - 1) + 1)
-    waves = np.cos(np.pi * order[:, None] * (np.arange(points) + 0.5) / points)
-    strength = (waves @ slow) ** 2 * 2.0 / points
-    if len(strength) > 1 and strength[0] > _DRIFT_RATIO * strength[1:].mean():
-        strength = strength[1:]
-    return float(np.sqrt(strength.mean() / points)), len(strength)
+    order = np.arange(1, min(max(waves, _FEWEST_WAVES), _MOST_WAVES, points - 1) + 1)
+    cosines = np.cos(np.pi * order[:, None] * (np.arange(points) + 0.5) / points)
+    strength = (cosines @ slow) ** 2 * 2.0 / points
+    if len(strength) > 1 and strength[0] > _DRIFT_RATIO * strength[1:_FEWEST_WAVES].mean():
+        strength, order = strength[1:], order[1:]  # a drift from start to end is no wander
+    rise = 1.0 + (np.pi * order * _MEMORIES[:, None]) ** 2
+    scale = np.maximum(rise @ strength, 1e-30)
+    log_chance = 0.5 * np.log(rise).sum(axis=1) - 0.5 * len(order) * np.log(scale)
+    chance = np.exp(log_chance - log_chance.max())
+    left = 1.0 - _MEMORIES * (1.0 - np.exp(-1.0 / _MEMORIES))
+    variance = scale / max(len(order) - 2, 1) / points * left
+    return float(np.sqrt(chance @ variance / chance.sum()))
