@@ -18,6 +18,9 @@ import numpy as np
 import phone_files
 import pytest
 from av import AudioFrame, AudioStream, Packet
+from harm import CHANGES, KEPT, Changes, harmed, is_read_or_refused_in_one_line
+from hypothesis import given, settings
+from hypothesis import strategies as st
 from numpy.typing import NDArray
 
 from fluteprobe.sound import track
@@ -487,3 +490,28 @@ def test_no_file_stays_open(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> 
     list(recording.blocks(10_000))
     fault(tmp_path / "bad.m4a")
     assert len(list(Path("/dev/fd").iterdir())) == before
+
+
+@pytest.fixture(scope="module")
+def sound_files(tmp_path_factory: pytest.TempPathFactory) -> dict[str, bytes]:
+    """Return a fifth of a second of tone in every kind of file."""
+    folder = tmp_path_factory.mktemp("sound")
+    return {name: written(folder / name, tone(KINDS[name][1], 0.2)).read_bytes() for name in KINDS}
+
+
+@given(
+    name=st.sampled_from(sorted(KINDS)),
+    changes=CHANGES,
+    kept=KEPT,
+)
+@settings(max_examples=150, deadline=None)
+def test_a_harmed_file_is_read_or_refused_in_one_line(
+    sound_files: dict[str, bytes],
+    tmp_path_factory: pytest.TempPathFactory,
+    name: str,
+    changes: Changes,
+    kept: float,
+) -> None:
+    path = tmp_path_factory.getbasetemp() / "harmed"
+    path.write_bytes(harmed(sound_files[name], changes, kept))
+    assert is_read_or_refused_in_one_line(path)

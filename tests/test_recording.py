@@ -15,7 +15,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 import soundfile
-from hypothesis import given
+from harm import CHANGES, KEPT, Changes, harmed, is_read_or_refused_in_one_line
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from numpy.typing import NDArray
 
@@ -530,3 +531,29 @@ def test_no_file_stays_open(tmp_path: Path) -> None:
     list(recording.blocks(10_000))
     fault(tmp_path / "bad.wav")
     assert len(list(Path("/dev/fd").iterdir())) == before
+
+
+@pytest.fixture(scope="module")
+def sound_files(tmp_path_factory: pytest.TempPathFactory) -> list[bytes]:
+    """Return a fifth of a second of tone in every kind of file."""
+    path = tmp_path_factory.mktemp("sound") / "take"
+    kinds = [*LOSSLESS, *LOSSY]
+    return [written(path, tone(8000, 0.2), 8000, format=a, subtype=b).read_bytes() for a, b in kinds]
+
+
+@given(
+    which=st.integers(0, len(LOSSLESS) + len(LOSSY) - 1),
+    changes=CHANGES,
+    kept=KEPT,
+)
+@settings(max_examples=200, deadline=None)
+def test_a_harmed_file_is_read_or_refused_in_one_line(
+    sound_files: list[bytes],
+    tmp_path_factory: pytest.TempPathFactory,
+    which: int,
+    changes: Changes,
+    kept: float,
+) -> None:
+    path = tmp_path_factory.getbasetemp() / "harmed"
+    path.write_bytes(harmed(sound_files[which], changes, kept))
+    assert is_read_or_refused_in_one_line(path)

@@ -24,8 +24,8 @@ _EDITS = re.compile(rb"elst.{4}(.{4})", re.DOTALL)
 def fault_of(descriptor: int) -> str | None:
     """Return, in words, why an MP4 file had better not be given to a decoder; None where it may be.
 
-    A decoder lists all pieces that are announced, 24 bytes for each, before it reads the first; so there may be
-    no more pieces than the file has bytes, and no more edits than a person makes.
+    A decoder lists all pieces that are announced, 24 bytes for each, before it reads the first; so there may
+    be no more pieces than the file has bytes, and no more edits than a person makes.
     """
     with os.fdopen(descriptor, "rb", closefd=False) as file:
         pieces, size = 0, os.fstat(descriptor).st_size
