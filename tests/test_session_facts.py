@@ -1,11 +1,12 @@
 """flute.toml: every fault told at once, with its line, what was found and what is expected."""
 
+import re
 from pathlib import Path
 
 import pytest
 from sessions import fault, faults
 
-from fluteprobe.session import FluteFacts, create_session, read_session
+from fluteprobe.session import FluteFacts, Sitting, create_session, read_session
 from fluteprobe.session.keys import UnfitError, typed
 
 PLAIN = "[flute]\nholes = 6\n"
@@ -403,3 +404,16 @@ def test_what_is_typed_is_checked_as_in_the_file(table: str, key: str, text: str
     with pytest.raises(UnfitError) as caught:
         typed(table, key, text)
     assert str(caught.value) == message
+
+
+# --- what the README shows ---------------------------------------------------------------------------
+
+README = (Path(__file__).parent.parent / "README.md").read_text("utf-8")
+
+
+def test_the_readme_s_faults_are_told_as_it_shows_them(tmp_path: Path) -> None:
+    (shown,) = re.findall(r"^```text\n(Error: robin/.*?)^```$", README, re.MULTILINE | re.DOTALL)
+    folder = tmp_path / "robin"
+    file = create_session(folder, FluteFacts(name="robin", holes=6), Sitting(air_temperature_c=21.5))
+    text = file.read_text("utf-8").replace("holes = 6", "holes = 60", 1).replace("= 21.5", "= 22,5 °C")
+    assert [f"Error: robin/{line}" for line in faults(folder, text)] == shown.splitlines()

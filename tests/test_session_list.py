@@ -1,6 +1,7 @@
 """takes.csv: recordings that keep their own names, as spreadsheets and people write the table."""
 
 import os
+import re
 import unicodedata
 from pathlib import Path
 
@@ -9,6 +10,7 @@ from sessions import is_harmless, problems, put, takes
 
 from fluteprobe.session import FluteFacts, create_session
 
+README = (Path(__file__).parent.parent / "README.md").read_text("utf-8")
 OWN_NAMES = ("New Recording 12.m4a", "Möwe.wav", "b.flac", "c.wav")
 
 
@@ -285,3 +287,15 @@ def test_no_control_character_of_a_list_reaches_a_message(heron: Path) -> None:
     lines = told(heron, text)
     assert len(lines) > 2
     assert all(is_harmless(take + message) for take, message in lines)
+
+
+def test_the_readme_s_table_is_read(heron: Path) -> None:
+    (shown,) = re.findall(r"^```csv\n(.*?)^```$", README, re.MULTILINE | re.DOTALL)
+    (heron / "takes" / "monday").mkdir()
+    put(heron, "monday/3.wav")
+    (heron / "takes" / "xxxxxx.wav").unlink()
+    write(heron, shown)
+    assert takes(heron) == [
+        ("takes/New Recording 12.m4a", "oxxxxx", "over", 1),
+        ("takes/monday/3.wav", "xxxxxx", "normal", 1),
+    ]

@@ -16,6 +16,7 @@ from fluteprobe.session.names import (
     read_fingering,
     read_take_name,
     split_ending,
+    stems_of,
     words_of,
 )
 
@@ -24,12 +25,12 @@ STATE_WORDS = st.text(alphabet=STATES, min_size=6, max_size=6)
 
 def stem(name: str, *, holes: int = 6, known: frozenset[str] = frozenset()) -> str:
     """Return the plain form of a name."""
-    return read_take_name(name, holes, (name,), known).stem
+    return read_take_name(name, holes, known=known).stem
 
 
 def refusal(name: str, *others: str) -> str:
     with pytest.raises(UnfitNameError) as caught:
-        read_take_name(name, 6, (name, *others))
+        read_take_name(name, 6, stems_of((name, *others)))
     return str(caught.value)
 
 
@@ -217,7 +218,7 @@ def test_without_a_flute_a_name_has_one_to_ten_holes() -> None:
 def test_no_name_whatever_breaks_the_reader(name: str, holes: int | None) -> None:
     told, read = "", holes
     try:
-        read = read_take_name(name, holes, (name,)).fingering.holes
+        read = read_take_name(name, holes, stems_of((name,))).fingering.holes
     except UnfitNameError as error:
         told = str(error)
     assert is_harmless(told)

@@ -7,6 +7,9 @@ spreadsheets still save. Lines end in a newline alone.
 
 import codecs
 import re
+from collections import Counter
+from collections.abc import Hashable, Sequence
+from hashlib import blake2b
 from pathlib import Path
 
 from fluteprobe.session.words import plain_reason
@@ -31,7 +34,7 @@ _OTHER_KINDS = {
 _NO_TEXT = re.compile(
     "[\x00-\x08\x0e-\x1a\x1c-\x1f]"
 )  # ESC apart: it may stand in a text, and is told with its line
-_BLOCK_BYTES = 1 << 20
+_BLOCK_BYTES, _END_BYTES, _MOST_COMPARED = 1 << 20, 1 << 14, 10
 
 
 class UnfitFileError(ValueError):
@@ -75,18 +78,52 @@ def read_text(path: Path, folder: Path, largest_bytes: int, kind: str) -> str:
 
 
 def require_recording(path: Path, folder: Path) -> None:
-    """Raise an UnfitFileError unless a path is a file inside the session folder."""
-    if not is_inside(path, folder):
+    """Raise an UnfitFileError unless a path, in a folder that is known to be inside, is a file inside."""
+    if path.is_symlink() and not is_inside(path, folder):
         raise UnfitFileError("is a link that leads out of the session folder: put the recording itself there")
     if not path.is_file():
         raise UnfitFileError("is no ordinary file: put the recording itself there")
 
 
-def is_same_content(one: Path, other: Path) -> bool:
-    """Whether two files hold the same, byte for byte; not so where they are empty or cannot be read."""
+def first_copies(files: Sequence[tuple[Hashable, Path]]) -> list[int | None]:
+    """Return for each file the first one of the same kind that holds the same, byte for byte, None for none.
+
+    Files are read only where several of a kind have the same size; empty ones, and those that cannot be read,
+    are no copies.
+    """
+    keys = [(kind, _size(path)) for kind, path in files]
+    several = {key for key, times in Counter(keys).items() if times > 1 and key[1]}
+    firsts: dict[tuple[Hashable, bytes], list[int]] = {}
+    copies: list[int | None] = []
+    for k, (key, (_, path)) in enumerate(zip(keys, files, strict=True)):
+        alike = firsts.setdefault((key, _ends(path)), []) if key in several else []
+        same = next((first for first in alike[:_MOST_COMPARED] if _is_same(files[first][1], path)), None)
+        alike += [k] if same is None else []
+        copies.append(same)
+    return copies
+
+
+def _size(path: Path) -> int:
     try:
-        if one.stat().st_size != other.stat().st_size or not one.stat().st_size:
-            return False
+        return path.stat().st_size
+    except OSError:
+        return 0
+
+
+def _ends(path: Path) -> bytes:
+    """Return a digest of the beginning and the end of a file, which tells most apart."""
+    try:
+        with path.open("rb") as file:
+            digest = blake2b(file.read(_END_BYTES))
+            file.seek(max(0, _size(path) - _END_BYTES))
+            digest.update(file.read(_END_BYTES))
+    except OSError:
+        return b""
+    return digest.digest()
+
+
+def _is_same(one: Path, other: Path) -> bool:
+    try:
         with one.open("rb") as first, other.open("rb") as second:
             while block := first.read(_BLOCK_BYTES):
                 if block != second.read(_BLOCK_BYTES):

@@ -2,7 +2,7 @@
 
 import os
 import shlex
-from collections.abc import Iterator, Sequence
+from collections.abc import Container, Iterator, Sequence
 from dataclasses import dataclass, field
 from difflib import get_close_matches
 from pathlib import Path, PurePosixPath
@@ -14,8 +14,8 @@ from fluteprobe.session.files import (
     LIST_FILE,
     TAKES_FOLDER,
     UnfitFileError,
+    first_copies,
     is_inside,
-    is_same_content,
     read_text,
     require_recording,
 )
@@ -28,11 +28,13 @@ from fluteprobe.session.names import (
     read_take_name,
     same_name,
     split_ending,
+    stems_of,
     words_of,
 )
 from fluteprobe.session.words import Problem, SessionError, natural, plain_reason, printable
 
 _LARGEST_FACTS_BYTES = 100_000
+_NOT_OURS = frozenset({"thumbs.db", "icon\r"})  # what file managers leave behind
 _NO_SOUND = frozenset({
     ".txt", ".md", ".rtf", ".odt", ".doc", ".docx", ".pdf", ".html", ".xml", ".json", ".toml", ".csv", ".ods",
     ".xlsx", ".png", ".jpg", ".jpeg", ".gif", ".heic", ".svg", ".ini", ".db", ".log", ".bak", ".tmp", ".py",
@@ -230,7 +232,7 @@ def _candidates(folder: Path) -> list[str]:
 
 def _is_passed_over(path: Path) -> bool:
     """Whether a file is hidden, a folder, or plainly no sound."""
-    hidden = path.name.startswith(".") or path.name.endswith("~") or path.name.lower() == "thumbs.db"
+    hidden = path.name.startswith(".") or path.name.endswith("~") or path.name.lower() in _NOT_OURS
     return hidden or path.suffix.lower() in _NO_SOUND or (path.is_dir() and not path.is_symlink())
 
 
@@ -244,13 +246,14 @@ def _named_takes(
 ) -> Iterator[_Found]:
     """Return what the names of files say; those that say no fingering, or one twice, go to the problems."""
     known = words_of(flute.name) | words_of(folder.resolve().name)
+    taken = stems_of(names)
     first_of: dict[str, str] = {}
     for name in names:
         stem = split_ending(name)[0]
         try:
-            says = read_take_name(name, flute.holes, names, known)
+            says = read_take_name(name, flute.holes, taken, known)
             require_recording(folder / TAKES_FOLDER / name, folder)
-            _require_one_format(name, first_of.setdefault(same_name(stem), name), says, names)
+            _require_one_format(name, first_of.setdefault(same_name(stem), name), says, taken)
         except (UnfitNameError, UnfitFileError) as error:
             problems.append(Problem(take=f"{TAKES_FOLDER}/{printable(name)}", message=str(error)))
             continue
@@ -258,26 +261,25 @@ def _named_takes(
         yield _Found(name=f"{TAKES_FOLDER}/{name}", says=says, rank=rank)
 
 
-def _require_one_format(name: str, first: str, says: TakeName, names: Sequence[str]) -> None:
+def _require_one_format(name: str, first: str, says: TakeName, taken: Container[str]) -> None:
     """Raise an UnfitFileError for a take that is there already under another ending."""
     ending = split_ending(name)[1]
     if same_name(ending) != same_name(split_ending(first)[1]):
-        free = free_name(says, ending, names)
+        free = free_name(says, ending, taken)
         raise UnfitFileError(f"is the same take as {printable(first)}: remove one, or rename it to {free}")
 
 
 def _without_copies(folder: Path, found: Sequence[_Found], problems: list[Problem]) -> list[_Found]:
     """Return the takes without those that are another of the same fingering, byte for byte."""
-    kept: list[_Found] = []
-    for take in sorted(found, key=lambda each: each.rank):
-        alike = [other for other in kept if _kind(other) == _kind(take)]
-        same = next((o for o in alike if is_same_content(folder / o.name, folder / take.name)), None)
-        if same is None:
-            kept.append(take)
-        else:
-            message = f"is a copy of {printable(same.name)}, the same recording: remove one of the two"
-            problems.append(Problem(take=printable(take.name), message=message))
-    return kept
+    ordered = sorted(found, key=lambda each: each.rank)
+    firsts = first_copies([(_kind(each), folder / each.name) for each in ordered])
+    for each, first in zip(ordered, firsts, strict=True):
+        if first is not None:
+            message = (
+                f"is a copy of {printable(ordered[first].name)}, the same recording: remove one of the two"
+            )
+            problems.append(Problem(take=printable(each.name), message=message))
+    return [each for each, first in zip(ordered, firsts, strict=True) if first is None]
 
 
 def _kind(found: _Found) -> tuple[Fingering, Breath]:
@@ -287,13 +289,16 @@ def _kind(found: _Found) -> tuple[Fingering, Breath]:
 def _numbered(folder: Path, found: Sequence[_Found]) -> tuple[Take, ...]:
     """Return the takes; those of one fingering and breath are numbered apart, if they can as they say."""
     taken: set[tuple[Fingering, Breath, int]] = set()
+    last: dict[tuple[Fingering, Breath, int], int] = {}
     takes = []
     for each in sorted(found, key=lambda each: (each.rank, _name_order(each.name))):
-        number = each.says.number or 1
-        while (*_kind(each), number) in taken:
-            number += 1
-        taken.add((*_kind(each), number))
         fingering, breath = _kind(each)
+        wanted = (fingering, breath, each.says.number or 1)
+        number = last.get(wanted, wanted[2])
+        while (fingering, breath, number) in taken:
+            number += 1
+        last[wanted] = number
+        taken.add((fingering, breath, number))
         path = folder / PurePosixPath(each.name)
         takes.append(Take(name=each.name, path=path, fingering=fingering, breath=breath, number=number))
     return tuple(sorted(takes, key=_take_order))

@@ -9,7 +9,7 @@ track's and says nothing. What is not understood is refused, with the nearest pl
 
 import re
 import unicodedata
-from collections.abc import Container, Iterable, Iterator, Mapping, Sequence
+from collections.abc import Container, Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
 from difflib import get_close_matches
 from itertools import chain, count
@@ -91,12 +91,12 @@ def parse_take_name(name: str) -> tuple[Fingering, Breath, int]:
 
 
 def read_take_name(
-    name: str, holes: int | None = None, others: Sequence[str] = (), known: Container[str] = ()
+    name: str, holes: int | None = None, taken: Container[str] = (), known: Container[str] = ()
 ) -> TakeName:
     """Return what a file's name says, for a flute with so many holes.
 
-    A name that is proposed is none of `others`; `known` are further words that may stand in it, such as the
-    flute's name.
+    A name that is proposed has none of the stems `taken` (see `stems_of`); `known` are further words that may
+    stand in it, such as the flute's name.
 
     Raises
     ------
@@ -107,7 +107,7 @@ def read_take_name(
     parts = _parts(plain(stem), holes, known)
     fault = next(_faults(name, parts, holes), None)
     if fault:
-        raise UnfitNameError(f"{fault}: {_cure(parts, holes, ending, others)}")
+        raise UnfitNameError(f"{fault}: {_cure(parts, holes, ending, taken)}")
     if holes is not None and len(parts.states[0]) != holes:
         raise UnfitNameError(
             f"the name has {counted(len(parts.states[0]))} where the flute has {holes}: "
@@ -173,6 +173,11 @@ def split_ending(name: str) -> tuple[str, str]:
     if not (dot and stem and is_ending) or word in _BREATH_OF or _is_states(word, None):
         return name, ""
     return stem, f".{ending.strip()}"
+
+
+def stems_of(names: Iterable[str]) -> frozenset[str]:
+    """Return the stems of some files, as those that are free are told from them."""
+    return frozenset(same_name(split_ending(name)[0]) for name in names)
 
 
 def words_of(text: str) -> frozenset[str]:
@@ -282,11 +287,11 @@ def _faults(name: str, parts: _Parts, holes: int | None) -> Iterator[str]:
 # --- cures ---------------------------------------------------------------------------------------------
 
 
-def _cure(parts: _Parts, holes: int | None, ending: str, others: Sequence[str]) -> str:
+def _cure(parts: _Parts, holes: int | None, ending: str, taken: Container[str]) -> str:
     """Say how to name a take: the nearest plain name where one can be guessed."""
     near = _nearest(parts, holes)
     if near:
-        return f"rename it to {free_name(near, ending, others)}"
+        return f"rename it to {free_name(near, ending, taken)}"
     usual = example(holes or 6)
     return f"rename it to its fingering, as {usual}.wav or {usual}-over-2.wav, or list it in {LIST_FILE}"
 
@@ -332,9 +337,8 @@ def _nearest_breath(words: Iterable[str]) -> Breath | None:
     return None
 
 
-def free_name(name: TakeName, ending: str, others: Sequence[str]) -> str:
-    """Return a take's plain file name, numbered on where one of the other files has that stem."""
-    taken = {same_name(split_ending(other)[0]) for other in others}
+def free_name(name: TakeName, ending: str, taken: Container[str]) -> str:
+    """Return a take's plain file name, numbered on where another file has that stem."""
     numbers = chain([name.number or 1], count(2))
     stems = (replace(name, number=number).stem for number in numbers)
     return printable(f"{next(stem for stem in stems if stem not in taken)}{ending.lower()}")
