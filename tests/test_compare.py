@@ -192,6 +192,12 @@ def test_one_flute_s_notes_that_scatter_more_than_they_tell_widen_the_uncertaint
     )
 
 
+def test_one_flute_as_a_whole_sharper_widens_nothing() -> None:
+    doubts = [0.5, 2.0, 3.0, 0.7, 1.0, 2.5, 0.6, 1.5, 0.8, 3.0]
+    (pair,) = compare([flute("Wren", [0.0] * ROWS, doubts), flute("Wren", [30.0] * ROWS, doubts)]).pairs
+    assert pair.widened == 1.0
+
+
 def test_beats_are_the_difference_of_the_frequencies() -> None:
     comparison = two([0.0] * ROWS, [10.0] * ROWS)
     row = [row.by for row in comparison.rows].index("xxxxxo")  # A4
@@ -345,10 +351,16 @@ def test_without_temperatures_it_is_warned_and_the_air_named() -> None:
     comparison = compare([at_temperature("Wren", c, told=False) for c in (17.0, 26.0)], names=["a", "b"])
     assert comparison.temperature_c is None
     assert comparison.pairs[0].offset_verdict == "air"
+    assert {d.verdict for d in comparison.pairs[0].differences} == {"air"}
     assert comparison.cautions[0] == (
         "no air temperature is given for Wren, a, Wren, b: a degree moves a whole flute by about 3 cents, so "
         "trust single notes beside one another more than flutes as wholes"
     )
+
+
+def test_a_note_that_moved_is_real_in_unknown_air_too() -> None:
+    (pair,) = two([0.0] * ROWS, [12.0, 12.0, 32.0, *[12.0] * (ROWS - 3)]).pairs
+    assert [d.verdict for d in pair.differences] == ["air", "air", "different", *["air"] * (ROWS - 3)]
 
 
 def test_an_offset_beyond_any_air_is_real_without_temperatures_too() -> None:

@@ -48,8 +48,23 @@ def test_two_players_on_one_flute_are_parted() -> None:
 def test_a_note_that_one_player_plays_otherwise_is_found() -> None:
     apart = [value + (25.0 if k == 4 else 0.0) for k, value in enumerate(OWN)]
     parts = parts_of(played("Wren", "Ada", OWN, 0.0, 1), played("Wren", "Bela", apart, 0.0, 2))
-    found = {(rest.flute, rest.row) for rest in parts.rests if rest.verdict}
-    assert {row for _, row in found} == {4}
+    assert {rest.row for rest in parts.rests if rest.verdict} == {4}
+    assert {rest.player: rest.cents for rest in parts.rests if rest.row == 4} == pytest.approx(
+        {"Ada": -12.5, "Bela": 12.5}, abs=3.0
+    )
+
+
+def test_days_that_differ_make_a_player_s_part_less_sure() -> None:
+    days = (("Ada", 9.0), ("Bela", -4.0), ("Ada", 1.0), ("Bela", -8.0))
+    surveys = [
+        played("Wren", player, OWN, adds, k, date=f"2026-01-0{k}") for k, (player, adds) in enumerate(days, 1)
+    ]
+    parts = parts_of(*surveys)
+    ada, _ = parts.players
+    assert ada.cents == pytest.approx(5.5, abs=0.9)
+    # Two days each, 4 √2 and 2 √2 cents apart (s.d.): half the difference of two means is known to 2.2 cents.
+    assert ada.uncertainty_cents == pytest.approx(2.2, abs=0.5)
+    assert not any("one sitting" in text for text in parts.unseparated)
 
 
 def test_a_flute_that_both_play_joins_players_of_other_flutes() -> None:
@@ -129,6 +144,19 @@ def test_one_note_that_drifts_alone_is_found() -> None:
 
 def test_a_flute_that_keeps_its_pitch_has_no_drift() -> None:
     (drift,) = compare(sittings(0.0)).drifts
+    assert drift.verdict is None
+
+
+def test_players_who_take_turns_are_no_drift() -> None:
+    surveys = [
+        played("Wren", player, OWN, adds, 70 + k, date=date)
+        for k, (player, adds, date) in enumerate(
+            zip(("Ada", "Bela") * 3, (9.0, -9.0) * 3, DATES, strict=True)
+        )
+    ]
+    (drift,) = compare(surveys).drifts
+    assert drift.cents_per_year == pytest.approx(0.0, abs=4.0 * drift.uncertainty_cents_per_year)
+    assert drift.uncertainty_cents_per_year < 0.6
     assert drift.verdict is None
 
 

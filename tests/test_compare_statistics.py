@@ -126,6 +126,7 @@ def test_a_line_is_that_of_scipy() -> None:
     values = np.array([1.0, 4.0, 2.0, 9.0, 8.0])
     line = ours.line_through(times, values, np.full(5, 0.1))  # far less than the scatter: so that decides
     expected = stats.linregress(times, values)
+    assert line is not None
     assert line.slope == pytest.approx(expected.slope)
     assert line.uncertainty == pytest.approx(expected.stderr)
     assert line.probability == pytest.approx(expected.pvalue)
@@ -135,8 +136,29 @@ def test_a_line_through_sure_values_keeps_their_uncertainty() -> None:
     times = np.array([0.0, 1.0, 2.0, 3.0])
     line = ours.line_through(times, 3.0 * times, np.array([1.0, 2.0, 2.0, 1.0]))
     design = np.stack([np.ones(4), times], axis=1) / np.array([1.0, 2.0, 2.0, 1.0])[:, None]
+    assert line is not None
     assert line.slope == pytest.approx(3.0)
     assert line.uncertainty == pytest.approx(np.sqrt(np.linalg.inv(design.T @ design)[1, 1]))
+
+
+def test_groups_of_values_have_a_level_each() -> None:
+    # numpy.linalg.lstsq with a column for each group.
+    times, group = np.array([0.0, 0.5, 1.0, 1.5, 2.0, 2.5]), np.array([4, 7, 4, 7, 4, 7])
+    values, doubts = np.array([1.0, 9.0, 3.5, 10.0, 4.0, 12.5]), np.array([1.0, 2.0, 1.0, 0.5, 1.0, 1.5])
+    line = ours.line_through(times, values, doubts, group)
+    design = np.stack([group == 4, group == 7, times], axis=1) / doubts[:, None]
+    expected, squares, *_ = np.linalg.lstsq(design, values / doubts)
+    assert line is not None
+    assert line.slope == pytest.approx(expected[2])
+    ratio = max(1.0, float(np.sqrt(squares[0] / 3.0)))
+    assert line.uncertainty == pytest.approx(ratio * np.sqrt(np.linalg.inv(design.T @ design)[2, 2]))
+
+
+def test_too_few_values_have_no_line() -> None:
+    assert ours.line_through(np.array([0.0, 1.0]), np.array([0.0, 1.0]), np.ones(2)) is None
+    thrice = (np.array([0.0, 1.0, 2.0]), np.array([0.0, 1.0, 5.0]), np.ones(3))
+    assert ours.line_through(*thrice, np.array([0, 0, 1])) is None
+    assert ours.line_through(np.zeros(3), thrice[1], np.ones(3)) is None
 
 
 def two_way_case() -> tuple[Reals, Reals, NDArray[np.intp], NDArray[np.intp]]:

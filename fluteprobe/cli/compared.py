@@ -86,30 +86,33 @@ def _named(comparison: Comparison, row: Row) -> list[str]:
 def _two(comparison: Comparison) -> tuple[Line, list[Line]]:
     """Return the columns of two flutes: both, their difference, what of it is the note's, and the beats.
 
-    A note's own part is told of fingerings alone: different builds have no offset that means anything.
+    A note's own part is told of fingerings alone: different builds have no offset that means anything. One
+    instrument has moved from the first sitting to the second; two differ by the first less the second.
     """
     differences = {d.row: d for pair in comparison.pairs for d in pair.differences}
     same_build = comparison.by == "fingering"
+    side = -1.0 if comparison.is_one_instrument else 1.0
     lines = []
     for k, row in enumerate(comparison.rows):
         one = ["–" if cell is None else _signed(cell.cents) for cell in row.cells]
-        lines.append([*one, *_apart(differences.get(k), same_build=same_build)])
-    return ["1", "2", "1 − 2", "", "note alone" if same_build else "", "", "beats"], lines
+        lines.append([*one, *_apart(differences.get(k), side, same_build=same_build)])
+    apart = "moved" if comparison.is_one_instrument else "1 − 2"
+    return ["1", "2", apart, "", "note alone" if same_build else "", "", "beats"], lines
 
 
-def _apart(difference: Difference | None, *, same_build: bool) -> Line:
+def _apart(difference: Difference | None, side: float, *, same_build: bool) -> Line:
     if difference is None:
         return [""] * 5
     alone = ["", ""]
     if same_build and difference.alone_cents is not None:
         uncertainty = difference.alone_uncertainty_cents
-        alone = [_off(difference.alone_cents, uncertainty), _mark(difference.alone_verdict)]
-    whole = _off(difference.cents, difference.uncertainty_cents)
+        alone = [_off(side * difference.alone_cents, uncertainty), _mark(difference.alone_verdict)]
+    whole = _off(side * difference.cents, difference.uncertainty_cents)
     return [whole, _mark(difference.verdict), *alone, f"{difference.beats.rate_hz:.1f}"]
 
 
 def _mark(verdict: Verdict | None) -> str:
-    return {"different": "*", "likely": "(*)"}.get(verdict or "", "")
+    return {"different": "*", "likely": "(*)", "air": "air"}.get(verdict or "", "")
 
 
 def _few(comparison: Comparison) -> tuple[Line, list[Line]]:
@@ -189,7 +192,7 @@ def _offset(pair: Pair) -> list[str]:
         None: f"As wholes {one} and {other} are the same within the uncertainty ({size})",
         "air": f"{_sharper(pair)} by {size}, which the air may explain: its temperature is not given",
     }
-    return [words.get(pair.offset_verdict, f"{_sharper(pair)} by {size}: {pair.offset_verdict}")]
+    return _indented(words.get(pair.offset_verdict, f"{_sharper(pair)} by {size}: {pair.offset_verdict}"))
 
 
 def _sharper(pair: Pair) -> str:
@@ -202,10 +205,11 @@ def _counted(comparison: Comparison) -> list[str]:
     found = [d.verdict for pair in comparison.pairs for d in pair.differences]
     if not found:
         return []
+    airy = f"{found.count('air')} that the air may explain, " if "air" in found else ""
     text = (
         f"{len(found)} notes compared: {found.count('different')} different, {found.count('likely')} likely, "
-        f"{found.count(None)} within the uncertainty. Called are differences over three combined standard "
-        "uncertainties; of those called different at most 1 in 100 is chance."
+        f"{airy}{found.count(None)} within the uncertainty. Called are differences over three combined "
+        "standard uncertainties; of those called different at most 1 in 100 is chance."
     )
     return wrap(text, WIDTH)
 
@@ -252,7 +256,7 @@ def _parts(parts: Parts, comparison: Comparison) -> list[str]:
         for part in parts.players
     ]
     rests = [
-        f"  {comparison.flutes[rest.flute].label}: {_note(comparison.rows[rest.row].by)} "
+        f"  {rest.player}: {_note(comparison.rows[rest.row].by)} "
         f"{_off(rest.cents, rest.uncertainty_cents)} {rest.verdict}"
         for rest in parts.rests
         if rest.verdict

@@ -174,7 +174,9 @@ def _parts_json(parts: Parts, flutes: Sequence[Flute]) -> dict[str, Any]:
         "flutes": [
             {"flute": _instrument(part.kin, flutes), **_all_sized(asdict(part))} for part in parts.flutes
         ],
-        "rests": [{**_all_sized(asdict(rest)), "flute": flutes[rest.flute].label} for rest in parts.rests],
+        "rests": [
+            {"flute": _instrument(rest.kin, flutes), **_all_sized(asdict(rest))} for rest in parts.rests
+        ],
         "unseparated": list(parts.unseparated),
     }
 

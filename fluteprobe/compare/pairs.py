@@ -23,6 +23,7 @@ from fluteprobe.compare.statistics import (
     chance_of,
     combined,
     common_offset,
+    weighted_median,
 )
 from fluteprobe.compare.table import Table
 from fluteprobe.compare.values import Beats, Difference, Flute, Pair, Verdict
@@ -71,10 +72,7 @@ def pairs_of(table: Table, flutes: Sequence[Flute]) -> tuple[Pair, ...]:
         [np.array([0.0 if w.offset is None else w.offset.value / w.offset_uncertainty]) for w in weighed]
     )
     return tuple(
-        replace(
-            _pair(w, table, whole[k], alone[k]),
-            offset_verdict=_offset_verdict(w, flutes, offset[k][1][0]),
-        )
+        _pair(w, table, whole[k], alone[k], _offset_verdict(w, flutes, offset[k][1][0]))
         for k, w in enumerate(weighed)
     )
 
@@ -139,8 +137,8 @@ def _widening(apart: Reals, own: Reals) -> float:
     """Return by how much one flute's notes plainly scatter more from sitting to sitting than they tell."""
     if len(apart) < FEWEST_TO_WIDEN:
         return 1.0
-    scores = apart / np.maximum(own, 1e-3)
-    ratio = MAD_TO_SIGMA * float(np.median(np.abs(scores - np.median(scores))))
+    own = np.maximum(own, 1e-3)
+    ratio = MAD_TO_SIGMA * float(np.median(np.abs(apart - weighted_median(apart, own)) / own))
     return ratio if ratio > PLAINLY_WIDER else 1.0
 
 
@@ -187,16 +185,28 @@ def _offset_verdict(weighed: _Weighed, flutes: Sequence[Flute], verdict: Verdict
 Judged = tuple[Reals, tuple[Verdict | None, ...]]
 
 
-def _pair(weighed: _Weighed, table: Table, whole: Judged, alone: Judged) -> Pair:
+def _pair(
+    weighed: _Weighed, table: Table, whole: Judged, alone: Judged, offset_verdict: Verdict | None
+) -> Pair:
     offset = weighed.offset
+    differences = _differences(weighed, table, whole, alone)
+    if offset_verdict == "air":
+        differences = (_perhaps_air(difference) for difference in differences)
     return Pair(
         flutes=weighed.flutes,
         offset_cents=offset.value if offset else None,
         offset_uncertainty_cents=weighed.offset_uncertainty if offset else None,
-        offset_verdict=None,
+        offset_verdict=offset_verdict,
         widened=weighed.widened,
-        differences=tuple(_differences(weighed, table, whole, alone)),
+        differences=tuple(differences),
     )
+
+
+def _perhaps_air(difference: Difference) -> Difference:
+    """Return a difference of which nothing remains beside an offset that the air may explain, told so."""
+    if difference.verdict is None or difference.alone_verdict is not None:
+        return difference
+    return replace(difference, verdict="air")
 
 
 def _differences(weighed: _Weighed, table: Table, whole: Judged, alone: Judged) -> Iterator[Difference]:

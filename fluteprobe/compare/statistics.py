@@ -172,23 +172,33 @@ def standing_out(values: Reals, uncertainties: Reals) -> Flags:
     return np.asarray(far & enough[..., None] & np.isfinite(values))
 
 
-def line_through(times: Reals, values: Reals, uncertainties: Reals) -> Line:
-    """Return the weighted least-squares line through values; needs three or more at two or more times.
+def line_through(
+    times: Reals, values: Reals, uncertainties: Reals, group: Wholes | None = None
+) -> Line | None:
+    """Return the weighted least-squares line through values; each group of them has a level of its own.
 
     Its uncertainty is widened by the scatter about it (Birge 1932); its probability of no slope is Student's
-    with the remaining degrees of freedom (JCGM 100:2008, G.3).
+    with the remaining degrees of freedom (JCGM 100:2008, G.3). None where no freedom remains, or no group
+    has two times.
     """
     from scipy.special import stdtr
 
     weights = _weights(uncertainties)
-    away = times - weights @ times / weights.sum()
+    group = np.zeros(len(times), dtype=np.intp) if group is None else np.unique(group, return_inverse=True)[1]
+    away, apart = (each - _group_means(each, weights, group) for each in (times, values))
     leverage = float(weights @ away**2)
-    slope = float((weights * away) @ values / leverage)
-    rests = values - weights @ values / weights.sum() - slope * away
-    freedom = len(values) - 2
-    uncertainty = birge_ratio(rests, uncertainties, freedom) / sqrt(leverage)
+    freedom = len(values) - int(group.max()) - 2
+    if freedom < 1 or leverage <= 1e-12 * float(weights.sum()):
+        return None
+    slope = float((weights * away) @ apart / leverage)
+    uncertainty = birge_ratio(apart - slope * away, uncertainties, freedom) / sqrt(leverage)
     probability = 2.0 * float(stdtr(freedom, -abs(slope) / uncertainty))
     return Line(slope=slope, uncertainty=uncertainty, freedom=freedom, probability=probability)
+
+
+def _group_means(values: Reals, weights: Reals, group: Wholes) -> Reals:
+    """Return each value's group mean, by weights."""
+    return np.asarray((np.bincount(group, weights * values) / np.bincount(group, weights))[group])
 
 
 def two_way(

@@ -15,8 +15,9 @@ from fluteprobe.session import FluteFacts, Sitting
 
 Matching = Literal["fingering", "note"]
 # "different": so large that, of all so called, at most 1 % are chance. "likely": larger than three combined
-# standard uncertainties, but among so many comparisons chance alone may give one. "air": an offset of whole
-# sittings that the air may explain, for its temperature is not known.
+# standard uncertainties, but among so many comparisons chance alone may give one. "air": just as large, but
+# the air may explain it, for its temperature is not known: an offset of whole sittings, or a note that has
+# nothing beside it.
 Verdict = Literal["different", "likely", "air"]
 
 
@@ -157,9 +158,10 @@ class PlayersPart:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Rest:
-    """What is left for one sitting in one row once the flute's and the player's parts are taken off."""
+    """What a player does with one row of an instrument beyond what the player adds to the whole of it."""
 
-    flute: int
+    player: str
+    kin: int
     row: int
     cents: float
     uncertainty_cents: float
@@ -235,6 +237,11 @@ class Comparison:
     parts: Parts | None
     drifts: tuple[Drift, ...]
     cautions: tuple[str, ...]
+
+    @property
+    def is_one_instrument(self) -> bool:
+        """Whether all are sittings with one and the same flute."""
+        return len({flute.kin for flute in self.flutes}) == 1
 
     @property
     def is_carried(self) -> bool:

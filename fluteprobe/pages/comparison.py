@@ -159,22 +159,17 @@ def comparison_figures(
 def title_of(comparison: Comparison) -> str:
     """Return what is compared, in a few words: one instrument, two flutes by name, or how many."""
     flutes = comparison.flutes
-    if is_one_instrument(comparison):
+    if comparison.is_one_instrument:
         return clean(flutes[0].facts.name) or "A flute without a name"
     if len(flutes) == 2:
         return " and ".join(clean(flute.label) for flute in flutes)
     return f"{len(flutes)} flutes"
 
 
-def is_one_instrument(comparison: Comparison) -> bool:
-    """Whether all are sittings with one and the same flute."""
-    return len({flute.kin for flute in comparison.flutes}) == 1
-
-
 def short_names(comparison: Comparison) -> tuple[str, ...]:
     """Return the flutes' labels, without the name of the flute where all are sittings with one."""
     labels = [clean(flute.label) for flute in comparison.flutes]
-    if not is_one_instrument(comparison):
+    if not comparison.is_one_instrument:
         return tuple(labels)
     name = f"{clean(comparison.flutes[0].facts.name)}, "
     return tuple(label.removeprefix(name) or label for label in labels)
@@ -297,7 +292,7 @@ def _draw_strip(page: Page, plan: Plan, bottom: float) -> None:
     right = "beats a second" if plan.is_pair else "play · scatter"
     page.text(page.right_mm, top - 2.4, right, LABEL, align="right", colour=QUIET)
     if plan.is_pair:
-        words = "moved" if is_one_instrument(plan.comparison) else "1 less 2"
+        words = "moved" if plan.comparison.is_one_instrument else "1 less 2"
         page.text(plan.strip_mm[1] + 15.0, top - 2.4, words, LABEL, align="right", colour=QUIET)
 
 
@@ -352,7 +347,11 @@ def _draw_on_strip(page: Page, plan: Plan, row: Row, y: float) -> None:
         middle = plan.x_mm(row.middle_cents)
         page.line((middle, y - tall), (middle, y + tall), colour=INK, pt=FIRM_PT)
     few = len(plan.comparison.flutes) <= SHAPED_UP_TO
-    if plan.is_pair and (difference := _difference(plan.comparison, row)) and difference.verdict:
+    if (
+        plan.is_pair
+        and (difference := _difference(plan.comparison, row))
+        and difference.verdict in {"different", "likely"}
+    ):
         ends = [plan.x_mm(cell.cents) for cell in row.played]
         page.line((ends[0], y), (ends[1], y), colour=ACCENT, pt=1.4)
     if few:
@@ -396,13 +395,13 @@ def _draw_difference(page: Page, plan: Plan, row: Row, y: float) -> None:
     if difference is None:
         return
     left = plan.strip_mm[1] + 7.0
-    words = cents_text(-difference.cents if is_one_instrument(plan.comparison) else difference.cents)
-    real = difference.verdict is not None
+    words = cents_text(-difference.cents if plan.comparison.is_one_instrument else difference.cents)
+    real = difference.verdict in {"different", "likely"}
     voice = _BOLD if difference.verdict == "different" else _NUMBER
     page.text(left + 8.0, y + 1.0, words, voice, align="right", colour=ACCENT if real else INK)
     doubt = uncertainty_text(difference.uncertainty_cents)
     page.text(left + 9.0, y + 1.0, doubt, _COLUMN, colour=QUIET)
-    word = {"different": "real", "likely": "likely"}.get(difference.verdict or "", "")
+    word = {"different": "real", "likely": "likely", "air": "air?"}.get(difference.verdict or "", "")
     page.text(left + 18.5, y + 1.0, word, LABEL)
     beats = f"{difference.beats.rate_hz:.1f}"
     page.text(page.right_mm, y + 1.0, beats, _NUMBER, align="right")

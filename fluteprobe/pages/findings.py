@@ -103,7 +103,7 @@ def _moved(comparison: Comparison) -> list[str]:
     if not found:
         return ["no note beyond the flutes as wholes"] if comparison.pairs[0].differences else []
     found.sort(key=lambda d: -abs(d.alone_cents or 0.0))
-    side = -1.0 if len({flute.kin for flute in comparison.flutes}) == 1 else 1.0  # from before to after
+    side = -1.0 if comparison.is_one_instrument else 1.0  # from before to after
     return [
         f"{row_name(comparison, comparison.rows[d.row])} {cents_text(side * (d.alone_cents or 0.0))} "
         f"{uncertainty_text(d.alone_uncertainty_cents)}{' (likely)' if d.alone_verdict == 'likely' else ''}"
