@@ -4,8 +4,8 @@ Conventions: times in seconds from the start of the long recording. A sound is w
 pauses. A cutting is a proposal: nothing is written by it; the same recording, order and session give the
 same one. The takes are numbered on from those that the session has.
 
-A cutting is `doubtful` where a take is less than nine tenths sure, and has `faults` where what was heard and
-the order cannot be brought together; then it says why, and nothing can be written from it.
+A take is doubtful where it is less than nine tenths sure which one it is: somebody has to look. A cutting has
+faults where what was heard and the order cannot be brought together; nothing can be written from it then.
 """
 
 from collections.abc import Iterator, Mapping, Sequence
@@ -351,18 +351,12 @@ def _faults(sounds: Sequence[Sound], heard: Sequence[Heard], order: Order) -> It
     clear = sum(1 for each in heard if not each.is_breath and each.stray < _LIKELY_STRAY)
     takes = [sound for sound in sounds if sound.file is not None]
     spoken = sum(1 for sound in takes if sound.frequency_hz is not None)
-    doubtful = sum(1 for sound in takes if sound.is_doubtful)
     if not clear:
         yield "no steady tone was heard: is it the right recording?"
     elif clear - spoken > max(_MOST_OPEN, _OPEN_SHARE * clear):
         yield (
             f"{clear} tones were heard, and only {spoken} of them fit {order.name} "
             f"({len(order.takes)} takes): say in which order it was played, with --edition or --order"
-        )
-    elif doubtful > max(_MOST_OPEN, _OPEN_SHARE * len(takes)):
-        yield (
-            f"of {len(takes)} takes {doubtful} could as well be others in {order.name}: "
-            "say in which order it was played, with --edition or --order"
         )
 
 

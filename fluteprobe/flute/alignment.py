@@ -51,9 +51,15 @@ _SPEAKS: Mapping[Breath, tuple[float, float, float]] = {
 _AGAIN_REGISTERS = (0.6, 0.34, 0.06)  # once more, but in another register
 _SILENT: Mapping[Breath, float] = {"soft": 0.05, "normal": 0.03, "over": 0.08}  # only breath is heard
 _PLAYED_CENTS = 12.0  # a tone's own deviation: the breath, and a flute that warms
-_REPEAT_CENTS = 20.0  # between two takes of the same
+_REPEAT_CENTS = 15.0  # between two takes of the same
 _WILD = 0.003  # a take that sounds anywhere above its first register: a slipped finger, a higher register
 _SLACK = 3.0  # deviations
+# Opening a hole raises a register: on the ladder by more than this; elsewhere it does not lower it, but for
+# the breath. What goes against it costs dear.
+_LEAST_RISE_CENTS = 40.0
+_MOST_FALL_CENTS = 30.0
+_NO_RISE = 7.0
+_OPENED = 0.5
 
 _LIST = 32  # walks kept to each take
 _MOST_WALKS = 600
@@ -133,8 +139,9 @@ class Alignment:
 class _Steps:
     """One step each of some walks; all arrays have shape (steps,).
 
-    `parent` is the walk that it goes on from, `take` the take that the sound is (-1 for none), `register` what
-    it speaks in (0 for a pitch out of all, -1 where there is none), `again` whether it is the take before.
+    `parent` is the walk that it goes on from, `take` the take that the sound is (-1 for none), `register`
+    what it speaks in (0 for a pitch out of all, -1 where there is none), `again` whether it is the same take
+    once more.
     """
 
     parent: Ints
@@ -191,6 +198,8 @@ class _Model:
         self.noise: Reals = likely.own[word] ** 2 + _PLAYED_CENTS**2
         self.register_cost: Reals = -np.log([_SPEAKS[take.breath] for take in order])
         self.silent: Reals = np.array([_SILENT[take.breath] for take in order])
+        self.rises = np.array([[_rises(one, other) for other in order] for one in order])
+        self.on_ladder = np.array([take.fingering.is_ladder for take in order])
         gap = np.arange(self.takes + 1)
         self.skip_cost: Reals = np.where(
             gap == 0,
@@ -287,7 +296,7 @@ def _tone_steps(walks: _Walks, sound: Heard, model: _Model) -> list[_Steps]:
     off = _normal_cost(pitch[:, None] - middle, variance) - log(1.0 - _WILD)
     speaks = -np.log(1.0 - model.silent) - log(1.0 - sound.stray)
     onward = _onward_cost(walks, model) + speaks
-    in_register = onward[:, :, None] + off + model.register_cost
+    in_register = onward[:, :, None] + off + model.register_cost + _unrisen_cost(walks, pitch, model)
     too_low = pitch < middle[:, :, 0] - _SLACK * np.sqrt(variance[:, :, 0])
     wild = np.where(too_low, np.inf, onward + anywhere - log(_WILD))
     return [
@@ -296,6 +305,18 @@ def _tone_steps(walks: _Walks, sound: Heard, model: _Model) -> list[_Steps]:
         _steps(every[:, None], takes, _WILD_REGISTER, wild),
         *_again_steps(walks, pitch, off, speaks - log(_AGAIN)),
     ]
+
+
+def _unrisen_cost(walks: _Walks, pitch: Reals, model: _Model) -> Reals:
+    """Return what it costs that a register does not rise with more open holes, (walks, takes, registers)."""
+    known = np.isfinite(walks.last_cents) & (walks.last_register > 0)
+    here = np.where(known, walks.take, 0)
+    register = np.where(known, walks.last_register, 1)
+    rises = np.where(known[:, None], model.rises[here, :, register - 1], 0)
+    risen = rises * (pitch - np.where(known, walks.last_cents, 0.0)[:, None])
+    least = np.where(model.on_ladder[here, None] & model.on_ladder, _LEAST_RISE_CENTS, -_MOST_FALL_CENTS)
+    cost = np.where((rises != 0) & (risen < least), _NO_RISE, 0.0)
+    return np.asarray(cost[:, :, None] * (register[:, None, None] == _REGISTERS))
 
 
 def _again_steps(walks: _Walks, pitch: Reals, off: Reals, cost: Reals) -> list[_Steps]:
@@ -313,6 +334,19 @@ def _again_steps(walks: _Walks, pitch: Reals, off: Reals, cost: Reals) -> list[_
         ),
         _repeated(_steps(every[:, None], there[:, None], _REGISTERS, other)),
     ]
+
+
+def _rises(one: Wanted, other: Wanted) -> tuple[int, int, int]:
+    """Return whether registers 1 to 3 rise (1) or fall (-1) from one take to another; 0 where unknown.
+
+    The first register rises wherever holes are opened and none is closed, by half at least; the second on the
+    ladder as well. Of the third nothing is said.
+    """
+    opened = np.subtract(other.fingering.openness, one.fingering.openness)
+    both_ways = opened.min() < 0.0 < opened.max()
+    way = 0 if both_ways or np.abs(opened).max() < _OPENED else int(np.sign(opened.sum()))
+    on_ladder = one.fingering.is_ladder and other.fingering.is_ladder
+    return way, way if on_ladder else 0, 0
 
 
 def _onward_cost(walks: _Walks, model: _Model) -> Reals:
