@@ -127,6 +127,10 @@ def test_letters_with_marks_are_read_in_every_usual_encoding(heron: Path, encodi
             "flute.toml line 3: key tolerance_mm: found 0, expected a number from 0.01 to 20 (mm)",
         ),
         (
+            PLAIN + f"name = '{'a' * 201}'\n",
+            f'flute.toml line 3: key name: found "{"a" * 58}…, expected at most 200 letters',
+        ),
+        (
             PLAIN + "[session]\na4_hz = 44.0\n",
             "flute.toml line 4: key a4_hz: found 44.0, expected a number from 380 to 500 (Hz)",
         ),
@@ -212,6 +216,10 @@ TWO = "[flute]\nholes = 2\n"
         ("a4_hz 440", "found a4_hz 440, expected a4_hz = and its value"),
         ("air temperature = 22", "found air temperature = 22, expected air_temperature_c before ="),
         ("§ = 5", "found § = 5, expected one word before =, such as name or holes"),
+        (
+            "player = 'Ada' place = 'here'",
+            "key player: found 'Ada' place = 'here', expected one key in a line",
+        ),
         ("a4_hz = 440, player = 'Ada'", "key a4_hz: found 440, player = 'Ada', expected one key in a line"),
         ("// the concert", "found // the concert, expected # before a remark"),
         ("; the concert", "found ; the concert, expected # before a remark"),
@@ -290,7 +298,15 @@ def test_tables_and_brackets_that_are_wrong_are_told(heron: Path, text: str, tol
             "is a word processor's or spreadsheet's file: save it as plain text (UTF-8)",
         ),
         (b"<html><body>", "is a web page: save it as plain text (UTF-8)"),
-        (b"\x00" * 9, "is no text: save it as plain text (UTF-8)"),
+        (b"\x00" * 10, "is no text: save it as plain text (UTF-8)"),
+        (
+            b"[flute]\nname = '\x81\x8d'",
+            "has letters in a spelling that is not known: save it as plain text (UTF-8)",
+        ),
+        (
+            b"\xff\xfe[\x00f",
+            "has letters in a spelling that is not known: save it as plain text (UTF-8)",
+        ),
         (b"#" * 2_000_000, "is far too long: is it another file?"),
         ((PLAIN + "# note\n" * 1000).encode(), "has over 1000 lines: is it another file?"),
         (

@@ -127,7 +127,7 @@ def _nothing(key: str, value: str) -> Cure | None:
 
 
 def _several(key: str, value: str) -> Cure | None:
-    parts = re.split(r"[,;]\s*(?=[A-Za-z_]+\s*=)", value)
+    parts = re.split(r"(?:[,;]\s*|(?<=[\"'0-9])\s+)(?=[A-Za-z_]+\s*=)", value)
     return ("one key in a line", "\n".join([f"{key} = {parts[0]}", *parts[1:]])) if len(parts) > 1 else None
 
 

@@ -71,7 +71,10 @@ def read_text(path: Path, folder: Path, largest_bytes: int, kind: str) -> str:
             raise UnfitFileError(f"{what}: save it as {kind}")
     if len(content) > largest_bytes:
         raise UnfitFileError("is far too long: is it another file?")
-    text = _decoded(content)
+    try:
+        text = _decoded(content)
+    except UnicodeDecodeError:
+        raise UnfitFileError(f"has letters in a spelling that is not known: save it as {kind}") from None
     if _NO_TEXT.search(text):
         raise UnfitFileError(f"is no text: save it as {kind}")
     return text.replace("\r\n", "\n").replace("\r", "\n")
@@ -137,12 +140,12 @@ def _decoded(content: bytes) -> str:
     """Return a file's text, by its byte order mark, its zeros, or as UTF-8, and else as Windows-1252."""
     for mark, encoding in _BYTE_ORDER_MARKS.items():
         if content.startswith(mark):
-            return content.decode(encoding, errors="replace")
-    if content and not any(content[1:200:2]):
-        return content.decode("utf-16-le", errors="replace")
-    if content and not any(content[0:200:2]):
-        return content.decode("utf-16-be", errors="replace")
+            return content.decode(encoding)
+    if len(content) > 1 and not any(content[1:200:2]):
+        return content.decode("utf-16-le")
+    if len(content) > 1 and not any(content[0:200:2]):
+        return content.decode("utf-16-be")
     try:
         return content.decode("utf-8")
     except UnicodeDecodeError:
-        return content.decode("cp1252", errors="replace")
+        return content.decode("cp1252")

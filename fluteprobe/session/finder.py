@@ -44,10 +44,10 @@ class Finder:
         if _DRIVE.match(text) or ".." in parts:
             raise UnfitFileError(f"leads out of the session folder: put the recording into {TAKES_FOLDER}")
         walked = (self._walk(base, parts) for base in (PurePosixPath(TAKES_FOLDER), PurePosixPath()))
-        found = next((path for path in walked if path is not None), None)
-        if found is None:
+        found = [path for path in walked if path is not None]
+        if not found:
             raise UnfitFileError(f"is not there{self._nearest(parts[-1])}")
-        return found
+        return next((path for path in found if self._is_inside(path)), found[0])
 
     def _walk(self, base: PurePosixPath, parts: Sequence[str]) -> PurePosixPath | None:
         """Follow the parts of a path from a folder; stop where it leads out, None where it leads nowhere."""
@@ -64,10 +64,10 @@ class Finder:
             here /= same[0]
         return here
 
-    def _is_inside(self, folder: PurePosixPath) -> bool:
-        if folder not in self._inside:
-            self._inside[folder] = is_inside(self.folder / folder, self.folder)
-        return self._inside[folder]
+    def _is_inside(self, path: PurePosixPath) -> bool:
+        if path not in self._inside:
+            self._inside[path] = is_inside(self.folder / path, self.folder)
+        return self._inside[path]
 
     def _in(self, folder: PurePosixPath) -> list[str]:
         """Return the names in a folder of the session, none where it is no folder."""

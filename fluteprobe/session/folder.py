@@ -200,12 +200,10 @@ def _find_takes(folder: Path, flute: FluteFacts) -> tuple[tuple[Take, ...], tupl
     """Return the takes in the order of their fingering, breath and number, and what is no take."""
     try:
         rows, in_list = read_listing(folder, flute.holes)
-        names = _candidates(folder)
     except OSError as error:
-        return (), (Problem(take=TAKES_FOLDER, message=f"cannot be read: {plain_reason(error)}"),)
-    except UnfitFileError as error:
-        return (), (Problem(take=TAKES_FOLDER, message=str(error)),)
-    problems = [*in_list]
+        return (), (Problem(take=LIST_FILE, message=f"cannot be looked for: {plain_reason(error)}"),)
+    names, problems = _candidates(folder)
+    problems = [*in_list, *problems]
     found = [
         _Found(name=str(row.file), says=row.take, rank=0 if row.take.number else 2)
         for row in rows
@@ -215,19 +213,25 @@ def _find_takes(folder: Path, flute: FluteFacts) -> tuple[tuple[Take, ...], tupl
     unlisted = [name for name in names if f"{TAKES_FOLDER}/{name}" not in listed]
     found += _named_takes(folder, flute, unlisted, problems)
     found = _without_copies(folder, found, problems)
-    problems += _elsewhere(folder, flute, listed, bool(names or rows))
+    problems += _elsewhere(folder, flute, listed, bool(names or rows or problems))
     return _numbered(folder, found), tuple(problems)
 
 
-def _candidates(folder: Path) -> list[str]:
-    """Return the names of the files in takes/ that may be takes, in natural order."""
-    takes = folder / TAKES_FOLDER
+def _candidates(folder: Path) -> tuple[list[str], list[Problem]]:
+    """Return the names of the files in takes/ that may be takes, in natural order, and what is wrong."""
+    takes, wrong = folder / TAKES_FOLDER, None
+    names: list[str] = []
     if takes.is_symlink() and not is_inside(takes, folder):
-        raise UnfitFileError("is a link that leads out of the session folder: make it a folder")
-    if takes.exists() and not takes.is_dir():
-        raise UnfitFileError("is a file: make it a folder and put the recordings there")
-    found = os.listdir(takes) if takes.is_dir() else []  # noqa: PTH208  (names, also those that are no text)
-    return sorted((name for name in found if not _is_passed_over(takes / name)), key=_name_order)
+        wrong = "is a link that leads out of the session folder: make it a folder"
+    elif takes.exists() and not takes.is_dir():
+        wrong = "is a file: make it a folder and put the recordings there"
+    elif takes.is_dir():
+        try:
+            names = os.listdir(takes)  # noqa: PTH208  (names, also those that are no text)
+        except OSError as error:
+            wrong = f"cannot be read: {plain_reason(error)}"
+    found = sorted((name for name in names if not _is_passed_over(takes / name)), key=_name_order)
+    return found, [Problem(take=TAKES_FOLDER, message=wrong)] if wrong else []
 
 
 def _is_passed_over(path: Path) -> bool:

@@ -21,6 +21,7 @@ TEMPERATURE_RANGE_C = (-20.0, 50.0)
 
 _DISTANCE_MM, _DIAMETER_MM, _LENGTH_MM = (1.0, 3000.0), (0.1, 50.0), (20.0, 4000.0)
 _HOTTEST_F = 122.0
+_LONGEST_TEXT, _LONGEST_KEY = 200, 40
 _UNITS = r"(?:°\s*[cf]?|[cf]|deg(?:rees)?\.?|celsius|grad|mm|cm|hz|hertz|holes?)"
 _NUMBER = re.compile(
     rf"(?:ca\.?|about|~|≈|\+)?\s*(-?[0-9]{{1,9}}(?:[.,][0-9]{{1,9}})?|[.,][0-9]{{1,9}})\.?\s*{_UNITS}?",
@@ -107,13 +108,15 @@ def home_of(key: str) -> str | None:
 
 
 def _text(value: Any) -> str | None:
+    if isinstance(value, str) and len(value) > _LONGEST_TEXT:
+        raise UnfitError(f"at most {_LONGEST_TEXT} letters")
     if isinstance(value, str) and not UNSAFE.search(value):
         return value.strip() or None
     raise UnfitError('text in "quotes", on one line')
 
 
 def _text_or_number(value: Any) -> str | None:
-    return str(value) if isinstance(value, int) and not isinstance(value, bool) else _text(value)
+    return _text(str(value) if isinstance(value, int) and not isinstance(value, bool) else value)
 
 
 def _date(value: Any) -> str | None:
@@ -232,4 +235,3 @@ KEYS: Mapping[str, Mapping[str, Key]] = MappingProxyType(
         },
     }
 )
-_LONGEST_KEY = 40
