@@ -7,6 +7,9 @@ Impedances and admittances are normalised by the bore's characteristic impedance
 numbers. A resonance is a maximum of the admittance that the jet meets at the sound hole; NaN stands where
 there are fewer resonances than were asked for.
 
+A bore that is no plain cylinder is a row of short ones, each as wide as the bore in its middle; what the flow
+does beyond plane waves at a step is left out.
+
 The formulas are published ones, quoted from memory:
 walls       Keefe, JASA 75, 58 (1984): propagation constant for a smooth isothermal wall
 foot        Levine & Schwinger, Phys. Rev. 73, 383 (1948), as fitted by Silva et al., J. Sound Vib. 322 (2009)
@@ -31,6 +34,7 @@ Complexes = npt.NDArray[np.complex128]
 
 FOOT_CORRECTION = 0.6133  # in bore radii, unflanged (Levine & Schwinger 1948)
 
+_LONGEST_PIECE_MM = 5.0  # of a bore that widens or narrows
 _POINTS_PER_SPACING = 24
 _CHUNK = 64
 _REFINING_STEPS = (1.0, 0.3, 0.05, 0.05, 0.02)  # in grid steps
@@ -44,10 +48,14 @@ class Tube:
     with its diameter. `head_correction_mm` is the length of bore that weighs as much as the air in and
     around the sound hole.
 
+    `profile_mm` pairs places, from the sound hole to the foot, with the bore's diameter there, straight in
+    between and even beyond the ends; two diameters at one place are a step. Without it the bore is `bore_mm`
+    throughout; with it, `bore_mm` is only the size that impedances and `head_correction_mm` refer to.
+
     Raises
     ------
     ValueError
-        If a dimension is not positive, or the holes do not follow one another between sound hole and foot.
+        If a dimension is not positive, or holes or places do not follow one another from sound hole to foot.
     """
 
     bore_mm: float
@@ -56,9 +64,15 @@ class Tube:
     holes_mm: tuple[tuple[float, float], ...]
     head_correction_mm: float
     temperature_c: float = 20.0
+    profile_mm: tuple[tuple[float, float], ...] = ()
 
     def __post_init__(self) -> None:
-        sizes = (self.bore_mm, self.length_mm, self.wall_mm, *(size for _, size in self.holes_mm))
+        sizes = (
+            self.bore_mm,
+            self.length_mm,
+            self.wall_mm,
+            *(size for _, size in (*self.holes_mm, *self.profile_mm)),
+        )
         if not min(sizes) > 0.0 or self.head_correction_mm < 0.0:
             raise ValueError("bore, length, wall and hole diameters are above 0 mm")
         places = [0.0, *(place for place, _ in self.holes_mm), self.length_mm]
@@ -66,16 +80,35 @@ class Tube:
             raise ValueError(
                 f"the holes do not follow one another from sound hole to foot: {places[1:-1]} mm"
             )
+        turns = [place for place, _ in self.profile_mm]
+        if turns != sorted(turns):
+            raise ValueError(
+                f"the bore's places do not follow one another from sound hole to foot: {turns} mm"
+            )
 
     @property
     def radius_m(self) -> float:
         """The bore's radius in m."""
         return self.bore_mm / 2000.0
 
+    def radius_at_m(self, place_mm: float) -> float:
+        """Return the bore's radius in m at a distance from the sound hole."""
+        if not self.profile_mm:
+            return self.radius_m
+        places, sizes = np.transpose(self.profile_mm)
+        return float(np.interp(place_mm, places, sizes)) / 2000.0
+
+    @property
+    def wideness(self) -> float:
+        """The foot's area over that of `bore_mm`."""
+        return (self.radius_at_m(self.length_mm) / self.radius_m) ** 2
+
     @property
     def effective_length_m(self) -> float:
         """Length with both end corrections, in m: half a wavelength of the all-closed first register."""
-        return (self.length_mm + self.head_correction_mm) / 1000.0 + FOOT_CORRECTION * self.radius_m
+        return (self.length_mm + self.head_correction_mm) / 1000.0 + FOOT_CORRECTION * self.radius_at_m(
+            self.length_mm
+        )
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -198,13 +231,21 @@ class _Air:
         omega = 2.0 * pi * frequency_hz
         self.k = omega / speed_of_sound_m_per_s(tube.temperature_c)
         self.layers = np.sqrt(omega * density / viscosity)  # 1/m
-        self.bore = self.propagation(tube.radius_m)
 
     def propagation(self, radius_m: float) -> Complexes:
         """Return attenuation + j phase constant in 1/m (Keefe 1984, wide-tube expansion)."""
         thin = 1.0 / (radius_m * self.layers)
         attenuation = thin * (1.045 + thin * (1.080 + 0.750 * thin))
         return np.asarray(self.k * (attenuation + 1j * (1.0 + 1.045 * thin)))
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class _Piece:
+    """A short cylinder of the bore; `wideness` is its area over that of the tube's `bore_mm`."""
+
+    length_m: float
+    radius_m: float
+    wideness: float
 
 
 def _require_holes(tube: Tube, states: Reals) -> None:
@@ -219,17 +260,34 @@ def _impedance(tube: Tube, states: Reals, frequency_hz: Reals) -> Complexes:
     below_mm = tube.length_mm
     for index in range(len(tube.holes_mm) - 1, -1, -1):
         place_mm = tube.holes_mm[index][0]
-        z = _through_bore(z, (below_mm - place_mm) / 1000.0, air)
+        z = _through_bore(z, _pieces(tube, place_mm, below_mm), air)
         series, shunt = _holes_alike(tube, index, states[:, index], air)
         z = z + series / 2.0
         z = z / (1.0 + z * shunt) + series / 2.0
         below_mm = place_mm
-    return np.asarray(_through_bore(z, below_mm / 1000.0, air) + _head_impedance(tube, air))
+    return np.asarray(_through_bore(z, _pieces(tube, 0.0, below_mm), air) + _head_impedance(tube, air))
 
 
-def _through_bore(z: Complexes, length_m: float, air: _Air) -> Complexes:
-    tanh = np.tanh(air.bore * length_m)
-    return np.asarray((z + tanh) / (1.0 + z * tanh))
+def _through_bore(z: Complexes, pieces: list[_Piece], air: _Air) -> Complexes:
+    """Return the impedance before some pieces of the bore from that after them."""
+    for piece in reversed(pieces):
+        tanh = np.tanh(air.propagation(piece.radius_m) * piece.length_m)
+        z = (z + tanh / piece.wideness) / (1.0 + z * tanh * piece.wideness)
+    return np.asarray(z)
+
+
+def _pieces(tube: Tube, upper_mm: float, lower_mm: float) -> list[_Piece]:
+    """Return the cylinders that stand for a stretch of the bore, from head to foot."""
+    turns = [upper_mm, *(place for place, _ in tube.profile_mm if upper_mm < place < lower_mm), lower_mm]
+    pieces = []
+    for first_mm, last_mm in pairwise(turns):
+        count = int(np.ceil((last_mm - first_mm) / _LONGEST_PIECE_MM)) if tube.profile_mm else 1
+        step_mm = (last_mm - first_mm) / max(count, 1)
+        for middle_mm in first_mm + step_mm * (np.arange(count) + 0.5):
+            radius_m = tube.radius_at_m(float(middle_mm))
+            wideness = (radius_m / tube.radius_m) ** 2
+            pieces.append(_Piece(length_m=step_mm / 1000.0, radius_m=radius_m, wideness=wideness))
+    return pieces
 
 
 def _foot_impedance(tube: Tube, air: _Air) -> Complexes:
@@ -237,8 +295,8 @@ def _foot_impedance(tube: Tube, air: _Air) -> Complexes:
 
     Its low-frequency end correction is (1.393 − 0.167)/2 = 0.613 radii, its resistance (ka)²/4.
     """
-    x = 1j * air.k * tube.radius_m
-    return np.asarray((1.226 * x + 0.457 * x**2) / (2.0 + 1.560 * x + 0.457 * x**2))
+    x = 1j * air.k * tube.radius_at_m(tube.length_mm)
+    return np.asarray((1.226 * x + 0.457 * x**2) / (2.0 + 1.560 * x + 0.457 * x**2) / tube.wideness)
 
 
 def _head_impedance(tube: Tube, air: _Air) -> Complexes:
@@ -261,15 +319,19 @@ def _hole(tube: Tube, index: int, openness: Reals, air: _Air) -> tuple[Complexes
 
     Inner and series lengths after Lefebvre & Scavone 2012, the matching volume after Keefe 1982.
     """
-    bore, hole = tube.radius_m, tube.holes_mm[index][1] / 2000.0
-    wall, ratio = tube.wall_mm / 1000.0, hole / bore
+    bore, hole = tube.radius_at_m(tube.holes_mm[index][0]), tube.holes_mm[index][1] / 2000.0
+    wall, ratio, whole = tube.wall_mm / 1000.0, hole / bore, hole / tube.radius_m
     duct = np.tanh(air.propagation(hole) * (wall + hole * ratio / 8.0 * (1.0 + 0.207 * ratio**3)))
-    load = _covered_end(tube, hole, openness, air)
+    load = _covered_end(bore + wall, hole, openness, air)
     own = (load + duct) / (1.0 + load * duct)
-    shunt = ratio**2 * own / (1.0 + own * 1j * air.k * _inner_length(hole, ratio))
+    shunt = whole**2 * own / (1.0 + own * 1j * air.k * _inner_length(hole, ratio))
     open_series = -0.35 + 0.06 * np.tanh(2.7 * wall / hole)
     closed_series = -0.12 - 0.17 * np.tanh(2.4 * wall / hole)
-    series = hole * ratio**2 * (closed_series + (open_series - closed_series) * openness)
+    series = (
+        hole
+        * (ratio * tube.radius_m / bore) ** 2
+        * (closed_series + (open_series - closed_series) * openness)
+    )
     return np.asarray(1j * air.k * series), np.asarray(shunt)
 
 
@@ -279,14 +341,15 @@ def _inner_length(hole_m: float, ratio: float) -> float:
     return hole_m * sum(coefficient * ratio**power for power, coefficient in enumerate(polynomial))
 
 
-def _covered_end(tube: Tube, hole_m: float, openness: Reals, air: _Air) -> Complexes:
+def _covered_end(outer_m: float, hole_m: float, openness: Reals, air: _Air) -> Complexes:
     """Return the admittance of a hole's outer end, normalised by the hole's own characteristic impedance.
 
-    The outer correction on a cylinder is Dalmont's (2002); a partly covered hole is a diaphragm there, its
-    inner correction after Kergomard & Garcia, J. Sound Vib. 114, 465 (1987), with viscous friction.
+    The outer correction on a cylinder of radius `outer_m` is Dalmont's (2002); a partly covered hole is a
+    diaphragm there, its inner correction after Kergomard & Garcia, J. Sound Vib. 114, 465 (1987), with viscous
+    friction.
     """
     root = np.sqrt(openness)
-    outside = 0.82 - 0.47 * (hole_m / (tube.radius_m + tube.wall_mm / 1000.0)) ** 0.8
+    outside = 0.82 - 0.47 * (hole_m / outer_m) ** 0.8
     inside = 0.82 * np.maximum(1.0 - 1.35 * root + 0.31 * root**3, 0.0)
     mass = 1j * air.k * hole_m * (outside + inside)
     radiation = 0.25 * (air.k * hole_m) ** 2 * root
@@ -355,7 +418,7 @@ def _walk(tube: Tube, openness: npt.ArrayLike, frequency_hz: npt.ArrayLike) -> t
     flow = np.ones_like(pressure)
     flows, pressures, place_mm = [], [], 0.0
     for index, (next_mm, _) in enumerate(tube.holes_mm):
-        pressure, flow = _along(pressure, flow, (next_mm - place_mm) / 1000.0, air)
+        pressure, flow = _along(pressure, flow, _pieces(tube, place_mm, next_mm), air)
         series, shunt = (part[0] for part in _hole(tube, index, states[:, index : index + 1], air))
         pressure = pressure - flow * series / 2.0
         pressures.append(pressure)
@@ -363,10 +426,19 @@ def _walk(tube: Tube, openness: npt.ArrayLike, frequency_hz: npt.ArrayLike) -> t
         flow = flow - pressure * shunt
         pressure = pressure - flow * series / 2.0
         place_mm = next_mm
-    flows.append(_along(pressure, flow, (tube.length_mm - place_mm) / 1000.0, air)[1])
+    flows.append(_along(pressure, flow, _pieces(tube, place_mm, tube.length_mm), air)[1])
     return np.array(flows), np.array(pressures).reshape(len(tube.holes_mm), len(frequency))
 
 
-def _along(pressure: Complexes, flow: Complexes, length_m: float, air: _Air) -> tuple[Complexes, Complexes]:
-    cosh, sinh = np.cosh(air.bore * length_m), np.sinh(air.bore * length_m)
-    return pressure * cosh - flow * sinh, flow * cosh - pressure * sinh
+def _along(
+    pressure: Complexes, flow: Complexes, pieces: list[_Piece], air: _Air
+) -> tuple[Complexes, Complexes]:
+    """Return pressure and flow after some pieces of the bore from those before them."""
+    for piece in pieces:
+        turn = air.propagation(piece.radius_m) * piece.length_m
+        cosh, sinh = np.cosh(turn), np.sinh(turn)
+        pressure, flow = (
+            pressure * cosh - flow * sinh / piece.wideness,
+            flow * cosh - pressure * sinh * piece.wideness,
+        )
+    return pressure, flow
