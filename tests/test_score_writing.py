@@ -84,12 +84,11 @@ def test_the_spelling_keeps_the_note_s_name() -> None:
     assert "<accidental>sharp</accidental>" in content
 
 
-def test_a_natural_after_a_sharp_in_the_same_bar_is_marked() -> None:
+def test_every_note_carries_its_accidental() -> None:
     sharp, natural = Note(70), Note(69)
-    content = scale_xml(
-        [written(sharp.frequency_hz()), written(natural.frequency_hz())], title="", part=""
-    ).decode()
-    assert content.count("<accidental>natural</accidental>") == 1
+    notes = [written(natural.frequency_hz()), written(sharp.frequency_hz()), written(natural.frequency_hz())]
+    content = scale_xml(notes, title="", part="").decode()
+    assert (content.count(">natural<"), content.count(">sharp<")) == (2, 1)
 
 
 def test_four_notes_make_a_bar_and_sections_begin_one() -> None:

@@ -2,7 +2,8 @@
 
 Conventions: MusicXML 4.0, partwise. `alter` carries the accidental and the deviation together as decimal
 semitones, to 0.0001 (0.01 cent), against equal temperament at A4 = 440 Hz, which is what a score without
-a tuning sounds in. Under each note stand two lines of words.
+a tuning sounds in. Every note carries the accidental of its name, naturals too, so that a reader knows it
+whatever it makes of the decimals. Under each note stand two lines of words.
 """
 
 from collections.abc import Sequence
@@ -93,28 +94,24 @@ def _add_bar(bar: ET.Element, section: str, notes: Sequence[WrittenNote]) -> Non
         direction = ET.SubElement(bar, "direction", placement="above")
         kind = ET.SubElement(direction, "direction-type")
         ET.SubElement(kind, "words").text = section.translate(_NO_XML)
-    sharpened: dict[tuple[str, int], bool] = {}
     for written in notes:
-        _add_note(bar, written, sharpened)
+        _add_note(bar, written)
     for _ in range(NOTES_PER_BAR - len(notes)):
         rest = ET.SubElement(bar, "note")
         ET.SubElement(rest, "rest")
         _add_length(rest)
 
 
-def _add_note(bar: ET.Element, written: WrittenNote, sharpened: dict[tuple[str, int], bool]) -> None:
+def _add_note(bar: ET.Element, written: WrittenNote) -> None:
     """Add a note in the order of elements that the schema wants."""
     step, is_sharp = _STEPS[written.note.midi % 12], bool(_SHARPS[written.note.midi % 12])
-    place = (step, written.note.octave)
     element = ET.SubElement(bar, "note")
     pitch = ET.SubElement(element, "pitch")
     ET.SubElement(pitch, "step").text = step
     ET.SubElement(pitch, "alter").text = f"{alter_semitones(written.note, written.frequency_hz) + 0.0:.4f}"
     ET.SubElement(pitch, "octave").text = str(written.note.octave)
     _add_length(element)
-    if is_sharp or sharpened.get(place):
-        ET.SubElement(element, "accidental").text = "sharp" if is_sharp else "natural"
-    sharpened[place] = is_sharp
+    ET.SubElement(element, "accidental").text = "sharp" if is_sharp else "natural"
     for number, word in enumerate(filter(None, written.words), start=1):
         lyric = ET.SubElement(element, "lyric", number=str(number))
         ET.SubElement(lyric, "syllabic").text = "single"
