@@ -219,6 +219,13 @@ def test_how_a_flute_stands_is_from_the_median_of_the_others() -> None:
     assert stand.verdict == "different"
 
 
+def test_a_fingering_is_lent_by_flutes_with_as_many_holes_alone() -> None:
+    comparison = by_note()
+    coot = [flute.label for flute in comparison.flutes].index("Coot")
+    assert comparison.flutes[coot].facts.holes == 5
+    assert {stand.lend for stand in standing_of(comparison, coot).rows} == {None}
+
+
 def test_the_uncertainty_of_a_median_of_others_holds() -> None:
     # By Monte-Carlo: medians of nine normal values scatter 1.2533 / 3 (large samples), here within 6 %.
     chances = np.random.default_rng(2)

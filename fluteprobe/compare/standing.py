@@ -23,7 +23,7 @@ class Stand:
     """One flute in one row: its own cell, and how it is apart from the others.
 
     `own` is None where it does not play the row, the other fields where nobody else does. `lend` is the
-    fingering that most of the others use, `players` how many of them play the row.
+    fingering that most of the others with as many holes use, `players` how many of all play the row.
     """
 
     row: int
@@ -49,7 +49,8 @@ class Standing:
 
 def standing_of(comparison: Comparison, flute: int) -> Standing:
     """Return how a flute stands among the others of a comparison."""
-    stands = [_stand(row, k, flute) for k, row in enumerate(comparison.rows)]
+    holes = comparison.flutes[flute].facts.holes
+    stands = [_stand(row, k, flute, holes) for k, row in enumerate(comparison.rows)]
     known = [k for k, stand in enumerate(stands) if stand.off_cents is not None]
     off = np.array([stands[k].off_cents for k in known], dtype=np.float64)
     doubt = np.array([stands[k].uncertainty_cents for k in known], dtype=np.float64)
@@ -65,7 +66,7 @@ def standing_of(comparison: Comparison, flute: int) -> Standing:
     )
 
 
-def _stand(row: Row, place: int, flute: int) -> Stand:
+def _stand(row: Row, place: int, flute: int, holes: int) -> Stand:
     own = row.cells[flute]
     others = [cell for cell in row.played if cell.flute != flute]
     cents = _median([cell.cents for cell in others])
@@ -78,7 +79,7 @@ def _stand(row: Row, place: int, flute: int) -> Stand:
         uncertainty_cents=None if own is None or off is None else _uncertainty(own, others),
         verdict=None,
         beats_hz=None if own is None or off is None else _beats_hz(own.frequency_hz, off),
-        lend=_usual([cell.fingering for cell in others]),
+        lend=_usual([cell.fingering for cell in others if cell.fingering.holes == holes]),
         players=len(others),
     )
 

@@ -223,7 +223,7 @@ def _rows_top_mm(comparison: Comparison, page: Page) -> float:
 
 def _rows_bottom_mm(findings: Sequence[Finding], page: Page) -> float:
     lines = sum(len(finding.lines) for finding in findings)
-    return page.bottom_mm - _FOOT_MM - _KEY_MM - _LINE_MM * lines - 1.2 * len(findings) - 6.0
+    return page.bottom_mm - _FOOT_MM - _KEY_MM - _LINE_MM * lines - 1.2 * len(findings) - 9.0
 
 
 # --- drawing -----------------------------------------------------------------------------------------------
@@ -244,7 +244,7 @@ def _draw_page(
     end = page.bottom_mm - _FOOT_MM
     _draw_key(page, plan, end - _KEY_MM + 4.0)
     if number[0] == number[1]:
-        _draw_findings(page, findings, _rows_bottom_mm(findings, page) + 4.0)
+        _draw_findings(page, findings, _rows_bottom_mm(findings, page) + 7.0)
     draw_foot(page, *number)
     return page.figure
 
@@ -272,11 +272,11 @@ def _draw_columns(page: Page, plan: Plan, bottom: float) -> None:
     if not plan.has_columns:
         page.text(plan.left_mm, y, "how many play it", LABEL, colour=QUIET)
         return
-    for k, name in enumerate(short_names(plan.comparison)):
-        words, voice = str(k + 1), _COLUMN
-        if plan.column_mm >= 14.0:
-            words, voice = shortened(f"{k + 1} {name}", SMALL, plan.column_mm - 0.6), SMALL
+    names = [f"{k} {name}" for k, name in enumerate(short_names(plan.comparison), start=1)]
+    fit = all(width_mm(name, SMALL) < plan.column_mm - 0.6 for name in names)
+    for k, name in enumerate(names):
         x = plan.middle_mm(k)
+        words, voice = (name, SMALL) if fit else (str(k + 1), _COLUMN)
         page.text(x, y, words, voice, align="center", colour=QUIET)
         page.line((x, plan.top_mm), (x, bottom), colour=BAND)
 

@@ -237,9 +237,8 @@ def _draw_stand(page: Page, plan: Plan, stand: Stand, y: float) -> None:
     draw_register(page, (plan.left_mm - _GAP_MM - 0.5 * _DOTS_MM + 0.8, y), register or 0)
     _draw_others(page, plan, stand, y)
     if stand.own is None:
-        page.text(
-            page.right_mm, y + 1.0, f"{stand.players} others play it", LABEL, align="right", colour=QUIET
-        )
+        others = "1 other plays it" if stand.players == 1 else f"{stand.players} others play it"
+        page.text(page.right_mm, y + 1.0, others, LABEL, align="right", colour=QUIET)
         return
     _draw_own(page, plan, stand, y)
 
