@@ -12,11 +12,12 @@ the reference named, times in seconds from the start of the recording, temperatu
 
 from typing import TYPE_CHECKING, Any
 
+from fluteprobe.version import __version__
+
 if TYPE_CHECKING:
     from fluteprobe.survey import hear, measure
 
 __all__ = ["__version__", "hear", "measure"]
-__version__ = "0.1.0"
 
 
 def __getattr__(name: str) -> Any:

@@ -19,10 +19,11 @@ from hashlib import sha256
 from pathlib import Path
 from typing import Any
 
-from fluteprobe import __version__, fields
+from fluteprobe import fields
 from fluteprobe.files import make_folder, open_ordinary, read_whole, replace_file, sweep_passing
 from fluteprobe.sound.stored import tone_from
 from fluteprobe.sound.tone import Tone
+from fluteprobe.version import __version__
 
 KEPT_FOLDER = ".kept"  # in the folder of the session's reports
 SPARE = 100  # how many are kept of recordings that are not in the session now

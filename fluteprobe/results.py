@@ -17,13 +17,13 @@ from importlib.resources import files
 from pathlib import Path
 from typing import Any, Literal, cast
 
-from fluteprobe import __version__
 from fluteprobe.files import make_folder, replace_file, replace_files, sweep_passing
 from fluteprobe.flute.register import REGISTERS
 from fluteprobe.reread import MEASUREMENTS_SCHEMA, ResultsError, read_results, survey_from_json
 from fluteprobe.session import Problem, printable
 from fluteprobe.sound.tone import BreathResonance, Partial, Vibrato
 from fluteprobe.survey import Entry, Reading, Survey
+from fluteprobe.version import __version__
 
 __all__ = [
     "CSV_FIELDS",

@@ -15,7 +15,6 @@ from math import log2
 from pathlib import Path
 from typing import Any, Literal
 
-from fluteprobe import __version__
 from fluteprobe.files import add_files, make_folder, read_whole
 from fluteprobe.flute.alignment import Alignment, Heard, Placed, Wanted, align
 from fluteprobe.flute.fingering import Breath, Fingering
@@ -26,6 +25,7 @@ from fluteprobe.session.names import TakeName, UnfitNameError, read_take_name
 from fluteprobe.sound.cut import part_format, part_of
 from fluteprobe.sound.phrases import Phrase, find_phrases
 from fluteprobe.sound.recording import Recording
+from fluteprobe.version import __version__
 
 SPLIT_SCHEMA = "fluteprobe/split/1"
 SURE = 0.9

@@ -14,7 +14,6 @@ from typing import IO, Any
 
 import click
 
-from fluteprobe import __version__
 from fluteprobe.cli.begin import begin
 from fluteprobe.cli.chart import chart
 from fluteprobe.cli.compare import compare
@@ -25,6 +24,7 @@ from fluteprobe.cli.plays import plays
 from fluteprobe.cli.sheet import sheet
 from fluteprobe.cli.split import split
 from fluteprobe.cli.tuning import tuning
+from fluteprobe.version import __version__
 
 os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")  # read when numpy is first loaded, in a command's body
 

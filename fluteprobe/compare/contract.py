@@ -14,7 +14,6 @@ from collections.abc import Mapping, Sequence
 from dataclasses import asdict
 from typing import Any
 
-from fluteprobe import __version__
 from fluteprobe.compare.values import (
     Beats,
     Cell,
@@ -27,6 +26,7 @@ from fluteprobe.compare.values import (
     Row,
 )
 from fluteprobe.session import printable
+from fluteprobe.version import __version__
 
 COMPARISON_SCHEMA = "fluteprobe/comparison/1"
 CSV_FIELDS = (

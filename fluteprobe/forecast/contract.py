@@ -9,9 +9,9 @@ are rounded to 0.0001 Hz, cents to 0.001, uncertainties to three digits. The JSO
 from dataclasses import asdict
 from typing import Any
 
-from fluteprobe import __version__
 from fluteprobe.flute.sensitivity import CHANGE_MM, Measure, Sensitivity
 from fluteprobe.forecast.values import Disagreement, FitWords, Forecast, Prediction
+from fluteprobe.version import __version__
 
 FORECAST_SCHEMA = "fluteprobe/forecast/1"
 

@@ -10,7 +10,6 @@ from collections.abc import Iterable, Mapping, Sequence
 from importlib.resources import files
 from typing import Any, Literal, cast
 
-from fluteprobe import __version__
 from fluteprobe.flute.scales import tonic_name
 from fluteprobe.flute.tuning import Note
 from fluteprobe.repertoire.keyboard import Address, Key
@@ -18,6 +17,7 @@ from fluteprobe.repertoire.scales import ScaleFit
 from fluteprobe.repertoire.sounds import Match, Sound, Standard, Way
 from fluteprobe.repertoire.tunes import TuneFit, short_notes
 from fluteprobe.score.tune import Tune, TuneNote
+from fluteprobe.version import __version__
 
 PLAYS_SCHEMA = "fluteprobe/plays/1"
 TUNING_SCHEMA = "fluteprobe/tuning/1"
