@@ -9,7 +9,6 @@ import codecs
 import re
 from collections import Counter
 from collections.abc import Hashable, Sequence
-from hashlib import blake2b
 from pathlib import Path
 
 from fluteprobe.session.words import plain_reason
@@ -96,7 +95,7 @@ def first_copies(files: Sequence[tuple[Hashable, Path]]) -> list[int | None]:
     """
     keys = [(kind, _size(path)) for kind, path in files]
     several = {key for key, times in Counter(keys).items() if times > 1 and key[1]}
-    firsts: dict[tuple[Hashable, bytes], list[int]] = {}
+    firsts: dict[tuple[Hashable, int], list[int]] = {}
     copies: list[int | None] = []
     for k, (key, (_, path)) in enumerate(zip(keys, files, strict=True)):
         alike = firsts.setdefault((key, _ends(path)), []) if key in several else []
@@ -113,16 +112,15 @@ def _size(path: Path) -> int:
         return 0
 
 
-def _ends(path: Path) -> bytes:
-    """Return a digest of the beginning and the end of a file, which tells most apart."""
+def _ends(path: Path) -> int:
+    """Return a hash of the beginning and the end of a file, which tells most apart."""
     try:
         with path.open("rb") as file:
-            digest = blake2b(file.read(_END_BYTES))
+            beginning = file.read(_END_BYTES)
             file.seek(max(0, _size(path) - _END_BYTES))
-            digest.update(file.read(_END_BYTES))
+            return hash((beginning, file.read(_END_BYTES)))
     except OSError:
-        return b""
-    return digest.digest()
+        return 0
 
 
 def _is_same(one: Path, other: Path) -> bool:
