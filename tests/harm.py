@@ -1,7 +1,7 @@
 """Sound files harmed at random, for hypothesis: bytes changed, most of them near the ends; the end cut off.
 
-Conventions: a change is (place, value), the place from 0 at the start to 1 at the end and from 0 at the end to
--1 at the start, so that small numbers are where headers and indexes are.
+Conventions: a change is (place, value), the place from 0 at the start to 1 at the end and from 0 at the end
+to -1 at the start, so that small numbers are where headers and indexes are.
 """
 
 from pathlib import Path

@@ -5,6 +5,7 @@ hand (bytes laid down in this file), it is by libsndfile, the general-purpose li
 """
 
 import os
+import shlex
 import stat
 import struct
 import subprocess
@@ -150,6 +151,16 @@ def test_decoding_mp3_writes_nothing_to_standard_error(
     open_recording(path)
     os.write(2, b"heard\n")
     assert capfd.readouterr().err == "heard\n"
+
+
+def test_an_mp3_is_read_where_standard_error_is_closed(tmp_path: Path) -> None:
+    path = written(tmp_path / "take.mp3", tone())
+    code = (
+        f"from fluteprobe.sound.recording import open_recording; print(open_recording({str(path)!r}).codec)"
+    )
+    command = f"exec {shlex.join([sys.executable, '-c', code])} 2>&-"
+    run = subprocess.run(["bash", "-c", command], stdout=subprocess.PIPE, text=True, check=True)
+    assert run.stdout == "MPEG_LAYER_III\n"
 
 
 def test_nothing_slow_is_imported_for_an_ordinary_recording(tmp_path: Path) -> None:

@@ -17,12 +17,12 @@ from numpy.typing import NDArray
 Samples = NDArray[np.float32]
 
 FINEST_STEP = 2.0**-15
-HEAD_BYTES = 192
+HEAD_BYTES = 32
+_STANDARD_ERROR = 2
 
 CUT_OFF = "cut off: the file is shorter than its header says; copy or record it again"
 DAMAGED = "damaged: it cannot be read to its end; copy or record it again"
 NO_SOUND_FOUND = "damaged or cut off: no sound can be read from it; copy or record it again"
-
 PROTECTED = "copy-protected: it cannot be read; record it anew, or save an unprotected copy"
 
 
@@ -97,7 +97,10 @@ def open_read_only(path: Path) -> int:
             raise RecordingError("not a file; record to a sound file first")
         if status.st_size == 0:
             raise RecordingError("an empty file (0 bytes); copy or record it again")
-        return os.open(path, os.O_RDONLY | getattr(os, "O_BINARY", 0))
+        descriptor = os.open(path, os.O_RDONLY | getattr(os, "O_BINARY", 0))
+        while descriptor <= _STANDARD_ERROR:  # it was closed: its number is not for a file
+            descriptor = os.dup(descriptor)
+        return descriptor
     except FileNotFoundError:
         raise RecordingError("no such file") from None
     except PermissionError:

@@ -49,8 +49,6 @@ _HEADS = (
     (0, (b"\xff\xf1", b"\xff\xf9"), "an AAC file"),
     (0, (b"\x30\x26\xb2\x75\x8e\x66\xcf\x11",), "a WMA or WMV file"),
     (8, (b"AVI ",), "an AVI video"),
-    (0, (b"\0\0\x01\xba",), "an MPEG video"),
-    (188, (b"G",), "an MPEG video"),
     (0, (b"caff",), "a CAF file of a kind that phones write"),
 )
 
@@ -110,7 +108,7 @@ def open_phone(path: Path, fault: RecordingError) -> "PhoneDecoder":
 def kind_of(head: bytes) -> str | None:
     """Return, in words, what kind of phone's or camera's file begins like this; None if none does."""
     for at, marks, words in _HEADS:
-        if head[at:].startswith(marks) and (at != 188 or head[:1] == b"G"):
+        if head[at:].startswith(marks):
             return words
     return None
 

@@ -20,7 +20,7 @@ if TYPE_CHECKING:
 
 Timed = tuple[int, "AudioFrame"]  # the gap before it, and what the decoder gave
 
-_CONTAINERS = "mov,matroska,aac,amr,caf,asf,avi,mpegts,mpeg"
+_CONTAINERS = "mov,matroska,aac,amr,caf,asf,avi"  # of those whose tracks are known when they are opened
 _CODECS = (
     "aac,aac_latm,alac,amrnb,amrwb,opus,vorbis,mp2float,mp3float,mp2,mp3,ac3,eac3,flac,qcelp,evrc,"
     "wmav1,wmav2,wmapro,wmalossless,wmavoice,adpcm_ima_qt,adpcm_ima_wav,adpcm_ms,pcm_alaw,pcm_mulaw,pcm_u8,"
@@ -147,7 +147,7 @@ class Track:
                 if most_bytes < 0:
                     break
                 yield _frames_of(packet)
-        except FFmpegError:
+        except (FFmpegError, IndexError):  # PyAV 18 raises the latter where a track turns up late
             most_bytes = -1
         self._is_cut = self._is_cut or most_bytes < 0
 
@@ -188,7 +188,7 @@ def _values(frame: "AudioFrame") -> Samples:
     dtype, offset, scale = _KINDS[kind.removesuffix("p")]
     if kind.endswith("p"):
         planes = [np.frombuffer(_plane(frame, k), dtype, frames) for k in range(channels)]
-        found = np.stack(planes, axis=1)
+        found = np.array(planes).T  # a column after the other in memory, which is fastest to join
     else:
         found = np.frombuffer(_plane(frame, 0), dtype, frames * channels).reshape(frames, channels)
     if dtype is np.float32:
