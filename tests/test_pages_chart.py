@@ -32,6 +32,8 @@ from surveys import (
     strange_words,
 )  # fmt: skip
 
+from fluteprobe.flute.fingering import Fingering
+from fluteprobe.forecast.values import Prediction
 from fluteprobe.pages.chart import chart_figures, scale_limit_cents, write_chart
 from fluteprobe.pages.contents import cents_text, chart_contents, note_text, uncertainty_text
 from fluteprobe.pages.paper import CARDS, house_style
@@ -335,3 +337,38 @@ def test_ten_holes_and_one_hole_are_drawn(paper: str) -> None:
         facts = replace(survey.flute, holes=len(states))
         changed = replace(survey, flute=facts, entries=(entry(states, 2, 80, 3.0),))
         assert len(chart_figures(changed, paper=paper)) == 1
+
+
+# --- what is foretold --------------------------------------------------------------------------------
+
+
+def foretold(word: str, note: str, rank: int, chance: float = 0.9) -> Prediction:
+    return Prediction(
+        fingering=Fingering(word),
+        register=2,
+        frequency_hz=900.0 + 10.0 * rank,
+        uncertainty_cents=12.0,
+        note=note,
+        cents=-7.0,
+        basis="fitted tube",
+        likely_to_speak=chance,
+        fills=note,
+        rank=rank,
+    )
+
+
+def test_what_is_foretold_is_marked_as_such_and_stands_under_what_was_played() -> None:
+    """Once a note, the fingering to try first; its chance to speak where takes are counted otherwise."""
+    told = [foretold("oxxxxo", "B5", 2, 0.45), foretold("oxoxxx", "A5", 1), foretold("oxxxoo", "B5", 3)]
+    section = chart_contents(heron(), foretold=told).sections[-1]
+    assert section.foretold
+    assert section.title == "Foretold"
+    assert section.remark.startswith("Not played yet: estimates")
+    assert [str(entry.fingering) for entry in section.entries] == ["oxoxxx", "oxxxxo"]
+    words = {text.get_text() for page in chart_figures(heron(), foretold=told) for text in page.findobj(Text)}
+    assert {"Foretold", "speaks", "90 %", "45 %"} <= words
+
+
+def test_nothing_foretold_leaves_the_chart_as_it_is() -> None:
+    hardly = replace(foretold("oxxxxo", "B5", 1), rank=None)
+    assert chart_contents(heron(), foretold=[hardly]) == chart_contents(heron())

@@ -11,6 +11,7 @@ from fluteprobe.cli.measure import measured
 from fluteprobe.cli.options import FOLDER, anew_option, out_option, reports_folder
 
 if TYPE_CHECKING:
+    from fluteprobe.forecast import Prediction
     from fluteprobe.survey import Survey
 
 FORMATS = ("pdf", "png", "svg", "html")
@@ -27,6 +28,7 @@ class Wish:
     tolerance_cents: float
     dots_per_inch: float
     with_sound: bool
+    with_foretold: bool
 
     @property
     def name(self) -> str:
@@ -85,6 +87,9 @@ def _formats(ctx: click.Context, param: click.Parameter, given: tuple[str, ...])
 @click.option(
     "--no-sound", is_flag=True, help="Leave the recordings out of the web page (html), which makes it small."
 )
+@click.option(
+    "--foretold", is_flag=True, help="Show also the upper notes not yet played, as outlines and as estimates."
+)
 @anew_option
 @out_option
 @click.pass_context
@@ -97,6 +102,7 @@ def chart(  # noqa: PLR0913, PLR0917  (click passes every option by name)
     tolerance_cents: float,
     dots_per_inch: float,
     no_sound: bool,
+    foretold: bool,
     anew: bool,
     out: Path | None,
 ) -> None:
@@ -123,6 +129,7 @@ def chart(  # noqa: PLR0913, PLR0917  (click passes every option by name)
         tolerance_cents=tolerance_cents,
         dots_per_inch=dots_per_inch,
         with_sound=not no_sound,
+        with_foretold=foretold,
     )
     target = reports_folder(folder, out)
     survey = measured(folder, target, anew=anew)
@@ -157,6 +164,7 @@ def _printed(survey: "Survey", target: Path, suffix: str, wish: Wish) -> Iterato
     from fluteprobe.pages.chart import write_chart
     from fluteprobe.pages.map import write_map
 
+    foretold = _foretold(survey) if wish.with_foretold else ()
     yield from write_chart(
         survey,
         target / f"{wish.name}.{suffix}",
@@ -164,7 +172,19 @@ def _printed(survey: "Survey", target: Path, suffix: str, wish: Wish) -> Iterato
         large=wish.large,
         tolerance_cents=wish.tolerance_cents,
         dots_per_inch=wish.dots_per_inch,
+        foretold=foretold,
     )
     if wish.has_map:
         page = target / f"map.{suffix}"
         yield from write_map(survey, page, paper=wish.paper, dots_per_inch=wish.dots_per_inch)
+
+
+def _foretold(survey: "Survey") -> tuple["Prediction", ...]:
+    """Return what is foretold of the flute; where nothing can be, say why."""
+    from fluteprobe.cli import screen
+    from fluteprobe.forecast import forecast
+
+    result = forecast(survey)
+    if result.reason is not None:
+        screen.say(f"Caution: nothing is foretold: {result.reason}", err=True)
+    return result.predictions

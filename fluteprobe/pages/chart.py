@@ -19,6 +19,7 @@ from pathlib import Path
 from matplotlib.figure import Figure
 
 from fluteprobe.flute.fingering import STATES
+from fluteprobe.forecast.values import Prediction
 from fluteprobe.pages.contents import Aside, Contents, chart_contents
 from fluteprobe.pages.glyphs import FluteSize, Scale
 from fluteprobe.pages.key import draw_key, key_of
@@ -129,10 +130,12 @@ def write_chart(  # noqa: PLR0913 - what a maker may choose about the page
     large: bool = False,
     tolerance_cents: float = 10.0,
     dots_per_inch: float = PNG_DOTS_PER_INCH,
+    foretold: Sequence[Prediction] = (),
 ) -> tuple[Path, ...]:
     """Write a flute's chart as PDF, PNG or SVG, by the target's suffix, and return the files written.
 
-    A chart that needs a second page gets it: in the same PDF, or as a further picture with `-2` in its name.
+    What is `foretold` stands in a row of its own, as outlines, under what was played. A chart that needs a
+    second page gets it: in the same PDF, or as a further picture with `-2` in its name.
 
     Raises
     ------
@@ -140,14 +143,19 @@ def write_chart(  # noqa: PLR0913 - what a maker may choose about the page
         If the paper or the suffix is not known, the tolerance is not above 0, or a card is to be large.
     """
     edition = edition_of(paper, large=large, tolerance_cents=tolerance_cents)
-    contents = chart_contents(survey, tolerance_cents, best_only=edition.is_card)
+    contents = chart_contents(survey, tolerance_cents, best_only=edition.is_card, foretold=foretold)
     title = f"{contents.title}: fingering chart"
     figures = _figures(contents, edition)
     return save_pages(figures, target, title=title, author=contents.maker, dots_per_inch=dots_per_inch)
 
 
 def chart_figures(
-    survey: Survey, *, paper: str = "a4", large: bool = False, tolerance_cents: float = 10.0
+    survey: Survey,
+    *,
+    paper: str = "a4",
+    large: bool = False,
+    tolerance_cents: float = 10.0,
+    foretold: Sequence[Prediction] = (),
 ) -> list[Figure]:
     """Return the pages of a flute's chart as figures.
 
@@ -157,7 +165,8 @@ def chart_figures(
         If the paper is not known, the tolerance is not above 0, or a card is to be large.
     """
     edition = edition_of(paper, large=large, tolerance_cents=tolerance_cents)
-    return _figures(chart_contents(survey, tolerance_cents, best_only=edition.is_card), edition)
+    contents = chart_contents(survey, tolerance_cents, best_only=edition.is_card, foretold=foretold)
+    return _figures(contents, edition)
 
 
 def edition_of(paper: str, *, large: bool, tolerance_cents: float) -> Edition:
@@ -190,7 +199,10 @@ def _figures(contents: Contents, edition: Edition) -> list[Figure]:
 
 
 def _fitted(contents: Contents, edition: Edition) -> Book:
-    """Return the blocks page by page: as few pages as can be, and on those as roomy as can be."""
+    """Return the blocks page by page: as few pages as can be, and on those as roomy as can be.
+
+    What was played is kept together on the first page, if it can be, where something foretold follows.
+    """
     books: list[Book] = []
     for step in range(SIZES + 1):
         book, fits = _book(contents, edition, 1.0 - step / SIZES)
@@ -198,7 +210,8 @@ def _fitted(contents: Contents, edition: Edition) -> Book:
             books.append(book)
         if fits and len(book) == 1:
             break
-    return min(books, key=len)
+    together = any(section.foretold for section in contents.sections)
+    return min(books, key=lambda book: (len(book), -len(book[0]) if together else 0))
 
 
 def _book(contents: Contents, edition: Edition, roomy: float) -> tuple[Book, bool]:
@@ -219,15 +232,17 @@ def _book(contents: Contents, edition: Edition, roomy: float) -> tuple[Book, boo
 def _blocks(contents: Contents, edition: Edition, roomy: float) -> list[Block]:
     entries = [entry for section in contents.sections for entry in section.entries]
     limit = scale_limit_cents(entries, edition.tolerance_cents)
+    shown = [section for section in contents.sections if section.groups or not edition.is_card]
+    played, foretold = ([s for s in shown if s.foretold == later] for later in (False, True))
+    upper, first = ([s for s in played if (s.register > 1) == above] for above in (True, False))
     rows: list[Row] = []
-    for upper in (True, False):
-        sections = [
-            section
-            for section in contents.sections
-            if (section.register > 1) == upper and (section.groups or not edition.is_card)
-        ]
-        look = _look(edition, contents.holes, limit, upper=upper, roomy=roomy)
-        rows += rows_of(sections, look, contents.holes, edition.across_mm, contents.reference_label)
+    for sections, label in (
+        (upper, contents.reference_label),
+        (first, contents.reference_label),
+        (foretold, None),
+    ):
+        look = _look(edition, contents.holes, limit, upper=sections is upper, roomy=roomy)
+        rows += rows_of(sections, look, contents.holes, edition.across_mm, label)
     blocks = [Block(height_mm=row.height_mm, draw=partial(draw_row, row)) for row in rows]
     return [*blocks, _closing(contents, edition)]
 

@@ -11,6 +11,7 @@ from itertools import groupby
 from math import isfinite
 
 from fluteprobe.flute.register import Register
+from fluteprobe.forecast.values import Prediction
 from fluteprobe.pages.paper import MINUS, clean
 from fluteprobe.survey import Entry, Reading, Survey
 
@@ -30,12 +31,16 @@ class NoteGroup:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Section:
-    """One register: its title, its notes from low to high, or in words why there are none."""
+    """One register: its title, its notes from low to high, or in words why there are none.
+
+    Where it is `foretold` nothing of it was played: an entry's reliability is how likely it is to speak.
+    """
 
     register: Register
     title: str
     groups: tuple[NoteGroup, ...]
     remark: str
+    foretold: bool = False
 
     @property
     def entries(self) -> tuple[Entry, ...]:
@@ -66,8 +71,16 @@ class Contents:
     reference_label: str | None
 
 
-def chart_contents(survey: Survey, tolerance_cents: float = 10.0, *, best_only: bool = False) -> Contents:
+def chart_contents(
+    survey: Survey,
+    tolerance_cents: float = 10.0,
+    *,
+    best_only: bool = False,
+    foretold: Sequence[Prediction] = (),
+) -> Contents:
     """Return what a survey's chart says; with `best_only` one fingering for each note, and no lists.
+
+    Of what is `foretold`, the best fingering of every note that would be new stands on it.
 
     Raises
     ------
@@ -84,7 +97,10 @@ def chart_contents(survey: Survey, tolerance_cents: float = 10.0, *, best_only: 
         summary=_summary(entries),
         maker=clean(survey.flute.maker or "") or None,
         holes=survey.flute.holes,
-        sections=tuple(_section(entries, r, tolerance_cents) for r in (*heard, 2, 1)),
+        sections=(
+            *(_section(entries, r, tolerance_cents) for r in (*heard, 2, 1)),
+            *_foretold(foretold),
+        ),
         asides=() if best_only else _asides(survey),
         conditions=_conditions(survey, carried=not best_only),
         reference_label=_reference_label(survey),
@@ -125,7 +141,12 @@ def uncertainty_text(cents: float | None) -> str:
 
 
 def spoke_text(entry: Entry) -> str:
-    """Return in how many takes a fingering spoke: `3`, or where others did not `3 of 4`."""
+    """Return in how many takes a fingering spoke: `3`, or where others did not `3 of 4`.
+
+    Of one that was only foretold it is how likely it is to speak: `92 %`.
+    """
+    if not entry.tones:
+        return f"{100.0 * entry.reliability:.0f} %"
     spoke = len(entry.takes)
     tried = round(spoke / entry.reliability) if entry.reliability > 0.0 else spoke
     return f"{spoke} of {tried}" if entry.reliability < 1.0 else f"{spoke}"
@@ -169,6 +190,35 @@ def _section(entries: Sequence[Entry], register: Register, tolerance_cents: floa
     name = _REGISTER_NAMES[register]
     remark = _counted(len(mine), "fingering", len(groups)) if groups else "Nothing has been heard in it yet."
     return Section(register=register, title=name, groups=groups, remark=remark)
+
+
+def _foretold(predictions: Sequence[Prediction]) -> tuple[Section, ...]:
+    """Return what would fill the scale as a section of its own, or none."""
+    best: dict[str, Prediction] = {}
+    for each in sorted((p for p in predictions if p.rank and p.fills), key=lambda p: p.rank or 0):
+        best.setdefault(each.note, each)
+    rising = sorted(best.values(), key=lambda p: p.frequency_hz)
+    groups = tuple(NoteGroup(note=note_text(p.note), entries=(_as_entry(p),)) for p in rising)
+    remark = "Not played yet: estimates, from what was. The lowest line is how likely they are to speak."
+    section = Section(register=2, title="Foretold", groups=groups, remark=remark, foretold=True)
+    return (section,) if groups else ()
+
+
+def _as_entry(prediction: Prediction) -> Entry:
+    """Return what is foretold in an entry's place: no take, no tone, and its chance to speak."""
+    return Entry(
+        fingering=prediction.fingering,
+        register=3 if prediction.register == 3 else 2,
+        frequency_hz=prediction.frequency_hz,
+        uncertainty_cents=prediction.uncertainty_cents,
+        note=prediction.note,
+        cents=prediction.cents,
+        cents_at_reference=None,
+        stretch_cents=None,
+        takes=(),
+        tones=0,
+        reliability=prediction.likely_to_speak,
+    )
 
 
 def _counted(fingerings: int, word: str, notes: int) -> str:

@@ -79,11 +79,14 @@ def draw_hole(page: Page, x_mm: float, y_mm: float, diameter_mm: float, state: s
         page.line((x_mm + 1.3 * radius, y_mm), (x_mm + 1.95 * radius, y_mm), colour=INK, pt=FIRM_PT)
 
 
-def draw_flute(page: Page, x_mm: float, top_mm: float, size: FluteSize, fingering: Fingering) -> None:
-    """Draw a flute upright, its mouth end at the top and its middle line at x."""
+def draw_flute(  # noqa: PLR0913 - the flute, its size and place, and how it is drawn
+    page: Page, x_mm: float, top_mm: float, size: FluteSize, fingering: Fingering, *, outlined: bool = False
+) -> None:
+    """Draw a flute upright, its mouth end at the top and its middle line at x; of wood, or outlined."""
     half = 0.82 * size.hole_mm
     bottom = top_mm + size.height_mm(fingering.holes)
-    page.path(_body(x_mm, top_mm, bottom, half), fill=WOOD)
+    body = _body(x_mm, top_mm, bottom, half)
+    page.path(body, fill="none" if outlined else WOOD, edge=QUIET if outlined else "none")
     page.box((x_mm - 0.4 * size.hole_mm, top_mm + 1.8), (0.8 * size.hole_mm, 0.9), QUIET)
     for k, state in enumerate(fingering.states):
         draw_hole(page, x_mm, top_mm + hole_depth_mm(size, k, fingering.holes), size.hole_mm, state)

@@ -6,7 +6,7 @@ register or a part of one; upper registers that fit into one row share it, the h
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import ceil
 
 from fluteprobe.pages.contents import Section, cents_text, spoke_text, uncertainty_text
@@ -102,6 +102,11 @@ class Row:
         return tuple(column for part in self.parts for column in part.columns)
 
     @property
+    def foretold(self) -> bool:
+        """Whether nothing in this row was played."""
+        return any(part.section.foretold for part in self.parts)
+
+    @property
     def staff(self) -> Staff:
         """The row's notes as they are written."""
         return staff_of([column.note for column in self.columns if column.leads])
@@ -180,8 +185,8 @@ def draw_row(row: Row, page: Page, top_mm: float) -> None:
     _draw_gutter(page, row, middle, numbers_top)
     for column, x in zip(row.columns, row.middles_mm(page.left_mm), strict=True):
         entry = column.entry
-        _draw_name(page, column, row.look.note, (x, top_mm + 6.4))
-        draw_flute(page, x, flute_top, row.look.flute, entry.fingering)
+        _draw_name(page, column, replace(row.look.note, italic=row.foretold), (x, top_mm + 6.4))
+        draw_flute(page, x, flute_top, row.look.flute, entry.fingering, outlined=row.foretold)
         page.text(x, word_line, str(entry.fingering), row.look.word, align="center", colour=QUIET)
         draw_deviation(page, (x, middle), row.look.scale, entry.cents, entry.uncertainty_cents)
         _draw_numbers(page, row, entry, (x, numbers_top))
@@ -310,7 +315,7 @@ def _number_lines(row: Row) -> list[tuple[str, float]]:
     lines = [("cents", 4.8), ("uncertain", 8.5)]
     if row.reference_label:
         lines.append((row.reference_label, 12.2))
-    return [*lines, ("takes", lines[-1][1] + 3.9)]
+    return [*lines, ("speaks" if row.foretold else "takes", lines[-1][1] + 3.9)]
 
 
 def _draw_numbers(page: Page, row: Row, entry: Entry, at_mm: tuple[float, float]) -> None:
@@ -326,7 +331,7 @@ def _draw_numbers(page: Page, row: Row, entry: Entry, at_mm: tuple[float, float]
         carried = cents_text(entry.cents_at_reference)
         page.text(x, depths[row.reference_label], carried, LABEL, align="center", colour=QUIET)
     if row.look.detailed or entry.reliability < 1.0:
-        _draw_takes(page, entry, (x, depths["takes"]))
+        _draw_takes(page, entry, (x, depths["speaks" if row.foretold else "takes"]))
 
 
 def _draw_takes(page: Page, entry: Entry, at_mm: tuple[float, float]) -> None:
