@@ -34,9 +34,10 @@ _REFINED = 2
 class Fit:
     """A fitted tube: the shape before and after what was heard.
 
-    `heard` are the tones and those breath resonances that lie by a resonance, with its number; `variance`
-    is each one's scatter in cents²; `deviation_cents` and `surprise` say how far each lies from what all
-    others foretell, in cents and in standard deviations of that.
+    `strangeness` is how improbable the tones are, near 1 where all is as believed. `heard` are the tones
+    and those breath resonances that lie by a resonance, with its number; `variance` is each one's scatter
+    in cents²; `deviation_cents` and `surprise` say how far each lies from what all others foretell, in
+    cents and in standard deviations of that.
     """
 
     believed: Shape
@@ -45,6 +46,7 @@ class Fit:
     variance: Reals
     deviation_cents: Reals
     surprise: Reals
+    strangeness: float
 
     @property
     def misfit_cents(self) -> float:
@@ -189,6 +191,7 @@ def _refined(believed: Shape, shape: Shape, heard: Sequence[Heard]) -> Fit:
         variance=variance,
         deviation_cents=deviation,
         surprise=deviation / np.sqrt(spread),
+        strangeness=joint.strangeness(np.array([each.is_tone for each in heard])),
     )
 
 

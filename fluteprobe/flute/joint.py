@@ -8,8 +8,8 @@ player for each `Kind` of what is heard, believed beforehand with a spread (`BEN
 flute itself. The rest is scatter from take to take. What the tube leaves out is an error that is alike for
 fingerings that differ in few holes (Gaussian processes: Rasmussen & Williams, Gaussian Processes for
 Machine Learning, 2006, ch. 2; with a fitted model beneath: Kennedy & O'Hagan, J. R. Statist. Soc. B 63, 425
-(2001)). The numbers of `BENDS` were counted on simulated flutes (tests/bench/bench_forecast.py), their
-spreads widened for real ones.
+(2001)). "First, before" is a low tone in an overblown take, before it broke. The numbers of `BENDS` were
+counted on simulated flutes (tests/bench/bench_forecast.py), their spreads widened for real ones.
 """
 
 from collections.abc import Iterable, Mapping, Sequence
@@ -26,7 +26,15 @@ from fluteprobe.flute.speak import ease, signs_of
 from fluteprobe.flute.tube import Resonances, openness_of, resonances
 
 Kind = Literal[
-    "first", "first, soft", "first, overblown", "second", "third", "bump above", "bump below", "bump alone"
+    "first",
+    "first, soft",
+    "first, overblown",
+    "first, before",
+    "second",
+    "third",
+    "bump above",
+    "bump below",
+    "bump alone",
 ]
 Integers = npt.NDArray[np.intp]
 Flags = npt.NDArray[np.bool_]
@@ -52,7 +60,8 @@ BENDS: Mapping[Kind, Bend] = MappingProxyType(
         "first": Bend(mean=-10.0, spread=6.0, scatter=8.0),
         "first, soft": Bend(mean=-25.0, spread=12.0, scatter=12.0),
         "first, overblown": Bend(mean=32.0, spread=12.0, scatter=14.0),
-        "second": Bend(mean=8.5, spread=7.0, scatter=7.0),
+        "first, before": Bend(mean=0.0, spread=10.0, scatter=18.0),
+        "second": Bend(mean=8.5, spread=7.0, scatter=8.0),
         "third": Bend(mean=4.0, spread=9.0, scatter=10.0),
         "bump above": Bend(mean=-7.0, spread=8.0, scatter=8.0),
         "bump below": Bend(mean=33.0, spread=14.0, scatter=22.0),
@@ -190,6 +199,15 @@ class Joint:
         """
         inverse = np.linalg.inv(self.covariance)
         return (inverse @ self.surprise) / np.diag(inverse), 1.0 / np.diag(inverse)
+
+    def strangeness(self, chosen: Flags) -> float:
+        """Return how improbable the chosen among what was heard are: near 1 where all is as believed.
+
+        It is their chi square over their number, dimensions, usual proportions and bends all counted.
+        """
+        surprise = self.surprise[chosen]
+        covariance = self.covariance[np.ix_(chosen, chosen)]
+        return float(surprise @ np.linalg.solve(covariance, surprise)) / len(surprise)
 
     # --- covariances -----------------------------------------------------------------------------
 

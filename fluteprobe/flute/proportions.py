@@ -45,6 +45,16 @@ class Known:
     tolerance_mm: float = 0.3
     air_c: float | None = None
 
+    @property
+    def has_dimensions(self) -> bool:
+        """Whether any dimension was measured."""
+        return any(each is not None for each in (self.bore_mm, self.wall_mm, self.length_mm, self.holes_mm))
+
+
+def without_dimensions(known: Known) -> Known:
+    """Return what is known of the air alone."""
+    return Known(air_c=known.air_c)
+
 
 def believed_shape(holes: int, rungs: Mapping[int, float], known: Known) -> Shape:
     """Return the shape that a flute of so many holes is believed to have.

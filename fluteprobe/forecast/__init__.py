@@ -16,7 +16,7 @@ from fluteprobe.flute.fingering import Fingering
 from fluteprobe.flute.fit import Fit, fitted
 from fluteprobe.flute.joint import Flags, Joint
 from fluteprobe.flute.plan import take_plan
-from fluteprobe.flute.proportions import believed_shape
+from fluteprobe.flute.proportions import believed_shape, without_dimensions
 from fluteprobe.flute.sensitivity import sensitivities, tube_words
 from fluteprobe.flute.speak import Try, chances
 from fluteprobe.flute.tuning import nearest_note
@@ -32,22 +32,30 @@ Wanted = tuple[Fingering, int]
 UPPER_REGISTERS = (2, 3)
 
 _WIDEST_CENTS = 75.0  # a forecast less sure than this names no note
-_FAR_CENTS, _FAR_SURPRISE = 60.0, 5.0
-_MOST_MISFIT_CENTS = 45.0
+_FAR_CENTS, _FAR_SURPRISE = 60.0, 4.5
+_MOST_MISFIT_CENTS, _MOST_STRANGE = 40.0, 3.0
 _MENTIONED_SURPRISE, _MENTIONED = 3.0, 5
 _NEARLY_ALL, _HARDLY_ANY = 0.8, 0.05  # of what is known of a pitch
+
+_TAKES = "no tube sounds like these takes: see whether their names are right, those below first"
+_DIMENSIONS = (
+    "a tube of the dimensions in flute.toml does not sound like these takes, but one of others does: "
+    "measure again, from the sound hole"
+)
 
 
 def forecast(survey: Survey) -> Forecast:
     """Foretell the second and third registers of a measured flute."""
-    heard = heard_of(survey)
+    heard, known = heard_of(survey), known_dimensions(survey)
     rungs = known_rungs(survey.flute.holes, heard)
     if not rungs:
         return _none(survey, "no tone whose register is known: record the ladder first, from all closed up")
-    fit = fitted(believed_shape(survey.flute.holes, rungs, known_dimensions(survey)), heard)
+    fit = fitted(believed_shape(survey.flute.holes, rungs, known), heard)
     disagreements = _disagreements(fit)
-    if fault := _fault(fit, disagreements):
-        return _none(survey, fault, disagreements)
+    if _is_unfit(fit, disagreements):
+        plain = fitted(believed_shape(survey.flute.holes, rungs, without_dimensions(known)), heard)
+        to_blame = known.has_dimensions and not _is_unfit(plain, _disagreements(plain))
+        return _none(survey, _DIMENSIONS if to_blame else _TAKES, disagreements)
     return Forecast(
         flute=survey.flute,
         sitting=survey.sitting,
@@ -93,19 +101,13 @@ def _disagreements(fit: Fit) -> tuple[Disagreement, ...]:
     return tuple(sorted(told, key=lambda each: -abs(each.surprise))[:_MENTIONED])
 
 
-def _fault(fit: Fit, disagreements: Sequence[Disagreement]) -> str | None:
-    """Return why the flute cannot be foretold, or None."""
-    far = [
-        each
+def _is_unfit(fit: Fit, disagreements: Sequence[Disagreement]) -> bool:
+    """Whether the tube is no account of the flute."""
+    far = any(
+        abs(each.deviation_cents) > _FAR_CENTS and abs(each.surprise) > _FAR_SURPRISE
         for each in disagreements
-        if abs(each.deviation_cents) > _FAR_CENTS and abs(each.surprise) > _FAR_SURPRISE
-    ]
-    if not far and fit.misfit_cents < _MOST_MISFIT_CENTS:
-        return None
-    return (
-        f"no tube fits what was heard ({fit.misfit_cents:.0f} cents off in the mean): "
-        "check the file names of the takes below, and the dimensions in flute.toml"
     )
+    return far or fit.misfit_cents > _MOST_MISFIT_CENTS or fit.strangeness > _MOST_STRANGE
 
 
 # --- predictions -------------------------------------------------------------------------------------

@@ -27,29 +27,36 @@ _FIRST: Mapping[Breath, Kind] = {"soft": "first, soft", "normal": "first", "over
 def heard_of(survey: Survey) -> list[Heard]:
     """Return the tones of known register and the breath resonances of a survey, by fingering."""
     found: list[Heard] = []
+    broke = {reading.take for reading in survey.readings if (reading.call.register or 0) > 1}
     for reading in survey.readings:
         if reading.fingering is None:
             continue
         if reading.tone.kind == "breath only":
             found += [_bump(reading, bump, "bump alone") for bump in reading.tone.breath_resonances]
         elif reading.tone.kind == "tone" and reading.call.register is not None:
-            found += [_tone(reading), *_bumps(reading)]
+            found += [_tone(reading, reading.take in broke), *_bumps(reading)]
     return found
 
 
-def _tone(reading: Reading) -> Heard:
+def _tone(reading: Reading, broke: bool) -> Heard:
     register = reading.call.register or 0
     assert reading.fingering is not None  # noqa: S101  (the caller asked)
-    upper: Kind = "second" if register == 2 else "third"
     return Heard(
         take=reading.take,
         fingering=reading.fingering,
-        kind=_FIRST[reading.breath or "normal"] if register == 1 else upper,
+        kind=_tone_kind(register, reading.breath or "normal", broke),
         resonance=register,
         cents=_cents(reading.tone.frequency_hz or 1.0),
         uncertainty_cents=reading.tone.uncertainty_cents or 0.0,
         sounding=register,
     )
+
+
+def _tone_kind(register: int, breath: Breath, broke: bool) -> Kind:
+    """Return how a tone was blown; `broke` tells that its take went on to a higher register."""
+    if register > 1:
+        return "second" if register == 2 else "third"
+    return "first, before" if broke and breath == "over" else _FIRST[breath]
 
 
 def _bumps(reading: Reading) -> Iterable[Heard]:
