@@ -1,4 +1,4 @@
-"""Run the benchmarks: `python tests/bench/run.py [pitch] [speed] [registers] [drawing] [--quick]`, or all.
+"""Run the benchmarks: `python tests/bench/run.py [PART …] [--quick]`, or all.
 
 The tables go to stdout, in Markdown; what is being done goes to stderr. `--quick` takes a small sample, to
 see that everything runs. Nothing here is collected by pytest.
@@ -10,7 +10,7 @@ import sys
 from pathlib import Path
 
 TESTS = Path(__file__).resolve().parent.parent
-PARTS = ("pitch", "speed", "registers", "drawing")
+PARTS = ("pitch", "speed", "registers", "drawing", "faults", "compare")
 
 
 def main() -> None:
