@@ -20,6 +20,7 @@ from fluteprobe.flute.register import (
     register_alone,
     registers_of,
 )
+from fluteprobe.flute.suspicion import called_without_name, doubted_names
 from fluteprobe.flute.tuning import A4_HZ, nearest_note, temperature_shift_cents
 from fluteprobe.hearing import MapTakes, hear_recording, hear_takes
 from fluteprobe.kept import Kept
@@ -133,8 +134,9 @@ def survey_of(
         if on_take:
             on_take(done, len(session.takes))
     calls = _calls(session, heard)
+    doubts = _doubts(session, heard)
     readings = tuple(
-        _reading(take.name, take, tone, session.sitting, call)
+        _doubted(_reading(take.name, take, tone, session.sitting, call), doubts.get(take.name))
         for (take, tone), call in zip(heard, calls, strict=True)
     )
     return Survey(
@@ -179,6 +181,20 @@ def _calls(session: Session, heard: Sequence[tuple[Take, Tone]]) -> list[Registe
     decided = registers_of(session.flute.holes, soundings, _dimensions(session))
     calls = dict(zip(sounding, decided, strict=True))
     return [calls.get(i, _NO_CALL) for i in range(len(heard))]
+
+
+def _doubts(session: Session, heard: Sequence[tuple[Take, Tone]]) -> Mapping[str, str]:
+    """Return what makes the name of a take doubtful, by take."""
+    clean = [_sounding(take, tone) for take, tone in heard if tone.kind == "tone"]
+    return doubted_names(session.flute.holes, clean, _dimensions(session))
+
+
+def _doubted(reading: Reading, doubt: str | None) -> Reading:
+    """Add the doubt about a take's name; a register that rests on the name is undecided."""
+    if doubt is None or reading.tone.frequency_hz is None:
+        return reading
+    tone = replace(reading.tone, cautions=(*reading.tone.cautions, doubt))
+    return replace(reading, tone=tone, call=called_without_name(reading.call, _bumps(tone)))
 
 
 def _dimensions(session: Session) -> Dimensions | None:

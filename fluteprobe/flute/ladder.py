@@ -13,12 +13,12 @@ from fluteprobe.flute.fingering import Fingering, ladder
 
 # How far registers 2 and 3 lie above register 1, in cents: middle and standard deviation. Ladder
 # fingerings (no hole skipped) are nearly harmonic; others lie anywhere from about 1.3 to 2.2 times.
-_LADDER_ABOVE: Mapping[Register, tuple[float, float]] = {
+LADDER_ABOVE: Mapping[Register, tuple[float, float]] = {
     1: (0.0, 25.0),
     2: (1170.0, 90.0),
     3: (1840.0, 150.0),
 }
-_FORKED_ABOVE: Mapping[Register, tuple[float, float]] = {
+FORKED_ABOVE: Mapping[Register, tuple[float, float]] = {
     1: (0.0, 40.0),
     2: (1040.0, 250.0),
     3: (1640.0, 330.0),
@@ -86,9 +86,9 @@ def ladder_clue(flute: Ladder, fingering: Fingering, pitch_cents: float) -> Clue
     if reach is None:
         return None
     low, high = reach
-    above = _LADDER_ABOVE if fingering.is_ladder else _FORKED_ABOVE
+    above = LADDER_ABOVE if fingering.is_ladder else FORKED_ABOVE
     likelihood = {
-        register: _STRAY + _smeared(pitch_cents - middle, low, high, spread)
+        register: _STRAY + smeared(pitch_cents - middle, low, high, spread)
         for register, (middle, spread) in above.items()
     }
     detail = (
@@ -102,7 +102,7 @@ def companion_clue(
     fingering: Fingering, pitch_cents: float, companion_cents: float, companion: Mapping[Register, float]
 ) -> Clue:
     """Weigh a pitch against another tone of the same fingering, whose register is known by probability."""
-    above = _LADDER_ABOVE if fingering.is_ladder else _FORKED_ABOVE
+    above = LADDER_ABOVE if fingering.is_ladder else FORKED_ABOVE
     interval = pitch_cents - companion_cents
     likelihood = dict.fromkeys(REGISTERS, _STRAY)
     for register in REGISTERS:
@@ -115,7 +115,7 @@ def companion_clue(
     return Clue(source="same fingering", likelihood=likelihood, detail=detail)
 
 
-def _smeared(x: float, low: float, high: float, spread: float) -> float:
+def smeared(x: float, low: float, high: float, spread: float) -> float:
     """Density per cent of a uniform stretch from low to high with normal uncertainty."""
     return (_phi((x - low) / spread) - _phi((x - high) / spread)) / (high - low)
 
