@@ -1,18 +1,23 @@
 """`fluteprobe plays` and `tuning`: what they print, write and answer, and their JSON by its schemas."""
 
 import json
+import re
 from pathlib import Path
 from typing import Any
 
 import jsonschema
 import pytest
 from click.testing import CliRunner, Result
+from musicxml_schema import faults
 from surveys import first_register_only, heron, nothing_heard, one_take, strange_words
 
 from fluteprobe.cli.main import main
+from fluteprobe.cli.played import moved
 from fluteprobe.repertoire.report import schema
 from fluteprobe.results import write_results
 from fluteprobe.score.midituning import tuned_keys
+from fluteprobe.score.reading import read_tune, score_in
+from fluteprobe.score.tune import tune_of
 
 REEDS = Path(__file__).parent.parent / "samples" / "tunes" / "reeds.musicxml"
 SURVEYS = {
@@ -113,12 +118,42 @@ def test_a_tune_as_a_table() -> None:
     assert "As written:" in lines
     assert "A4: bar 1 beat 1, bar 8 beat 1" in lines
     assert max(map(len, lines)) <= 80
-    moved = plays("coot", "--tune", REEDS, "--transpose", "-2")["flutes"][0]["tune"]
-    assert moved["transpositions"][0]["semitones"] == -2
-    assert moved["short"][0] == {
+    down = plays("coot", "--tune", REEDS, "--transpose", "-2")["flutes"][0]["tune"]
+    assert down["transpositions"][0]["semitones"] == -2
+    assert down["short"][0] == {
         "bar": "1", "beat": 1.0, "start_quarters": 0.0, "written": "A4", "sounds": "G4",
     }  # fmt: skip
-    assert [short["written"] for short in moved["short"]].count("F#5") == 1
+    assert [short["written"] for short in down["short"]].count("F#5") == 1
+
+
+def test_a_tune_is_written_where_it_fits_best() -> None:
+    told = run("plays", "coot", "--tune", REEDS, "--write")
+    assert told.exit_code == 0
+    assert told.stderr == "Wrote reports/coot/reeds-fingered.musicxml\n"
+    content = Path("reports/coot/reeds-fingered.musicxml").read_bytes()
+    assert faults(content) == []
+    best = plays("coot", "--tune", REEDS)["flutes"][0]["tune"]["transpositions"][0]["semitones"]
+    assert f"Moved {moved(best)}:" in told.stdout
+    back, tune = tune_of(score_in(content)), read_tune(REEDS)
+    assert [n.pitch_semitones - best for n in back.notes] == [n.pitch_semitones for n in tune.notes]
+    assert re.search(rb"<text>[xo]{6}</text>", content)
+    assert "<text>–</text>".encode() in content  # what falls short
+
+
+def test_a_tune_for_several_flutes_has_a_folder_for_each() -> None:
+    assert run("plays", "coot", "heron", "--tune", REEDS, "--write", "--out", "here").exit_code == 0
+    assert sorted(map(str, Path("here").rglob("*.musicxml"))) == [
+        "here/coot/reeds-fingered.musicxml",
+        "here/heron/reeds-fingered.musicxml",
+    ]
+    assert run("plays", "coot", "--tune", REEDS, "--write", "--out", "there").exit_code == 0
+    assert [path.name for path in Path("there").iterdir()] == ["reeds-fingered.musicxml"]
+
+
+def test_a_tune_that_is_moved_off_the_paper_is_told() -> None:
+    told = run("plays", "coot", "--tune", REEDS, "--write", "--transpose", "100")
+    assert told.exit_code == 1
+    assert told.stderr == ("Error: moved so far the tune cannot be written: a score holds octaves 0 to 9\n")
 
 
 def test_a_tune_with_several_parts_is_a_caution() -> None:
@@ -152,7 +187,7 @@ def test_a_tune_with_several_parts_is_a_caution() -> None:
             f"Error: {REEDS}: it has no part '\\x1b[1mloud', expected one of 1 Flute",
             1,
         ),
-        (["--part", "1"], "Error: --part and --transpose need a --tune.", 2),
+        (["--part", "1"], "Error: --part, --transpose and --write need a --tune.", 2),
         (
             ["--tonic", "H"],
             "Error: Invalid value for '--tonic': 'H' is no note, expected A to G, with # or b if need be.",

@@ -97,6 +97,15 @@ def test_parts_are_tracks_and_channels_and_the_drums_are_none() -> None:
         tune_of(read_midi(content), "3")
 
 
+@pytest.mark.parametrize("encoding", ["utf-8", "latin-1"])
+def test_a_first_track_without_notes_names_the_tune(encoding: str) -> None:
+    # Standard MIDI Files 1.0: the name of the first track of a format 1 file is that of the whole.
+    head = mido.MidiTrack([mido.MetaMessage("track_name", name="Über den Rohren")])
+    file = mido.MidiFile(type=1, tracks=[head, melody(TUNE)], charset=encoding)
+    assert tune_of(read_midi(saved(file))).title == "Über den Rohren"
+    assert tune_of(read_midi(saved(mido.MidiFile(type=0, tracks=[melody(TUNE)])))).title is None
+
+
 def test_one_track_with_two_channels_has_two_parts() -> None:
     track = melody(TUNE)
     track += melody([(0.0, 1.0, 40.0)], channel=3)
@@ -161,6 +170,26 @@ def test_more_notes_than_a_tune_has_are_refused() -> None:
     content = b"MThd\0\0\0\6\0\0\0\1\1\xe0MTrk" + len(events).to_bytes(4) + events
     with pytest.raises(ScoreError, match=r"^it has more than 100000 notes: export the melody alone$"):
         read_midi(content)
+
+
+SEED = saved(mido.MidiFile(type=1, tracks=[melody(TUNE, track_name={"name": "a"}), melody(TUNE, channel=2)]))
+
+
+@settings(max_examples=300)
+@given(
+    st.lists(st.tuples(st.integers(0, 160), st.integers(0, 9), st.binary(max_size=5)), min_size=1, max_size=4)
+)
+def test_a_damaged_file_is_read_or_told_in_one_line(cuts: list[tuple[int, int, bytes]]) -> None:
+    content = bytearray(SEED)
+    for start, length, put in cuts:
+        content[start : start + length] = put
+    try:
+        notes = tune_of(read_midi(bytes(content))).notes
+    except ScoreError as error:
+        assert "\n" not in str(error)  # noqa: PT017  (either way is right)
+    else:
+        assert all(0.0 <= note.pitch_semitones <= 127.0 for note in notes)
+        assert all(note.duration_quarters >= 0.0 and note.beat >= 1.0 for note in notes)
 
 
 # Writing -----------------------------------------------------------------------------------------------

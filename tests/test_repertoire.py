@@ -6,6 +6,7 @@ Surveys are made up; they prove nothing about flutes.
 from dataclasses import replace
 from math import log2
 
+import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
@@ -16,7 +17,7 @@ from fluteprobe.flute.register import Register
 from fluteprobe.flute.scales import named_scale, tonic_of
 from fluteprobe.repertoire.best_a4 import REACH_CENTS, best_offset_cents
 from fluteprobe.repertoire.scales import ScaleFit, best_first, scale_fit
-from fluteprobe.repertoire.sounds import Compass, Standard, conformance, sounds_of
+from fluteprobe.repertoire.sounds import SURE, UNLIKELY, Compass, Standard, conformance, sounds_of
 
 MAJOR = named_scale("major")
 WITHIN_20 = Standard(tolerance_cents=20.0, a4_hz=440.0)
@@ -48,6 +49,21 @@ def test_conformance_is_that_of_the_normal_distribution(off: float, u: float, to
     # JCGM 106:2012, 7.4: the share of the distribution of the true value inside the tolerance interval.
     expected = norm.cdf((tolerance - off) / u) - norm.cdf((-tolerance - off) / u)
     assert conformance(off, u, tolerance) == pytest.approx(expected, abs=1e-9)
+
+
+def test_surely_keeps_its_word() -> None:
+    """Of notes called surely in tune, at least 95 % are, where nothing is known of flutes beforehand."""
+    draw = np.random.default_rng(8)
+    true = draw.uniform(-100.0, 100.0, 40_000)
+    uncertainty = draw.uniform(0.5, 8.0, true.size)
+    measured = true + uncertainty * draw.standard_normal(true.size)
+    told = np.array([conformance(m, u, 20.0) for m, u in zip(measured, uncertainty, strict=True)])
+    in_tune = np.abs(true) <= 20.0
+    assert in_tune[told >= SURE].mean() > 0.98  # most are far inside
+    assert in_tune[told < UNLIKELY].mean() < 0.005
+    for low in np.arange(0.05, 0.95, 0.1):  # and in between the probability is the share: 400 and more in a bin
+        some = (told >= low) & (told < low + 0.1)
+        assert in_tune[some].mean() == pytest.approx(told[some].mean(), abs=0.08)  # 3 standard errors
 
 
 @pytest.mark.parametrize(

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
-from fluteprobe.cli.options import A4_HZ, FOLDER, json_option
+from fluteprobe.cli.options import A4_HZ, FOLDER, json_option, out_option
 
 if TYPE_CHECKING:
     from fluteprobe.flute.scales import Scale
@@ -91,6 +91,12 @@ def _tonics(ctx: click.Context, param: click.Parameter, given: tuple[str, ...]) 
     help="Show the tune moved by so many semitones up, 0 as written.  [default: where it fits best]",
 )
 @click.option(
+    "--write",
+    "is_written",
+    is_flag=True,
+    help="Write the tune so moved as MusicXML, with the fingerings below its notes.",
+)
+@click.option(
     "--tolerance",
     "tolerance_cents",
     type=click.FloatRange(0.0, 50.0, min_open=True),
@@ -101,6 +107,7 @@ def _tonics(ctx: click.Context, param: click.Parameter, given: tuple[str, ...]) 
 @click.option("--a4-hz", type=A4_HZ, metavar="HZ", help="The A4 to play at.  [default: the session's]")
 @click.option("--best-a4", is_flag=True, help="Let A4 move to where the flute fits best.")
 @click.option("--all", "show_all", is_flag=True, help="Show keys and transpositions that do not work, too.")
+@out_option
 @json_option
 @click.pass_context
 def plays(  # noqa: PLR0913, PLR0917  (click passes every option by name)
@@ -111,10 +118,12 @@ def plays(  # noqa: PLR0913, PLR0917  (click passes every option by name)
     tune: Path | None,
     part: str | None,
     semitones: int | None,
+    is_written: bool,
     tolerance_cents: float,
     a4_hz: float | None,
     best_a4: bool,
     show_all: bool,
+    out: Path | None,
     as_json: bool,
 ) -> None:
     """Tell what measured flutes can play: session folders or measurements.json files.
@@ -134,8 +143,8 @@ def plays(  # noqa: PLR0913, PLR0917  (click passes every option by name)
     from fluteprobe.results import json_text
     from fluteprobe.session import SessionError
 
-    if tune is None and (part is not None or semitones is not None):
-        raise click.UsageError("--part and --transpose need a --tune.")
+    if tune is None and (part is not None or semitones is not None or is_written):
+        raise click.UsageError("--part, --transpose and --write need a --tune.")
     names = () if tune is not None and not tonics else NAMES
     wish = Wish(
         scales=scales or tuple(named_scale(name) for name in names),
@@ -161,6 +170,10 @@ def plays(  # noqa: PLR0913, PLR0917  (click passes every option by name)
         )
     for caution in () if wish.tune is None else wish.tune.cautions:
         screen.say(f"Caution: {caution}", err=True)
+    if is_written and tune is not None:
+        for name, answer in zip(sources.names, answers, strict=True):
+            folder = Path("reports", name) if out is None else out / name if len(answers) > 1 else out
+            screen.tell_written(_written(wish, answer, tune.stem, folder))
     ctx.exit(1 if sources.faults else 0)
 
 
@@ -205,6 +218,26 @@ def _tune(path: Path, part: str | None) -> "Tune":
     except OSError as error:
         raise SessionError(f"{printable(str(path))} cannot be read: {error.strerror}") from None
     return tune
+
+
+def _written(wish: Wish, answer: Answer, name: str, folder: Path) -> list[Path]:
+    """Write the tune as it is told first, and return its path; of a flute that never spoke there is none."""
+    from fluteprobe.files import make_folder, replace_files
+    from fluteprobe.repertoire.tunes import tune_xml
+    from fluteprobe.score.tune import ScoreError
+    from fluteprobe.session import SessionError
+
+    _, _, fits = answer
+    if wish.tune is None or not fits:
+        return []
+    try:
+        content = tune_xml(wish.tune, fits[0], wish.tune.title or name)
+    except ScoreError as error:
+        raise SessionError(str(error)) from None
+    make_folder(folder)
+    path = folder / f"{name}-fingered.musicxml"
+    replace_files({path: content})
+    return [path]
 
 
 def _as_json(

@@ -11,8 +11,10 @@ from dataclasses import dataclass
 from itertools import pairwise
 from math import ceil, floor, sqrt
 
+from fluteprobe.flute.tuning import Note
 from fluteprobe.repertoire.scales import suited_offset_cents
 from fluteprobe.repertoire.sounds import Compass, Match, Sound, Standard
+from fluteprobe.score.annotated import AnnotatedNote, annotated_xml
 from fluteprobe.score.tune import ScoreError, Tune, TuneNote
 
 MOST_PITCHES = 400
@@ -76,6 +78,37 @@ def short_notes(tune: Tune, fit: TuneFit) -> tuple[TuneNote, ...]:
     """Return the notes that cannot be played, as the score has them, in the order of time."""
     missing = {match.target_semitones for match in fit.matches if match.grade == "not"}
     return tuple(note for note in tune.notes if note.pitch_semitones + fit.semitones in missing)
+
+
+def tune_xml(tune: Tune, fit: TuneFit, title: str) -> bytes:
+    """Return a tune in one transposition as a MusicXML score, the best fingering below each note.
+
+    A fingering that is only perhaps in tune has a question mark below it; a note that falls short a dash.
+    Pitches are those of the nearest equal-tempered notes.
+
+    Raises
+    ------
+    ScoreError
+        If a note is moved out of the ten octaves that a score can hold.
+    """
+    words = {match.target_semitones: _words(match) for match in fit.matches}
+    notes = [
+        AnnotatedNote(
+            note=note,
+            sounds=Note(round(note.pitch_semitones + fit.semitones)),
+            words=words[note.pitch_semitones + fit.semitones],
+        )
+        for note in tune.notes
+    ]
+    if not all(0 <= each.sounds.octave <= 9 for each in notes):
+        raise ScoreError("moved so far the tune cannot be written: a score holds octaves 0 to 9")
+    return annotated_xml(notes, title=title, part=tune.part)
+
+
+def _words(match: Match) -> tuple[str, ...]:
+    if not match.ways:
+        return ("–",)
+    return (str(match.ways[0].sound.fingering), "?" if match.grade == "perhaps" else "")
 
 
 def finger_moves(one: Sound, other: Sound) -> int:

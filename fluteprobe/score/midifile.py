@@ -72,7 +72,7 @@ def read_midi(content: bytes) -> Score:
     bars = _Bars([each for track in tracks for each in track.signatures], ticks_per_quarter)
     whole = bool(tracks) and all(track.is_whole for track in tracks)
     return Score(
-        title=None,
+        title=tracks[0].name or None if tracks and not tracks[0].notes else None,
         parts=tuple(part for k, track in enumerate(tracks, start=1) for part in _parts(track, k, bars)),
         legato_share=LEGATO_SHARE,
         cautions=() if whole else ("the file ends early: it was read as far as it goes",),
@@ -151,10 +151,18 @@ def _take_other(  # noqa: PLR0913, PLR0917  (a place in a chunk is several numbe
     elif kind == _END_OF_TRACK:
         return -1
     elif kind == _TRACK_NAME and not track.name:
-        track.name = data[:200].decode("utf-8", "replace").strip()
+        track.name = _text(data[:200])
     elif kind == _TIME_SIGNATURE and length >= 2 and data[0] > 0 and data[1] <= 10:
         track.signatures.append((tick, data[0], 1 << data[1]))
     return place + length
+
+
+def _text(data: bytes) -> str:
+    """Return a name; the standard names no encoding, so UTF-8 where it is, else Latin-1."""
+    try:
+        return data.decode("utf-8").strip()
+    except UnicodeDecodeError:
+        return data.decode("latin-1").strip()
 
 
 def _take_channel(  # noqa: PLR0913, PLR0917
