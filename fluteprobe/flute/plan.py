@@ -31,7 +31,8 @@ class PlannedTake:
     """One take to record: the fingering, how to blow it, and why it is worth a file.
 
     `group` is the title of the takes it belongs to, `why` their reason in a sentence, `basis` what the reason
-    rests on. `number` is 2 for a take that repeats an earlier one.
+    rests on. `number` is 2 for a take that repeats an earlier one. `expects` says what it should give, where
+    that is known.
     """
 
     fingering: Fingering
@@ -40,6 +41,7 @@ class PlannedTake:
     why: str
     basis: str
     number: int = 1
+    expects: str = ""
 
     @property
     def stem(self) -> str:

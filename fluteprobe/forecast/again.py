@@ -9,7 +9,7 @@ from fluteprobe.forecast.values import Forecast, Prediction
 
 MOST_TAKES = 24
 
-_BASIS = "foretold: estimates"
+_BASIS = "estimates: the note, cents off it ± standard uncertainty, and how likely it speaks"
 _FILLING = ("New notes", "Each would give a note above the first register that nothing played so far gives.")
 _OTHERS = ("Other ways", "Likely to speak: other fingerings for notes that are there, or nearly in tune.")
 

@@ -116,23 +116,34 @@ class _Line:
 
 
 def write_sheet(
-    session: Session, target: File, *, edition: str = "standard", paper: str = "a4"
+    session: Session,
+    target: File,
+    *,
+    edition: str = "standard",
+    paper: str = "a4",
+    plan: Sequence[PlannedTake] | None = None,
 ) -> tuple[File, ...]:
     """Write a session's take sheet as PDF, PNG or SVG, by the target's suffix, and return the files written.
 
-    Takes that the session has already are ticked.
+    Takes that the session has already are ticked. A `plan` of its own stands in the place of an edition's.
 
     Raises
     ------
     ValueError
         If the edition, the paper or the suffix is not known.
     """
-    pages = sheet_figures(session, edition=edition, paper=paper)
+    pages = sheet_figures(session, edition=edition, paper=paper, plan=plan)
     title = f"{_name(session)}: take sheet"
     return save_pages(pages, target, title=title, author=clean(session.flute.maker or "") or None)
 
 
-def sheet_figures(session: Session, *, edition: str = "standard", paper: str = "a4") -> list[Figure]:
+def sheet_figures(
+    session: Session,
+    *,
+    edition: str = "standard",
+    paper: str = "a4",
+    plan: Sequence[PlannedTake] | None = None,
+) -> list[Figure]:
     """Return the pages of a session's take sheet as figures.
 
     Raises
@@ -140,9 +151,9 @@ def sheet_figures(session: Session, *, edition: str = "standard", paper: str = "
     ValueError
         If the edition or the paper is not known.
     """
-    plan = take_plan(session.flute.holes, edition)
+    takes = take_plan(session.flute.holes, edition) if plan is None else plan
     with house_style():
-        return _figures(session, plan, edition, paper)
+        return _figures(session, takes, f"{edition} edition" if plan is None else "what to try next", paper)
 
 
 def recorded(plan: Sequence[PlannedTake], takes: Iterable[Take]) -> tuple[bool, ...]:
@@ -162,11 +173,11 @@ def minutes(plan: Sequence[PlannedTake]) -> int:
 # --- pages -------------------------------------------------------------------------------------------
 
 
-def _figures(session: Session, plan: Sequence[PlannedTake], edition: str, paper: str) -> list[Figure]:
+def _figures(session: Session, plan: Sequence[PlannedTake], which: str, paper: str) -> list[Figure]:
     width, height = paper_size_mm(paper)
     column = 0.5 * (width - 2.0 * MARGIN_MM - _BETWEEN_MM)
     opening = [_directions(column), _blanks(session, width - 2.0 * MARGIN_MM)]
-    head, top = _head(session, plan, edition), draw_head(Page(paper), Head(title="", kind="", facts=""))
+    head, top = _head(session, plan, which), draw_head(Page(paper), Head(title="", kind="", facts=""))
     room = height - MARGIN_MM - _KEY_MM - top
     rooms = [room - _height_mm(opening), room]
     columns = _levelled(_columns(_lines(session, plan, column), rooms), rooms)
@@ -181,14 +192,14 @@ def _figures(session: Session, plan: Sequence[PlannedTake], edition: str, paper:
     return pages
 
 
-def _head(session: Session, plan: Sequence[PlannedTake], edition: str) -> Head:
+def _head(session: Session, plan: Sequence[PlannedTake], which: str) -> Head:
     done = sum(recorded(plan, session.takes))
     there = f", {done} recorded" if done else ""
     holes = session.flute.holes
     return Head(
         title=_name(session),
         kind="take sheet",
-        facts=f"{edition} edition  ·  {holes} hole{'' if holes == 1 else 's'}",
+        facts=f"{which}  ·  {holes} hole{'' if holes == 1 else 's'}",
         summary=f"{len(plan)} takes{there}  ·  about {minutes(plan)} minutes",
     )
 
@@ -315,14 +326,15 @@ def _draw_blanks(
 def _lines(session: Session, plan: Sequence[PlannedTake], column: float) -> list[_Line]:
     ticks, holes = recorded(plan, session.takes), session.flute.holes
     voice = LONG_FILE_NAME if holes >= LONG_FROM_HOLES else FILE_NAME
-    size = _flute_size(holes, column, voice)
+    expects = max((width_mm(take.expects, SMALL) for take in plan), default=0.0)
+    size = _flute_size(holes, column - expects, voice)
     numbered = list(zip(range(1, len(plan) + 1), plan, ticks, strict=True))
     lines: list[_Line] = []
     for _, takes in groupby(numbered, key=lambda item: item[1].group):
         group = list(takes)
         lines.append(_heading(group[0][1], column))
         for number, take, done in group:
-            draw = partial(_draw_take, take, number, done, size, voice)
+            draw = partial(_draw_take, take, number, done, size, voice, column)
             lines.append(_Line(height_mm=_TAKE_MM, draw=draw))
     return lines
 
@@ -361,6 +373,7 @@ def _draw_take(  # noqa: PLR0913, PLR0917 - a line's contents and its place
     done: bool,
     size: FluteSize,
     voice: Type,
+    column: float,
     page: Page,
     left: float,
     top: float,
@@ -375,6 +388,7 @@ def _draw_take(  # noqa: PLR0913, PLR0917 - a line's contents and its place
     for k, state in enumerate(take.fingering.states):
         draw_hole(page, flute + hole_depth_mm(size, k, holes), y, size.hole_mm, state)
     page.text(flute + length + 3.0, y + 1.2, take.file_name, voice)
+    page.text(left + column, y + 1.1, take.expects, SMALL, align="right", colour=QUIET)
 
 
 def _draw_box(page: Page, x: float, y: float, done: bool) -> None:
