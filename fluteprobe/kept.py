@@ -31,7 +31,7 @@ SPARE = 100  # how many are kept of recordings that are not in the session now
 _BLOCK_BYTES = 2**20
 _LARGEST_BYTES = 20_000_000
 _NAME = re.compile(r"[0-9a-f]{32}\.json")
-_CODE = ("sound/*.py", "hearing.py", "kept.py", "fields.py")
+_CODE = ("sound/**/*.py", "hearing.py", "kept.py", "fields.py")
 _LIBRARIES = frozenset({"numpy", "soundfile", "soxr", "av"})
 
 Stamp = tuple[int, ...]
