@@ -82,6 +82,9 @@ def test_a_scale_as_a_table() -> None:
         "0 2 4 6 8 10",
         "  tonic  octave  unbroken     doubtful  not",
         "  D      yes     7: D4 to D5  –         –",
+        "",
+        "octave: from tonic to tonic; unbroken: the longest row of neighbouring notes;",
+        "doubtful: perhaps within the tolerance; not: cannot be played",
     ]
 
 

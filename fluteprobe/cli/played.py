@@ -46,7 +46,9 @@ def scales_told(fits: Sequence[ScaleFit], *, show_all: bool) -> str:
     blocks = []
     for scale, group in groupby(fits, key=lambda fit: fit.scale):
         blocks.append("\n".join([_title(scale), *_keys(list(group), show_all=show_all)]))
-    return "\n\n".join(blocks)
+    told = "octave: from tonic to tonic; unbroken: the longest row of neighbouring notes; doubtful: "
+    told += "perhaps within the tolerance; not: cannot be played"
+    return "\n\n".join([*blocks, "\n".join(wrap(told, WIDTH))])
 
 
 def _title(scale: Scale) -> str:
