@@ -1,6 +1,8 @@
 """Session folders: what is read where, what is a take, and every way in which a folder may be wrong."""
 
 import os
+import subprocess
+import sys
 import tomllib
 import unicodedata
 from contextlib import suppress
@@ -367,6 +369,24 @@ def test_an_existing_folder_is_completed_and_nothing_is_overwritten(tmp_path: Pa
         create_session(folder, FluteFacts(name="Other", holes=5))
     assert str(caught.value) == (f"{folder / 'flute.toml'} exists already: edit it, or choose another folder")
     assert (folder / "flute.toml").read_bytes() == before
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="Windows has no limit on the size of files")
+def test_a_flute_toml_that_cannot_be_written_whole_is_not_left_behind(tmp_path: Path) -> None:
+    code = (
+        "import resource, signal\n"
+        "from fluteprobe.session import FluteFacts, create_session\n"
+        "signal.signal(signal.SIGXFSZ, signal.SIG_IGN)\n"
+        "resource.setrlimit(resource.RLIMIT_FSIZE, (100, 100))\n"
+        "create_session('new', FluteFacts(name='A', holes=6))\n"
+    )
+    told = subprocess.run(
+        [sys.executable, "-c", code], cwd=tmp_path, capture_output=True, text=True, check=False
+    )
+    assert told.stderr.splitlines()[-1] == (
+        "fluteprobe.session.words.SessionError: new cannot be made: File too large"
+    )
+    assert sorted(path.name for path in (tmp_path / "new").iterdir()) == ["takes"]
 
 
 def test_a_file_in_the_way_and_values_out_of_range_are_told(tmp_path: Path) -> None:

@@ -39,13 +39,14 @@ _TEMPERATURE = Fact("session", "air_temperature_c")
 def _hole_pairs(_ctx: click.Context, _param: click.Parameter, words: tuple[tuple[str, str], ...]) -> Any:
     """Return each hole's distance and diameter, top hole first, None where none were typed."""
     from fluteprobe.session.keys import KEYS, UnfitError, number_in
+    from fluteprobe.session.words import shown
 
     if not words:
         return None
     try:
         return KEYS["flute"]["holes_mm"].read([[number_in(word) for word in pair] for pair in words])
     except UnfitError as error:
-        found = ", ".join(" ".join(pair) for pair in words)
+        found = shown(", ".join(" ".join(pair) for pair in words))
         raise click.BadParameter(f"found {found}, expected {error}") from None
 
 
