@@ -4,25 +4,29 @@ import csv
 import io
 import json
 from importlib.resources import files
-from pathlib import Path
 from typing import Any
 
 import jsonschema
 import pytest
 from classes import KEYS, flute
+from hypothesis import given, settings
+from hypothesis import strategies as st
 
 from fluteprobe.compare import compare
 from fluteprobe.compare.contract import CSV_FIELDS, comparison_csv, comparison_json
 from fluteprobe.compare.values import Comparison
+from fluteprobe.survey import Survey
 
 ROWS = len(KEYS)
-TOP = Path(__file__).parent.parent
 
 
 def schema() -> dict[str, Any]:
     text = files("fluteprobe").joinpath("schema", "comparison-1.schema.json").read_text(encoding="utf-8")
     found: dict[str, Any] = json.loads(text)
     return found
+
+
+VALIDATOR = jsonschema.Draft202012Validator(schema())
 
 
 def players() -> Comparison:
@@ -95,3 +99,34 @@ def test_a_label_is_no_formula_and_has_no_control_characters() -> None:
     made = compare([flute("=1+1", [0.0] * ROWS), flute("a\x1b[31m", [0.0] * ROWS)])
     lines = list(csv.DictReader(io.StringIO(comparison_csv(made))))
     assert {line["flute"] for line in lines} == {"'=1+1", "a\\x1b[31m"}
+
+
+# --- any surveys -------------------------------------------------------------------------------------
+
+ANY_FLUTE = st.builds(
+    flute,
+    st.sampled_from(["Wren", "Coot", "Rail"]),
+    st.dictionaries(st.sampled_from(KEYS), st.floats(-300.0, 300.0), max_size=ROWS),
+    st.sampled_from([0.0, 0.4, 3.0, 400.0]),
+    player=st.sampled_from([None, "Ada", "Bela", "Cleo"]),
+    date=st.sampled_from([None, "2024-01-10", "2024-07-02", "2025-01-20", "spring"]),
+    air_temperature_c=st.sampled_from([None, 0.0, 17.0, 26.0]),
+    a4_hz=st.sampled_from([415.0, 440.0]),
+)
+
+
+@given(st.lists(ANY_FLUTE, min_size=2, max_size=6), st.sampled_from([None, "fingering", "note"]))
+@settings(max_examples=60)
+def test_any_surveys_compare_to_json_by_the_schema(surveys: list[Survey], by: Any) -> None:
+    values = json.loads(json.dumps(comparison_json(compare(surveys, by=by)), allow_nan=False))
+    VALIDATOR.validate(values)
+    comparison_csv(compare(surveys, by=by))
+
+
+@given(st.lists(ANY_FLUTE, min_size=2, max_size=2))
+@settings(max_examples=40)
+def test_the_other_way_round_a_difference_has_the_other_sign(surveys: list[Survey]) -> None:
+    there, back = (compare(pair, by="fingering", a4_hz=440.0) for pair in (surveys, surveys[::-1]))
+    for one, other in zip(there.pairs, back.pairs, strict=True):
+        assert [d.cents for d in one.differences] == pytest.approx([-d.cents for d in other.differences])
+        assert [d.verdict for d in one.differences] == [d.verdict for d in other.differences]

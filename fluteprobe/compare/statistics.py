@@ -208,9 +208,8 @@ def two_way(
 
     `block` and `column` number each value's, from 0 without gaps, shape (values,). Columns that share no
     block, not even through others, are in different groups: nothing can be told of their difference. The
-    blocks are eliminated from the normal equations, whose least-norm solution is the one that adds up to zero
-    (Scheffé, The Analysis of Variance, 1959, ch. 4). The columns rest on the values `kept`, whole blocks;
-    blocks are told by all.
+    blocks are eliminated from the normal equations (Scheffé, The Analysis of Variance, 1959, ch. 4). The
+    columns rest on the values `kept`, whole blocks; blocks are told by all.
     """
     weights = _weights(uncertainties)
     kept = np.ones(len(values), dtype=np.bool_) if kept is None else kept
@@ -218,13 +217,12 @@ def two_way(
     per_block = table.sum(axis=1)
     shares = table / per_block[:, None]
     steady = kept[np.unique(block, return_index=True)[1]]
-    normal = np.diag(table[steady].sum(axis=0)) - table[steady].T @ shares[steady]
-    wanted = np.bincount(column[kept], (weights * values)[kept], table.shape[1])
-    spread = np.linalg.pinv(normal, rcond=1e-10, hermitian=True)
-    columns = spread @ (wanted - shares[steady].T @ totals[steady])
+    group = _groups(table[steady] > 0.0)
+    spread = _spread(table[steady], shares[steady], group)
+    away = weights * (values - (totals / per_block)[block])
+    columns = spread @ np.bincount(column[kept], away[kept], table.shape[1])
     blocks = (totals - table @ columns) / per_block
     rest = values - blocks[block] - columns[column]
-    group = _groups(table[steady] > 0.0)
     freedom = int(kept.sum()) - int(steady.sum()) - (table.shape[1] - int(group.max()) - 1)
     ratio = birge_ratio(rest[kept], uncertainties[kept], freedom)
     apart = np.eye(table.shape[1])[column] - shares[block]
@@ -233,7 +231,7 @@ def two_way(
     block_variance = 1.0 / per_block + np.einsum("bi,ij,bj->b", shares, spread, shares)
     return TwoWay(
         block=blocks,
-        block_uncertainty=ratio * np.sqrt(block_variance),
+        block_uncertainty=ratio * np.sqrt(np.maximum(block_variance, 0.0)),
         column=columns,
         column_uncertainty=ratio * np.sqrt(np.maximum(np.diag(spread), 0.0)),
         rest=rest,
@@ -283,6 +281,23 @@ def _nanmedian(values: Reals) -> Reals:
     last = ordered.shape[-1] - 1
     pair = [np.take_along_axis(ordered, np.minimum(k, last)[..., None], axis=-1)[..., 0] for k in (low, high)]
     return np.where(count > 0, 0.5 * (pair[0] + pair[1]), nan)
+
+
+def _spread(table: Reals, shares: Reals, group: Wholes) -> Reals:
+    """Return the covariance of columns that add up to zero in each group, (columns, columns).
+
+    The normal matrix has each group's sum as its null space, which is filled up before it is inverted and
+    taken off again. Its diagonal is added up from the rest, for weights of very different size would cancel.
+    """
+    normal = -(table.T @ shares)
+    np.fill_diagonal(normal, 0.0)
+    diagonal = -normal.sum(axis=1)
+    same = group[:, None] == group[None, :]
+    project = same / same.sum(axis=1)[:, None]
+    scale = project @ diagonal
+    scale = np.where(scale > 0.0, scale, 1.0)  # a column that is a group by itself
+    filled = normal + np.diag(diagonal) + scale[:, None] * project
+    return np.asarray(np.linalg.inv(filled) - project / scale[:, None])
 
 
 def _sums(weights: Reals, values: Reals, block: Wholes, column: Wholes) -> tuple[Reals, Reals]:
