@@ -93,6 +93,13 @@ def test_every_usual_encoding_is_read_and_every_file_system_s_spelling(
     assert (fingering, breath, number) == ("oxxxxx", "soft", 1)
 
 
+def test_a_name_that_may_be_two_files_is_told(heron: Path) -> None:
+    put(heron, "b.wav")
+    told_of = "column file: b may be b.flac or b.wav: write it in full"
+    assert told(heron, "file,fingering\nb,oxxxxx\nB.wav,xxxxxo\n") == [("takes.csv line 2", told_of)]
+    assert used(heron) == [("takes/b.wav", "xxxxxo", "normal", 1)]
+
+
 def test_text_with_the_separator_in_it_stands_in_quotes(heron: Path) -> None:
     put(heron, "low, then high.wav")
     write(heron, 'file,fingering\n"low, then high.wav",oxxxxx\n')

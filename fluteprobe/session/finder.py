@@ -34,7 +34,7 @@ class Finder:
         Raises
         ------
         UnfitNameError, UnfitFileError
-            If nothing is written, what is leads out of the folder, or there is no such file.
+            If nothing is written, what is leads out of the folder, or there is no such file or several.
         """
         parts = [part for part in text.replace("\\", "/").split("/") if part not in {"", "."}]
         if not parts:
@@ -50,7 +50,13 @@ class Finder:
         return next((path for path in found if self._is_inside(path)), found[0])
 
     def _walk(self, base: PurePosixPath, parts: Sequence[str]) -> PurePosixPath | None:
-        """Follow the parts of a path from a folder; stop where it leads out, None where it leads nowhere."""
+        """Follow the parts of a path from a folder; stop where it leads out, None where it leads nowhere.
+
+        Raises
+        ------
+        UnfitFileError
+            If it may be one of several.
+        """
         here = base
         for part in parts:
             if not self._is_inside(here):
@@ -59,7 +65,9 @@ class Finder:
             same = [part] if part in names else [name for name in names if same_name(name) == same_name(part)]
             if not same and part is parts[-1]:
                 same = [name for name in names if same_name(split_ending(name)[0]) == same_name(part)]
-            if len(same) != 1:
+            if len(same) > 1:
+                raise UnfitFileError(f"may be {' or '.join(map(shown, sorted(same)[:2]))}: write it in full")
+            if not same:
                 return None
             here /= same[0]
         return here
