@@ -9,7 +9,6 @@ message with control characters in it.
 from fluteprobe.session.facts import FluteFacts, Sitting, facts_text
 from fluteprobe.session.files import FACTS_FILE, LIST_FILE, TAKES_FOLDER
 from fluteprobe.session.folder import Session, Take, create_session, read_session, require_new
-from fluteprobe.session.keys import TEMPERATURE_RANGE_C
 from fluteprobe.session.names import parse_take_name
 from fluteprobe.session.words import Problem, SessionError, printable
 
@@ -17,7 +16,6 @@ __all__ = [
     "FACTS_FILE",
     "LIST_FILE",
     "TAKES_FOLDER",
-    "TEMPERATURE_RANGE_C",
     "FluteFacts",
     "Problem",
     "Session",
