@@ -13,6 +13,7 @@ standard normal (principal components: Jolliffe, Principal Component Analysis, 2
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import lru_cache
+from itertools import islice
 
 import numpy as np
 import numpy.typing as npt
@@ -25,7 +26,7 @@ Reals = npt.NDArray[np.float64]
 
 REGISTERS_KNOWN = 3
 
-_FLUTES = 40
+_FLUTES = 24
 _SEED = 20
 _TRIES = 40
 _LOWEST_HZ = 330.0  # of the flutes laid out; how low the flute really is stands apart
@@ -104,12 +105,13 @@ def _pitches(tube: Tube, openness: Reals) -> Reals:
     return np.asarray(cents)
 
 
-def _flutes(holes: int) -> list[Tube]:
+@lru_cache(maxsize=4)
+def _flutes(holes: int) -> tuple[Tube, ...]:
     """Return flutes laid out at random whose ladder rises by steps that are usual."""
     random = np.random.default_rng([_SEED, holes])
     drawn = (_drawn(holes, random) for _ in range(_TRIES * _FLUTES))
     usual = (tube for tube in drawn if tube is not None and _steps_are_usual(tube))
-    return [tube for tube, _ in zip(usual, range(_FLUTES), strict=False)]
+    return tuple(islice(usual, _FLUTES))
 
 
 def _steps_are_usual(tube: Tube) -> bool:

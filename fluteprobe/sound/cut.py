@@ -14,10 +14,11 @@ import numpy as np
 import soundfile
 from numpy.typing import NDArray
 
-from fluteprobe.sound.decoding import RecordingError, open_read_only
+from fluteprobe.sound.decoding import Decoder, RecordingError, open_read_only
 from fluteprobe.sound.recording import Recording
 
 _BLOCK_FRAMES = 2**16
+_LEAD_S = 0.5
 _MOST_FLAC_CHANNELS = 8
 _HIGHEST_FLAC_RATE_HZ = 655_350
 _FLAC_SUBTYPES = {"PCM_S8": "PCM_S8", "PCM_U8": "PCM_S8", "PCM_16": "PCM_16", "PCM_24": "PCM_24"}
@@ -84,10 +85,24 @@ def _frames(recording: Recording, first: int, last: int) -> Iterator[Frames]:
         yield from _wide_frames(recording, first, last)
         return
     with recording._again() as decoder:
+        if recording.lossy:
+            yield _lossy_frames(decoder, first, last)
+            return
         decoder.seek(first)
         while first < last and len(frames := decoder.read(min(_BLOCK_FRAMES, last - first))):
             yield frames
             first += len(frames)
+
+
+def _lossy_frames(decoder: Decoder, first: int, last: int) -> NDArray[np.float32]:
+    """Return frames of a lossy recording, in one go from half a second before.
+
+    An MP3 decoder needs what came before to find into the sound; so it does after each read, for soundfile
+    seeks then. Without this the first 70 ms would be silent.
+    """
+    lead = min(first, int(_LEAD_S * decoder.rate_hz))
+    decoder.seek(first - lead)
+    return decoder.read(last - first + lead)[lead:]
 
 
 def _wide_frames(recording: Recording, first: int, last: int) -> Iterator[Frames]:
