@@ -3,9 +3,9 @@
 Conventions: as in `joint`: pitches in cents above 1 Hz, resonances numbered from 1.
 
 The shape is found by least squares (scipy's trust-region solver, with a loss that forgives a false breath
-resonance): to the tones first, then also to the breath resonances, each by the resonance that it lies next
-to. Then all is taken once more as one Gaussian about that shape, everything correlated: that gives the
-covariance.
+resonance): to first-register tones first, then also to the breath resonances, each by the resonance that it
+lies next to. Then all is taken once more as one Gaussian about that shape, everything correlated: that
+gives the covariance.
 """
 
 from collections.abc import Sequence
@@ -70,7 +70,8 @@ def fitted(believed: Shape, heard: Sequence[Heard]) -> Fit:
     tones = [each for each in heard if each.is_tone]
     if not tones:
         raise ValueError("there is no tone to fit a tube to")
-    shape = _least_squares(believed, believed.values, tones)
+    surest = [each for each in tones if each.resonance == 1] or tones
+    shape = _least_squares(believed, believed.values, surest)
     used = tones
     for gate_cents in _GATES_CENTS:
         used = _numbered(heard, shape, gate_cents)
