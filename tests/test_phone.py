@@ -459,6 +459,24 @@ def test_an_absurd_number_of_channels_is_refused(tmp_path: Path, channels: int, 
     assert fault(path) == words
 
 
+def test_a_file_whose_start_an_edit_hides_begins_after_it(tmp_path: Path) -> None:
+    # Phones cut by an edit list (ISO/IEC 14496-12, section 8.6.6): all packets stay, the media time moves on.
+    truth = clicks(44_100, 4.0)
+    path = written(tmp_path / "take.m4a", truth)
+    content = bytearray(path.read_bytes())
+    at = content.find(b"elst") + 16
+    delay = int.from_bytes(content[at : at + 4], "big")
+    content[at : at + 4] = struct.pack(">I", delay + 44_100)
+    path.write_bytes(content)
+    assert late_by(whole(open_recording(path)), truth) == -44_100
+
+
+@pytest.mark.usefixtures("streamed")
+def test_more_than_a_day(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("fluteprobe.sound.phone.LONGEST_S", 0.9)
+    assert fault(written(tmp_path / "take.m4a")) == "longer than a day; cut it into shorter recordings"
+
+
 def test_samples_that_are_no_numbers_become_silence(tmp_path: Path) -> None:
     samples = tone(48_000)
     samples[1000:1003] = np.nan

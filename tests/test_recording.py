@@ -483,6 +483,16 @@ def test_too_short(tmp_path: Path) -> None:
     assert open_recording(written(tmp_path / "take.wav", tone(seconds=0.1))).duration_s == 0.1
 
 
+def test_more_than_a_day(tmp_path: Path) -> None:
+    path = written(tmp_path / "take.wav", tone(8000), 8000, subtype="PCM_U8")
+    size = 44 + 8000 * 90_000
+    content = bytearray(path.read_bytes())
+    content[4:8], content[40:44] = struct.pack("<I", size - 8), struct.pack("<I", size - 44)
+    path.write_bytes(content)
+    os.truncate(path, size)  # what is added takes no room on the disk
+    assert fault(path) == "longer than a day; cut it into shorter recordings"
+
+
 def test_no_samples_at_all(tmp_path: Path) -> None:
     words = "only 0.000 s of sound; at least 0.1 s are needed, 2 s are good"
     assert fault(written(tmp_path / "take.wav", np.zeros(0))) == words

@@ -18,11 +18,13 @@ Samples = NDArray[np.float32]
 
 FINEST_STEP = 2.0**-15
 HEAD_BYTES = 32
+LONGEST_S = 86_400.0
 _STANDARD_ERROR = 2
 
 CUT_OFF = "cut off: the file is shorter than its header says; copy or record it again"
 DAMAGED = "damaged: it cannot be read to its end; copy or record it again"
 NO_SOUND_FOUND = "damaged or cut off: no sound can be read from it; copy or record it again"
+TOO_LONG = "longer than a day; cut it into shorter recordings"
 PROTECTED = "copy-protected: it cannot be read; record it anew, or save an unprotected copy"
 
 

@@ -24,7 +24,9 @@ import numpy as np
 from fluteprobe.sound.decoding import (
     CUT_OFF,
     FINEST_STEP,
+    LONGEST_S,
     NO_SOUND_FOUND,
+    TOO_LONG,
     Decoder,
     RecordingError,
     Samples,
@@ -34,7 +36,6 @@ from fluteprobe.sound.decoding import (
 from fluteprobe.sound.track import Timed, Track, samples_of
 
 INSTALL = "python -m pip install 'fluteprobe[phone]'"
-LONGEST_S = 86_400.0
 
 _LOSSLESS = ("alac", "flac", "wmalossless", "pcm_u8", "pcm_s", "pcm_f")
 _HELD_VALUES = 2**25
@@ -123,15 +124,14 @@ class PhoneDecoder:
     step: float = FINEST_STEP
 
     def __init__(self, path: Path, index: PhoneIndex | None = None) -> None:
-        self._descriptor = open_read_only(path)
+        self._track = Track(path, is_checked=index is not None)
         self._held: list[Timed] | None = None
         self._left: Samples = np.empty((0, 1), np.float32)
         self._pieces: Iterator[Samples] | None = None
         try:
-            self._track = Track(self._descriptor)
             self.index = self._surveyed() if index is None else index
         except BaseException:
-            os.close(self._descriptor)
+            self._track.close()
             raise
         self.rate_hz: int = self.index.rate_hz
         self.frames: int = self.index.frames
@@ -149,7 +149,6 @@ class PhoneDecoder:
     ) -> None:
         self._pieces, self._held = None, None
         self._track.close()
-        os.close(self._descriptor)
 
     def read(self, frames: int) -> Samples:
         """Read the next frames, shape (frames, channels); fewer where the file ends."""
@@ -201,7 +200,7 @@ class PhoneDecoder:
             else:
                 held.clear()
             if count > LONGEST_S * track.rate_hz:
-                raise RecordingError("longer than a day; cut it into shorter recordings")
+                raise RecordingError(TOO_LONG)
         if not count:
             raise RecordingError(NO_SOUND_FOUND)
         self._held = held or None

@@ -16,7 +16,15 @@ from pathlib import Path
 import numpy as np
 
 from fluteprobe.sound.channels import LEAST_CLIPPED_SHARE, Choice, choose_channel
-from fluteprobe.sound.decoding import DAMAGED, Decoder, RecordingError, Samples, UnknownKindError
+from fluteprobe.sound.decoding import (
+    DAMAGED,
+    LONGEST_S,
+    TOO_LONG,
+    Decoder,
+    RecordingError,
+    Samples,
+    UnknownKindError,
+)
 from fluteprobe.sound.soundfiles import SoundFileDecoder
 
 __all__ = ["LOWEST_RATE_HZ", "SHORTEST_S", "Recording", "RecordingError", "Samples", "open_recording"]
@@ -209,6 +217,8 @@ def _keep(path: Path, decoder: Decoder, frames: int) -> Recording:
 
 def _stream(path: Path, decoder: Decoder, frames: int) -> Recording:
     """Look at a dozen probes of a long recording and leave the rest in the file."""
+    if frames > LONGEST_S * decoder.rate_hz:
+        raise RecordingError(TOO_LONG)
     probes = list(_probes(decoder, frames))
     bad = decoder.may_hold_nan and any(_has_bad_samples(probe) for probe in probes)
     probes = [_mended(probe) for probe in probes] if bad else probes

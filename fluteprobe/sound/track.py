@@ -7,12 +7,13 @@ before a frame by the file's own clock, where packets were lost or damaged. PyAV
 import os
 from collections.abc import Iterator, Sequence
 from itertools import chain
+from pathlib import Path
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from fluteprobe.sound.boxes import fault_of, is_unfinished
-from fluteprobe.sound.decoding import NO_SOUND_FOUND, PROTECTED, RecordingError, Samples
+from fluteprobe.sound.decoding import NO_SOUND_FOUND, PROTECTED, RecordingError, Samples, open_read_only
 
 if TYPE_CHECKING:
     from av import AudioFrame, AudioStream, CodecContext, Packet
@@ -64,16 +65,20 @@ class Track:
         Whether packets amid the sound that was read so far could not be decoded.
     """
 
-    def __init__(self, descriptor: int) -> None:
-        self._descriptor = descriptor
-        if (fault := fault_of(descriptor)) is not None:
-            raise RecordingError(fault)
-        self.rate_hz, self.channels = 0, 0
-        self.is_damaged, self._is_cut = False, False
-        self._open()
+    def __init__(self, path: Path, *, is_checked: bool = False) -> None:
+        self._descriptor = open_read_only(path)
+        try:
+            if not is_checked and (fault := fault_of(self._descriptor)) is not None:
+                raise RecordingError(fault)
+            self._open()
+        except BaseException:
+            os.close(self._descriptor)
+            raise
         tracks = self._container.streams.audio
         self.number, self.of = tracks.index(self._stream), len(tracks)
         self.codec: str = self._stream.codec_context.codec.canonical_name
+        self.rate_hz, self.channels = 0, 0
+        self.is_damaged, self._is_cut = False, False
 
     def falls_short_of(self, found_s: float) -> bool:
         """Return whether the file ended amid its sound, or announces more than was found."""
@@ -83,7 +88,7 @@ class Track:
     def frames_from_the_start(self) -> Iterator[Timed]:
         """Yield all frames, from the first one on."""
         if not self._is_fresh:
-            self.close()
+            self._container.close()
             self._open()
         return self.frames()
 
@@ -121,8 +126,9 @@ class Track:
         self._is_cut = self._is_cut or failed
 
     def close(self) -> None:
-        """Close the file, though not the descriptor."""
+        """Close the file."""
         self._container.close()
+        os.close(self._descriptor)
 
     def _open(self) -> None:
         os.lseek(self._descriptor, 0, os.SEEK_SET)
@@ -130,7 +136,7 @@ class Track:
         try:
             self._stream = _chosen(self._container)
         except BaseException:
-            self.close()
+            self._container.close()
             raise
         self._tick_s = float(self._stream.time_base or 0)
         self._is_fresh = True
