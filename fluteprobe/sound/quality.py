@@ -76,6 +76,7 @@ _SILENT_DB = (
     80.0  # under the tone: a flute at arm's length is about 80 dB, a microphone's own noise 15 or more
 )
 _UNDER_NOISE_DB = 20.0
+_NOISELESS_DB = 42.0  # a tone so clear of noise has none that a gate could spare
 _LOUD_ENOUGH_DB = -50.0
 _STEP_BLOCKS = 6
 _STEP_DB = 8.0
@@ -248,18 +249,18 @@ def _hum(slow: _Slow, course: _Course, parts: Sequence[Part]) -> str | None:
     )
 
 
-def _power(slow: _Slow) -> tuple[float, Floats]:
-    """Return the spacing of the lines and the power spectrum, whose sum over a line is its mean square."""
+def _power(slow: _Slow) -> tuple[float, float, Floats]:
+    """Return rate, spacing of the lines, and the power spectrum, whose sum over a line is its mean square."""
     window = _hann(len(slow.samples))
     spectrum = np.abs(np.fft.rfft(slow.samples * window)) ** 2
-    return slow.rate_hz / len(window), 2.0 * spectrum / (len(window) * float(np.sum(window**2)))
+    return slow.rate_hz, slow.rate_hz / len(window), 2.0 * spectrum / (len(window) * float(np.sum(window**2)))
 
 
 def _hum_lines(
-    spectrum: tuple[float, Floats], mains_hz: float, parts: Sequence[Part]
+    spectrum: tuple[float, float, Floats], mains_hz: float, parts: Sequence[Part]
 ) -> tuple[list[float], float]:
     """Return how far the lowest multiples stand over their neighbours, and the power of those that do."""
-    line_hz, power = spectrum
+    slow_rate_hz, line_hz, power = spectrum
     reach, aside = max(round(_HUM_OFF_HZ / line_hz), 1), max(round(8.0 / line_hz), 8)
     over, total = [], 0.0
     for hz in (k * mains_hz for k in range(1, _HUM_LINES + 1)):
@@ -268,9 +269,11 @@ def _hum_lines(
         if near or place - aside < 1 or place + aside >= len(power):
             continue
         peak = place - reach + int(np.argmax(power[place - reach : place + reach + 1]))
+        wide = 4.0 * hz / slow_rate_hz  # what thinning, by a Hann window four samples wide, passes
+        passed = float(np.sinc(wide)) / (1.0 - wide**2)
         beside = np.concatenate([power[peak - aside : peak - 2], power[peak + 3 : peak + aside + 1]])
         over.append(float(power[peak]) / max(median(beside), 1e-30))
-        total += float(power[peak - 1 : peak + 2].sum()) if over[-1] > _HUM_OVER else 0.0
+        total += float(power[peak - 1 : peak + 2].sum()) / passed**2 if over[-1] > _HUM_OVER else 0.0
     return over, total
 
 
@@ -363,9 +366,11 @@ def _gate(course: _Course, parts: Sequence[Part]) -> str | None:
     """Tell noise reduction by pauses more silent than a microphone is, or cut off at a stroke."""
     pauses = [course.before, *course.after]
     levels = np.concatenate([course.level_db[first:last] for first, last in pauses])
-    noise = course.tone_db - min(part.harmonic_to_noise_db for part in parts)
+    clearest = min(part.harmonic_to_noise_db for part in parts)
+    noise = course.tone_db - clearest
     silent = (
         len(levels) >= _STEP_BLOCKS
+        and clearest < _NOISELESS_DB
         and course.tone_db > _LOUD_ENOUGH_DB
         and quantile(levels, 0.3) < min(course.tone_db - _SILENT_DB, noise - _UNDER_NOISE_DB)
     )
