@@ -1,4 +1,4 @@
-"""`measure` and `chart` as real processes: what a second run does, each take's page, and faults of the disk.
+"""`measure` and `chart`: what a second run does, each take's page, and faults of the disk.
 
 There is no outside source here. The full disk and the read-only one are small disks in memory, where the
 machine lets us make them; a limit on the size of files stands in for them elsewhere.
@@ -12,11 +12,16 @@ import sys
 from collections.abc import Iterator
 from contextlib import suppress
 from pathlib import Path
+from typing import Any
 
 import pytest
+from click.testing import CliRunner, Result
 from on_page import pdf_text
+from short_takes import short_session
 
-HERON = Path(__file__).parent.parent / "samples" / "heron"
+from fluteprobe import hearing
+from fluteprobe.cli.main import main
+
 TAKES = ("xxxxxx", "xxxxxo", "xxxxoo", "oxxxxx-over")
 OUTPUTS = ("measurements.json", "measurements.csv")
 
@@ -24,22 +29,23 @@ posix_only = pytest.mark.skipif(sys.platform == "win32", reason="permissions and
 
 
 @pytest.fixture
-def here(tmp_path: Path) -> Path:
-    """Return a folder with the session `heron`, four real takes in it."""
-    takes = tmp_path / "heron" / "takes"
-    takes.mkdir(parents=True)
-    shutil.copy(HERON / "flute.toml", takes.parent)
-    for name in TAKES:
-        shutil.copy(HERON / "takes" / f"{name}.flac", takes)
+def here(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
+    """Return the current folder, with the session `heron` in it, four real takes cut short."""
+    monkeypatch.chdir(tmp_path)
+    short_session(tmp_path / "heron", TAKES)
     return tmp_path
 
 
-def run(here: Path, *words: str, before: str = "") -> subprocess.CompletedProcess[str]:
-    """Run a command in a process of its own, after some Python code."""
+def run(*words: str | Path) -> Result:
+    return CliRunner().invoke(main, [str(word) for word in words])
+
+
+def process(*words: str | Path, before: str = "") -> "subprocess.Popen[str]":
+    """Start a command in a process of its own, after some Python code."""
     code = f"{before}\nfrom fluteprobe.cli.main import main; main()"
-    return subprocess.run(
-        [sys.executable, "-c", code, *words], cwd=here, capture_output=True, text=True, encoding="utf-8",
-        check=False, stdin=subprocess.DEVNULL,
+    return subprocess.Popen(
+        [sys.executable, "-c", code, *words], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True,
+        encoding="utf-8", stdin=subprocess.DEVNULL,
     )  # fmt: skip
 
 
@@ -49,24 +55,20 @@ def contents(folder: Path) -> dict[str, bytes]:
 
 # --- a second run ------------------------------------------------------------------------------------
 
-NEVER_HEARS = "from fluteprobe import hearing\nhearing.hear_recording = None"
 
-
-def test_a_second_run_says_the_same_and_hears_nothing(here: Path) -> None:
-    first = run(here, "measure", "heron", "--json")
-    assert first.returncode == 0, first.stderr
+def test_a_second_run_says_the_same_and_hears_nothing(here: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    first = run("measure", "heron", "--json")
+    assert first.exit_code == 0, first.output
     written = contents(here / "reports" / "heron")
-    again = run(here, "measure", "heron", "--json", before=NEVER_HEARS)
-    assert (again.returncode, again.stdout) == (0, first.stdout), again.stderr
+    monkeypatch.setattr(hearing, "hear_recording", None)  # whoever listens now fails
+    assert run("measure", "heron", "--json").stdout == first.stdout
     assert contents(here / "reports" / "heron") == written
-    chart = run(here, "chart", "heron", "--format", "svg", before=NEVER_HEARS)
-    assert chart.returncode == 0, chart.stderr
-    anew = run(here, "measure", "heron", "--anew", before=NEVER_HEARS)
-    assert "TypeError" in anew.stderr
+    assert run("chart", "heron", "--format", "svg").exit_code == 0
+    assert isinstance(run("measure", "heron", "--anew").exception, TypeError)
 
 
 def test_what_was_kept_and_damaged_is_heard_anew_in_silence_and_strays_are_swept(here: Path) -> None:
-    first = run(here, "measure", "heron")
+    first = run("measure", "heron")
     out = here / "reports" / "heron"
     kept = list((out / ".kept").iterdir())
     for path in kept:
@@ -74,8 +76,8 @@ def test_what_was_kept_and_damaged_is_heard_anew_in_silence_and_strays_are_swept
     strays = [out / ".chart.pdf.0123abcd.fluteprobe.tmp", out / ".kept" / ".a.json.0123abcd.fluteprobe.tmp"]
     for path in strays:
         path.write_bytes(b"half")
-    again = run(here, "measure", "heron")
-    assert (again.returncode, again.stdout, again.stderr) == (0, first.stdout, first.stderr)
+    again = run("measure", "heron")
+    assert (again.exit_code, again.stdout, again.stderr) == (0, first.stdout, first.stderr)
     assert set((out / ".kept").iterdir()) == set(kept)
     assert {path.name for path in out.iterdir()} == {*OUTPUTS, ".kept"}
 
@@ -84,13 +86,13 @@ def test_a_place_that_cannot_keep_anything_is_no_fault(here: Path) -> None:
     out = here / "reports" / "heron"
     out.mkdir(parents=True)
     (out / ".kept").write_text("a file of this name is in the way")
-    told = run(here, "measure", "heron")
-    assert (told.returncode, "kept" in told.stderr) == (0, False)
+    told = run("measure", "heron")
+    assert (told.exit_code, "kept" in told.stderr) == (0, False)
 
 
 def test_every_take_s_page_shows_the_flute_s_own_evidence(here: Path) -> None:
-    told = run(here, "measure", "heron", "--pages", "--paper", "letter")
-    assert told.returncode == 0, told.stderr
+    told = run("measure", "heron", "--pages", "--paper", "letter")
+    assert told.exit_code == 0, told.stderr
     pages = here / "reports" / "heron" / "takes"
     assert sorted(path.stem for path in pages.iterdir()) == sorted(TAKES)
     assert "Wrote " + str(Path("reports/heron/takes/oxxxxx-over.pdf")) in told.stderr
@@ -128,16 +130,16 @@ def fill(disk: Path) -> None:
 
 def measured_before(here: Path, out: Path) -> dict[str, bytes]:
     """Measure, and let the next run write something else; return what stands there now."""
-    assert run(here, "measure", "heron", "--out", str(out)).returncode == 0
+    assert run("measure", "heron", "--out", str(out)).exit_code == 0
     facts = here / "heron" / "flute.toml"
     facts.write_text(facts.read_text("utf-8").replace("Heron", "Egret"), "utf-8")
     return contents(out)
 
 
-def check_one_line(told: subprocess.CompletedProcess[str], out: Path, words: str) -> None:
+def check_one_line(exit_code: int, said: str, out: Path, words: str) -> None:
     """Check that a run ended in one line with the file's name, and left nothing half-written."""
-    assert told.returncode == 1
-    errors = [line for line in told.stderr.splitlines() if not line.startswith("Caution: ")]
+    assert exit_code == 1
+    errors = [line for line in said.splitlines() if not line.startswith("Caution: ")]
     assert errors == [f"Error: {out / 'measurements.json'}: {words}"]
     assert not [path for path in out.rglob("*") if path.suffix == ".tmp"]
 
@@ -147,8 +149,8 @@ def check_one_line(told: subprocess.CompletedProcess[str], out: Path, words: str
 def test_a_full_disk_is_one_line_and_the_old_files_stay(here: Path, disk: Path, command: list[str]) -> None:
     old = measured_before(here, disk)
     fill(disk)
-    told = run(here, *command, "heron", "--anew", "--out", str(disk))
-    check_one_line(told, disk, "the disk is full: make room, then run it again")
+    told = run(*command, "heron", "--anew", "--out", str(disk))
+    check_one_line(told.exit_code, told.stderr, disk, "the disk is full: make room, then run it again")
     assert contents(disk) == old
 
 
@@ -156,8 +158,9 @@ def test_a_full_disk_is_one_line_and_the_old_files_stay(here: Path, disk: Path, 
 def test_a_limit_on_files_is_one_line_and_the_old_files_stay(here: Path) -> None:
     out = here / "out"
     old = measured_before(here, out)
-    told = run(here, "measure", "heron", "--out", str(out), before=LIMITED)
-    check_one_line(told, out, "files may not grow so large here: choose another folder")
+    limited = process("measure", "heron", "--out", out, before=LIMITED)
+    _, said = limited.communicate()
+    check_one_line(limited.returncode, said, out, "files may not grow so large here: choose another folder")
     assert contents(out) == old
 
 
@@ -165,8 +168,8 @@ def test_a_limit_on_files_is_one_line_and_the_old_files_stay(here: Path) -> None
 def test_a_read_only_disk_is_one_line_and_the_old_files_stay(here: Path, disk: Path) -> None:
     old = measured_before(here, disk)
     subprocess.run(["mount", "-o", "remount,ro", str(disk)], check=True)
-    told = run(here, "measure", "heron", "--anew", "--out", str(disk))
-    check_one_line(told, disk, "the disk is read-only: choose another folder")
+    told = run("measure", "heron", "--anew", "--out", str(disk))
+    check_one_line(told.exit_code, told.stderr, disk, "the disk is read-only: choose another folder")
     assert contents(disk) == old
 
 
@@ -176,27 +179,28 @@ def test_a_folder_that_may_not_be_written_is_one_line(here: Path) -> None:
     out = here / "out"
     old = measured_before(here, out)
     out.chmod(0o555)
-    told = run(here, "measure", "heron", "--anew", "--out", str(out))
+    told = run("measure", "heron", "--anew", "--out", str(out))
     out.chmod(0o755)
-    check_one_line(told, out, "there is no permission to write: choose another folder")
+    check_one_line(told.exit_code, told.stderr, out, "there is no permission to write: choose another folder")
     assert contents(out) == old
 
 
 @posix_only
-def test_a_folder_that_is_taken_away_meanwhile_is_one_line(here: Path) -> None:
-    assert run(here, "measure", "heron").returncode == 0
+def test_a_folder_that_is_taken_away_meanwhile_is_one_line(
+    here: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    assert run("measure", "heron").exit_code == 0
     old = contents(here / "reports" / "heron")
-    gone = (
-        "from fluteprobe import hearing\n"
-        "from pathlib import Path\n"
-        "real = hearing.hear_recording\n"
-        "def hear(path):\n"
-        "    if Path('heron').exists(): Path('heron').rename('removed')\n"
-        "    return real(path)\n"
-        "hearing.hear_recording = hear"
-    )
-    told = run(here, "measure", "heron", "--anew", before=gone)
-    assert told.returncode == 1
+    real = hearing.hear_recording
+
+    def hear(path: Path) -> Any:
+        with suppress(OSError):
+            Path("heron").rename("removed")
+        return real(path)
+
+    monkeypatch.setattr(hearing, "hear_recording", hear)
+    told = run("measure", "heron", "--anew")
+    assert told.exit_code == 1
     (line,) = told.stderr.splitlines()
     assert line.startswith("Error: heron/takes/")
     assert line.endswith(" gone while it was heard; was a drive removed?")
@@ -204,12 +208,10 @@ def test_a_folder_that_is_taken_away_meanwhile_is_one_line(here: Path) -> None:
 
 
 def test_two_runs_at_once_do_no_harm(here: Path) -> None:
-    alone = run(here, "measure", "heron", "--out", "alone", "--json").stdout
-    code = "from fluteprobe.cli.main import main; main()"
-    command = [sys.executable, "-c", code, "measure", "heron", "--json"]
-    both = [subprocess.Popen(command, cwd=here, stdout=subprocess.PIPE, text=True) for _ in range(2)]
-    assert [process.communicate()[0] for process in both] == [alone, alone]
-    assert [process.returncode for process in both] == [0, 0]
+    alone = run("measure", "heron", "--out", "alone", "--json").stdout
+    both = [process("measure", "heron", "--json") for _ in range(2)]
+    assert [each.communicate()[0] for each in both] == [alone, alone]
+    assert [each.returncode for each in both] == [0, 0]
     out = here / "reports" / "heron"
     assert contents(out) == contents(here / "alone")
     assert json.loads((out / "measurements.json").read_bytes())["flute"]["name"] == "Heron"

@@ -4,7 +4,6 @@ Truth is what hearing each take alone gives.
 """
 
 import os
-import shutil
 import signal
 import subprocess
 import sys
@@ -15,6 +14,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
+from short_takes import short_session, write_short
 
 import fluteprobe
 from fluteprobe import hearing
@@ -24,7 +24,6 @@ from fluteprobe.kept import Kept
 from fluteprobe.session import Session, SessionError, Take, read_session
 from fluteprobe.sound.recording import RecordingError
 
-HERON = Path(__file__).parent.parent / "samples" / "heron"
 TAKES = ("xxxxxx", "xxxxxo", "xxxxoo", "xxxooo", "xxoooo")
 BAD = "xooooo"
 
@@ -34,13 +33,9 @@ linux_only = pytest.mark.skipif(sys.platform != "linux", reason="takes are heard
 @pytest.fixture
 def session(tmp_path: Path) -> Session:
     """Return a session of five real takes and one that is no recording."""
-    takes = tmp_path / "heron" / "takes"
-    takes.mkdir(parents=True)
-    shutil.copy(HERON / "flute.toml", takes.parent)
-    for name in TAKES:
-        shutil.copy(HERON / "takes" / f"{name}.flac", takes)
-    (takes / f"{BAD}.flac").write_bytes(b"no recording")
-    return read_session(takes.parent)
+    folder = short_session(tmp_path / "heron", TAKES)
+    (folder / "takes" / f"{BAD}.flac").write_bytes(b"no recording")
+    return read_session(folder)
 
 
 @pytest.fixture
@@ -90,7 +85,7 @@ def test_a_take_that_changed_is_heard_and_no_other(session: Session, kept: Kept,
     list(hear_takes(session.takes, kept=kept))
     asked.clear()
     changed = session.folder / "takes" / f"{BAD}.flac"
-    shutil.copy(HERON / "takes" / f"{BAD}.flac", changed)
+    write_short(BAD, changed)
     heard = by_name(hear_takes(session.takes, kept=kept))
     assert asked == [BAD]
     assert heard[BAD] == hear_recording(changed)
@@ -254,7 +249,7 @@ def test_no_process_stays_behind_when_the_run_is_ended(
     assert none_left(run.pid)
     run.stdout.close()
     run.stderr.close()
-    assert kept.found([HERON / "takes" / "xxoooo.flac"])  # what had been heard is kept
+    assert kept.found([session.takes[1].path])  # what had been heard is kept
 
 
 @linux_only
