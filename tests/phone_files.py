@@ -1,5 +1,6 @@
 """Files as phones and cameras write them, encoded by PyAV: `written(path, samples, rate_hz, codec=…)`."""
 
+from collections.abc import Callable
 from fractions import Fraction
 from pathlib import Path
 from typing import cast
@@ -52,12 +53,12 @@ def written(
     return path
 
 
-def cut(path: Path, to: Path, start_s: float) -> Path:
-    """Copy a file's packets from a time on without decoding them, as quick editors do; return the path."""
+def copied(path: Path, to: Path, keep: Callable[[float], bool]) -> Path:
+    """Copy the packets of the times in s that are to be kept, without decoding, as quick editors do."""
     with av.open(str(path)) as old, av.open(str(to), "w") as new:
         copies = {stream.index: new.add_stream_from_template(stream) for stream in old.streams}
         for packet in old.demux():
-            if packet.dts is not None and float(packet.dts * packet.time_base) >= start_s:
+            if packet.dts is not None and keep(float(packet.dts * packet.time_base)):
                 packet.stream = copies[packet.stream_index]
                 new.mux(packet)
     return to

@@ -410,7 +410,7 @@ def test_a_kind_of_sound_that_nothing_reads(tmp_path: Path) -> None:
 
 def test_a_file_that_another_tool_cut_starts_at_its_first_sound(tmp_path: Path) -> None:
     truth = clicks(48_000, 4.0)
-    path = phone_files.cut(written(tmp_path / "take.mp4", truth), tmp_path / "cut.mp4", start_s=1.5)
+    path = phone_files.copied(written(tmp_path / "take.mp4", truth), tmp_path / "cut.mp4", lambda s: s >= 1.5)
     recording = open_recording(path)
     assert recording.cautions == ()
     assert recording.duration_s == pytest.approx(2.5, abs=0.1)
@@ -457,6 +457,18 @@ def test_an_absurd_number_of_channels_is_refused(tmp_path: Path, channels: int, 
     path = phone_files.written(tmp_path / "take.mkv", tone(48_000), 48_000, "pcm_s16le")
     path.write_bytes(path.read_bytes().replace(b"\x9f\x81\x01", bytes([0x9F, 0x81, channels])))  # RFC 9559
     assert fault(path) == words
+
+
+@pytest.mark.parametrize("kind", ["mkv", "mp4"])
+def test_sound_that_is_left_out_becomes_silence_and_keeps_the_time(tmp_path: Path, kind: str) -> None:
+    truth = clicks(48_000, 4.0)
+    path = phone_files.written(tmp_path / f"take.{kind}", truth, 48_000)
+    gappy = phone_files.copied(path, tmp_path / f"gap.{kind}", lambda s: not 1.5 <= s < 2.0)
+    recording = open_recording(gappy)
+    assert recording.cautions == ("0.5 s of sound are missing; silence stands for them",)
+    heard = whole(recording)
+    assert np.all(heard[round(1.6 * 48_000) : round(1.9 * 48_000)] == 0.0)
+    assert late_by(heard[2 * 48_000 :], truth[2 * 48_000 :]) == pytest.approx(0, abs=48)  # Matroska: whole ms
 
 
 def test_a_file_whose_start_an_edit_hides_begins_after_it(tmp_path: Path) -> None:

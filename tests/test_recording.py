@@ -477,6 +477,52 @@ def test_an_absurd_header_takes_no_memory(tmp_path: Path, kind: str) -> None:
     )
 
 
+def test_a_length_of_a_million_million_samples_takes_no_memory(tmp_path: Path) -> None:
+    path = written(tmp_path / "take", tone(), format="RF64")
+    content = bytearray(path.read_bytes())
+    at = content.find(b"ds64") + 8  # sizes of the file and of its data in bytes, and the count of samples
+    content[at : at + 24] = struct.pack("<QQQ", 2**41, 2**41, 2**40)
+    path.write_bytes(content)
+    tracemalloc.start()
+    recording = open_recording(path)
+    _, peak = tracemalloc.get_traced_memory()
+    tracemalloc.stop()
+    assert peak < 10e6
+    assert recording.duration_s == 1.0
+    assert recording.cautions == (
+        "cut off: the file is shorter than its header says; copy or record it again",
+    )
+
+
+NO_SOUND = "damaged or cut off: no sound can be read from it; copy or record it again"
+
+
+@pytest.mark.parametrize(
+    ("at", "field", "words"),
+    [
+        (24, struct.pack("<I", 0), NO_SOUND),
+        (24, struct.pack("<I", 1), "recorded at 1 samples a second; at least 8000 are needed"),
+        (24, struct.pack("<I", 2**31 - 1), "only 0.000 s of sound; at least 0.1 s are needed, 2 s are good"),
+        (22, struct.pack("<H", 0), NO_SOUND),
+        (22, struct.pack("<H", 65_535), NO_SOUND),
+        (22, struct.pack("<H", 1024), "only 0.001 s of sound; at least 0.1 s are needed, 2 s are good"),
+    ],
+    ids=["no rate", "rate 1", "absurd rate", "no channel", "65535 channels", "1024 channels"],
+)
+def test_an_absurd_rate_or_number_of_channels(tmp_path: Path, at: int, field: bytes, words: str) -> None:
+    path = written(tmp_path / "take.wav", tone())
+    content = bytearray(path.read_bytes())
+    content[at : at + len(field)] = field
+    path.write_bytes(content)
+    assert fault(path) == words
+
+
+@pytest.mark.parametrize("kind", ["WAV", "CAF", "AIFF"])
+def test_nothing_but_samples_that_are_no_numbers(tmp_path: Path, kind: str) -> None:
+    path = written(tmp_path / "take", np.full(48000, np.nan), format=kind, subtype="FLOAT")
+    assert fault(path) == "silent: every sample is the same; check which microphone was recording"
+
+
 def test_too_short(tmp_path: Path) -> None:
     words = "only 0.090 s of sound; at least 0.1 s are needed, 2 s are good"
     assert fault(written(tmp_path / "take.wav", tone(seconds=0.09))) == words
