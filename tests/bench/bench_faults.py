@@ -10,18 +10,28 @@ nothing else. Seeds are fixed; moments depend on the machine's speed.
 import os
 import shutil
 import signal
-import subprocess
 import sys
 import time
 from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager, suppress
+from contextlib import suppress
 from dataclasses import dataclass, field
-from hashlib import sha256
 from pathlib import Path
 from tempfile import TemporaryDirectory
 
 import numpy as np
-import soundfile
+from bench.harm import (
+    DISK_KB,
+    TAKES,
+    damage,
+    digests,
+    ended,
+    free_bytes,
+    kill_before,
+    limit_files,
+    make_session,
+    small_disk,
+    whole_recording,
+)
 from bench.tables import table
 
 from fluteprobe.cli.main import main
@@ -29,27 +39,13 @@ from fluteprobe.kept import KEPT_FOLDER, Kept
 from fluteprobe.reread import read_results
 from fluteprobe.session import read_session
 
-DEMO = Path(__file__).parent.parent.parent / "samples" / "heron"
-TAKES = ("xxxxxx", "xxxxxo", "xxxooo", "xooooo", "oxxxxx-over")
-FORMATS = (
-    ("WAV", "PCM_16"),
-    ("FLAC", "PCM_16"),
-    ("OGG", "VORBIS"),
-    ("MP3", "MPEG_LAYER_III"),
-    ("AIFF", "PCM_24"),
-)
 COMMANDS = {"measure": ("measure",), "chart": ("chart", "--format", "svg", "--paper", "a6")}
-
-_SECONDS = 1.2
-_PATIENCE_S = 30.0
-_DISK_KB = 512
-_OPERATIONS = {"open", "os.rename", "os.remove", "os.mkdir", "os.utime", "os.truncate"}
 
 
 COLUMNS = ("outputs", "recordings", "kept", "words", "processes", "next_run")
 TITLES = (
     "fault", "times", "outputs neither old nor new", "recordings changed", "kept readings spoilt",
-    "tracebacks", "processes left behind", "next run not right",
+    "not told in a line", "processes left behind", "next run not right",
 )  # fmt: skip
 
 
@@ -99,7 +95,7 @@ class Bench:
         self.words = folder / "words"
         make_session(self.session)
         self.old, self.new = self._outputs("Old"), self._outputs("New")
-        self.recordings = _digests(self.session / "takes")
+        self.recordings = digests(self.session / "takes")
         self.kept = len(TAKES)
 
     def _outputs(self, name: str) -> dict[str, bytes]:
@@ -170,10 +166,10 @@ class Bench:
     ) -> None:
         """Look at everything after a fault, then at the next run, and count what is wrong."""
         out = out or self.out
-        left = not _ended(group)
+        left = not ended(group)
         words = self.said()
         spoilt = self._spoilt(out)
-        recordings = _digests(self.session / "takes") != self.recordings
+        recordings = digests(self.session / "takes") != self.recordings
         lost = [
             name
             for name, content in self.old.items()
@@ -231,9 +227,9 @@ def killed_at_every_operation(bench: Bench, command: str, step: int) -> Tally:
     turn = 1
     while True:
         bench.reset()
-        number = bench.start(command, before=lambda: _kill_before(turn, bench.out))  # noqa: B023  (run at once)
-        ended = bench.wait(number)
-        if ended >= 0:
+        number = bench.start(command, before=lambda: kill_before(turn, bench.out))  # noqa: B023  (run at once)
+        code = bench.wait(number)
+        if code >= 0:
             return tally
         bench.check(tally, number, command)
         turn += step
@@ -277,13 +273,13 @@ def full_disks(bench: Bench, step_kb: int) -> Iterator[Tally]:
     """Run on a small disk in memory with more and more room left, where the machine lets us make one."""
     tally = Tally("disk full, more and more left")
     disk = bench.folder / "disk"
-    with _small_disk(disk) as is_there:
-        for left_kb in range(0, _DISK_KB, step_kb) if is_there else ():
+    with small_disk(disk) as is_there:
+        for left_kb in range(0, DISK_KB, step_kb) if is_there else ():
             out = disk / "out"
             bench.reset(out)
             ballast = disk / "ballast"
             with ballast.open("wb") as file, suppress(OSError):
-                os.posix_fallocate(file.fileno(), 0, max(_free(disk) - left_kb * 1024, 1))
+                os.posix_fallocate(file.fileno(), 0, max(free_bytes(disk) - left_kb * 1024, 1))
             number = bench.start("chart", out)
             right = _is_told_in_one_line(bench, bench.wait(number), "the disk is full")
             ballast.unlink()
@@ -298,7 +294,7 @@ def limited(bench: Bench, times: int) -> Tally:
     tally = Tally("files may not grow beyond 4 to 60 KB")
     for limit in np.linspace(4_000, 60_000, times).astype(int):
         bench.reset()
-        number = bench.start("chart", before=lambda: _limit_files(int(limit)))  # noqa: B023  (run at once)
+        number = bench.start("chart", before=lambda: limit_files(int(limit)))  # noqa: B023  (run at once)
         right = _is_told_in_one_line(bench, bench.wait(number), "files may not grow so large here")
         bench.check(tally, number, "chart", right=right)
     return tally
@@ -343,53 +339,6 @@ def read_after(bench: Bench) -> dict[str, float | None]:
     return {r.take: r.tone.frequency_hz for r in read_results(bench.out / "measurements.json").readings}
 
 
-# --- recordings --------------------------------------------------------------------------------------
-
-
-def make_session(folder: Path) -> None:
-    """Make a session with a second or so of five takes of the demo flute."""
-    (folder / "takes").mkdir(parents=True)
-    for name in TAKES:
-        samples, rate_hz = soundfile.read(DEMO / "takes" / f"{name}.flac")
-        start = len(samples) // 4
-        part = samples[start : start + round(_SECONDS * rate_hz)]
-        soundfile.write(folder / "takes" / f"{name}.wav", part, rate_hz)
-
-
-def whole_recording(k: int) -> bytes:
-    """Return a sound recording in one of five formats, as bytes."""
-    import io
-
-    kind, subtype = FORMATS[k % len(FORMATS)]
-    samples, rate_hz = soundfile.read(DEMO / "takes" / "xxxxxx.flac")
-    held = io.BytesIO()
-    soundfile.write(held, samples[: round(_SECONDS * rate_hz)], rate_hz, format=kind, subtype=subtype)
-    return held.getvalue()
-
-
-def damage(content: bytes, k: int, rng: np.random.Generator) -> bytes:
-    """Return a recording damaged in one of eight ways."""
-    where = int(rng.integers(1, len(content)))
-    spoilt = bytearray(content)
-    ways: list[Callable[[], bytes]] = [
-        lambda: content[:where],
-        lambda: bytes(len(content)),
-        lambda: rng.bytes(len(content)),
-        lambda: content[where:] + content[:where],
-        lambda: b"",
-        lambda: content[: where // 50],
-        lambda: rng.bytes(64) + content[64:],
-        lambda: _flipped(spoilt, rng),
-    ]
-    return ways[k // len(FORMATS) % len(ways)]()
-
-
-def _flipped(content: bytearray, rng: np.random.Generator) -> bytes:
-    for where in rng.integers(0, min(len(content), 2000), 20):
-        content[where] ^= 1 << int(rng.integers(0, 8))
-    return bytes(content)
-
-
 # --- means -------------------------------------------------------------------------------------------
 
 
@@ -405,29 +354,6 @@ def _seconds(bench: Bench, command: str, *, warm: bool) -> float:
     return max(taken)
 
 
-def _kill_before(turn: int, out: Path) -> None:
-    """Kill this process before its so-and-so-many-eth operation on a file of the outputs."""
-    victim, counted = os.getpid(), os.pipe()
-    os.set_blocking(counted[0], False)
-    os.write(counted[1], bytes(turn - 1))  # shared with the processes that hear
-
-    def hook(event: str, arguments: tuple[object, ...]) -> None:
-        if event in _OPERATIONS and str(out) in str(arguments[0]):
-            try:
-                os.read(counted[0], 1)
-            except BlockingIOError:
-                os.kill(victim, signal.SIGKILL)
-
-    sys.addaudithook(hook)
-
-
-def _limit_files(most_bytes: int) -> None:
-    import resource
-
-    signal.signal(signal.SIGXFSZ, signal.SIG_IGN)
-    resource.setrlimit(resource.RLIMIT_FSIZE, (most_bytes, most_bytes))
-
-
 def _is_told_in_one_line(bench: Bench, code: int, words: str) -> bool:
     """Whether a run ended well, or with exit code 1 and one line that says what is wrong."""
     said = bench.words.read_text("utf-8", "replace") if bench.words.exists() else ""
@@ -435,39 +361,6 @@ def _is_told_in_one_line(bench: Bench, code: int, words: str) -> bool:
     return code == 0 or (
         code == 1 and len(errors) == 1 and words in errors[0] and str(bench.folder) in errors[0]
     )
-
-
-@contextmanager
-def _small_disk(folder: Path) -> Iterator[bool]:
-    folder.mkdir()
-    mount = ["mount", "-t", "tmpfs", "-o", f"size={_DISK_KB}k", "none", str(folder)]
-    is_there = shutil.which("mount") is not None and subprocess.run(mount, check=False).returncode == 0
-    try:
-        yield is_there
-    finally:
-        if is_there:
-            subprocess.run(["umount", str(folder)], check=True)
-
-
-def _free(folder: Path) -> int:
-    status = os.statvfs(folder)
-    return status.f_bavail * status.f_frsize
-
-
-def _digests(folder: Path) -> dict[str, str]:
-    return {path.name: sha256(path.read_bytes()).hexdigest() for path in sorted(folder.iterdir())}
-
-
-def _ended(group: int) -> bool:
-    """Wait for all processes of a group to end; False if some have not after half a minute."""
-    start = time.perf_counter()
-    while time.perf_counter() - start < _PATIENCE_S:
-        try:
-            os.killpg(group, 0)
-        except ProcessLookupError:
-            return True
-        time.sleep(0.01)
-    return False
 
 
 def _row(tally: Tally) -> Sequence[str]:
