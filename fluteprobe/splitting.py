@@ -4,7 +4,7 @@ Conventions: times in seconds from the start of the long recording. A sound is w
 pauses. A cutting is a proposal: nothing is written by it; the same recording, order and session give the
 same one. The takes are numbered on from those that the session has.
 
-A take is doubtful where it is less than nine tenths sure which one it is: somebody has to look. A cutting has
+A take is doubtful where it is less than 95 % sure which one it is: somebody has to look. A cutting has
 faults where what was heard and the order cannot be brought together; nothing can be written from it then.
 """
 
@@ -21,14 +21,15 @@ from fluteprobe.flute.fingering import Breath, Fingering
 from fluteprobe.flute.plan import EDITIONS, take_plan
 from fluteprobe.flute.tuning import nearest_note
 from fluteprobe.session import TAKES_FOLDER, Session, SessionError, printable
-from fluteprobe.session.names import TakeName, UnfitNameError, read_take_name
+from fluteprobe.session.names import TakeName, UnfitNameError, example, read_take_name
+from fluteprobe.session.words import shown
 from fluteprobe.sound.cut import part_format, part_of
 from fluteprobe.sound.phrases import Phrase, find_phrases
 from fluteprobe.sound.recording import Recording
 from fluteprobe.version import __version__
 
 SPLIT_SCHEMA = "fluteprobe/split/1"
-SURE = 0.9
+SURE = 0.95
 
 _LARGEST_ORDER_BYTES = 100_000
 _SHORT_S, _BRIEF_S = 0.45, 0.8
@@ -78,7 +79,7 @@ class Sound:
 
     @property
     def is_doubtful(self) -> bool:
-        """Whether it is a take, and less than nine tenths sure which."""
+        """Whether it is a take, and less than 95 % sure which."""
         return self.file is not None and self.probability < SURE
 
 
@@ -136,10 +137,11 @@ def read_order(path: Path, holes: int) -> Order:
         try:
             take = read_take_name(word, holes)
             takes.append(Wanted(fingering=take.fingering, breath=take.breath))
-        except UnfitNameError as error:
-            faults.append(f"{name} line {number}: {printable(word)}: {error}")
+        except UnfitNameError:
+            usual = f"{example(holes)}-over"
+            faults.append(f"{name} line {number}: found {shown(word)}, expected a take's name, as {usual}")
     if not takes and not faults:
-        faults.append(f"{name} names no take: write one a line, as oxxxxx-over")
+        faults.append(f"{name} names no take: write one a line, as {example(holes)}-over")
     if faults:
         raise SessionError(*faults)
     return Order(name=name, takes=tuple(takes))

@@ -51,7 +51,7 @@ def _syllable(seconds: float, rate_hz: int, random: np.random.Generator) -> Samp
     for order in range(1, int(3500.0 / from_hz)):
         away = np.array([(order * from_hz - formant) / _FORMANT_WIDTH_HZ for formant in formants])
         voice += np.sum(1.0 / (1.0 + away**2)) * np.cos(order * phase)
-    return voice * np.sin(np.pi * time_s / seconds) ** 2
+    return np.asarray(voice * np.sin(np.pi * time_s / seconds) ** 2)
 
 
 def coughed(rate_hz: int, random: np.random.Generator, level_db: float = -25.0) -> Samples:
@@ -74,11 +74,11 @@ def in_one_go(
     for sound in sounds:
         parts += [sound, np.zeros(int(random.uniform(*pauses_s) * rate_hz))]
     whole = np.concatenate(parts)
-    return whole + 10.0 ** (room_db / 20.0) * random.standard_normal(len(whole))
+    return np.asarray(whole + 10.0 ** (room_db / 20.0) * random.standard_normal(len(whole)))
 
 
 def _at_level(samples: Samples, level_db: float) -> Samples:
-    return samples * (10.0 ** (level_db / 20.0) / np.sqrt(np.mean(samples**2)))
+    return np.asarray(samples * (10.0 ** (level_db / 20.0) / np.sqrt(np.mean(samples**2))))
 
 
 def main() -> None:

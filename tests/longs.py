@@ -10,6 +10,7 @@ from typing import Literal
 
 import numpy as np
 from builds import random_build
+from make_long import in_one_go, spoken
 from numpy.typing import NDArray
 from tones import make_tone
 
@@ -102,3 +103,24 @@ def sounded(cents: float, seconds: float, rate_hz: int, random: np.random.Genera
     made = make_tone(2.0 ** (cents / 1200.0), seconds, "plain", 30.0, random, rate_hz=rate_hz)
     fade = np.minimum(1.0, np.arange(len(made.samples)) / (_FADE_S * rate_hz))
     return np.asarray(0.2 * made.samples * fade * fade[::-1])
+
+
+def evening(seed: int, plan: Sequence[int | str], rate_hz: int = 16_000, edition: str = "short") -> Floats:
+    """Return a recording of what `plan` names: takes of the sheet by number, "word", "breath", "A5"."""
+    random = np.random.default_rng([seed, 9])
+    order = wanted(holes_of(seed), edition)
+    known = pitches(seed, order)
+    sounds: list[Floats] = []
+    for each in plan:
+        if each == "word":
+            sounds.append(spoken(0.8, rate_hz, random))
+        elif each == "breath":
+            sounds.append(0.03 * random.standard_normal(rate_hz))
+        else:
+            cents = 1200.0 * np.log2(880.0) if isinstance(each, str) else _asked(known, order, each)
+            sounds.append(sounded(cents, 0.9, rate_hz, random))
+    return in_one_go(sounds, rate_hz, random, pauses_s=(0.7, 1.2))
+
+
+def _asked(known: Floats, order: Sequence[Wanted], take: int) -> float:
+    return float(known[take, int(order[take].breath == "over")])

@@ -12,10 +12,12 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from longs import Mishap, played, tone, words
+from numpy.typing import NDArray
 
 from fluteprobe.flute import walks
 from fluteprobe.flute.alignment import Alignment, Heard, Wanted, align
-from fluteprobe.flute.likely import likely_pitches
+from fluteprobe.flute.fingering import Breath
+from fluteprobe.flute.likely import LikelyPitches, likely_pitches
 
 LOW = 1200.0 * np.log2(392.0)
 SCALE = (0.0, 300.0, 500.0, 700.0, 1000.0, 1200.0)  # cents above the lowest note
@@ -214,6 +216,9 @@ def test_the_same_is_told_each_time() -> None:
 # The referee: every walk, its tones' joint probability worked out at once --------------------------------
 
 Step = tuple[int | None, int | None, bool]  # take, register (0 for any pitch), again
+Last = tuple[int, int, float] | None  # take, register, pitch
+Measured = list[tuple[int, int, float]]  # fingering, register, pitch
+Floats = NDArray[np.float64]
 
 
 def _cheapest_of_all(heard: list[Heard], order: list[Wanted]) -> float:
@@ -242,8 +247,9 @@ def _cost(walk: list[Step], heard: list[Heard], order: list[Wanted]) -> float:
     """Return a walk's cost from the module's own constants, the tones' density as one normal distribution."""
     ladder = list(dict.fromkeys(take.fingering for take in order))
     likely = likely_pitches(ladder)
-    here, last, cost = -1, None, 0.0
-    measured: list[tuple[int, int, float]] = []
+    here, cost = -1, 0.0
+    measured: Measured = []
+    last: Last = None
     for (take, register, again), sound in zip(walk, heard, strict=True):
         if take is None:
             cost += _stray_cost(sound)
@@ -259,7 +265,7 @@ def _cost(walk: list[Step], heard: list[Heard], order: list[Wanted]) -> float:
             word = ladder.index(order[take].fingering)
             cost += _register_cost(register, breath, again, last, pitch)
             if register == 0 and not again:
-                middle, variance = _expected(likely, measured, (word, 1))
+                middle, variance = _expected(likely, measured, word, 1)
                 cost += inf if pitch < middle - walks._SLACK * variance**0.5 else 0.0
             if not again:
                 opened = sum(order[take].fingering.openness) - sum(order[here].fingering.openness)
@@ -287,11 +293,11 @@ def _stop(gap: int) -> float:
     return min(_skip_cost(gap), -log(walks._STOP_EARLY)) if gap else 0.0
 
 
-def _register_cost(register, breath, again, last, pitch) -> float:  # type: ignore[no-untyped-def]
+def _register_cost(register: int, breath: Breath, again: bool, last: Last, pitch: float) -> float:
     if again and last is not None and last[1] == register:
         variance = 2.0 * walks._REPEAT_CENTS**2
         density = 0.5 * ((pitch - last[2]) ** 2 / variance + log(2.0 * np.pi * variance))
-        return density - log(1.0 - walks._OTHERWISE)
+        return float(density) - log(1.0 - walks._OTHERWISE)
     if again:
         if register == 0:
             return inf
@@ -301,7 +307,7 @@ def _register_cost(register, breath, again, last, pitch) -> float:  # type: igno
     return -log(walks._SPEAKS[breath][register - 1]) - log(1.0 - walks._WILD)
 
 
-def _unrisen(opened, last, register, pitch) -> float:  # type: ignore[no-untyped-def]
+def _unrisen(opened: float, last: Last, register: int, pitch: float) -> float:
     """On the ladder more open holes raise the first register by 40 cents, and lower not the second."""
     if last is None or register not in {1, 2} or last[1] != register or not opened:
         return 0.0
@@ -309,26 +315,25 @@ def _unrisen(opened, last, register, pitch) -> float:  # type: ignore[no-untyped
     return walks._NO_RISE if np.sign(opened) * (pitch - last[2]) < least else 0.0
 
 
-def _moments(likely, measured):  # type: ignore[no-untyped-def]
+def _moments(likely: LikelyPitches, measured: Measured) -> tuple[Floats, Floats, Floats]:
     loads = np.array([likely.loadings[word, register - 1] for word, register, _ in measured])
     own = [likely.own[word, register - 1] ** 2 + walks._PLAYED_CENTS**2 for word, register, _ in measured]
     off = np.array([pitch - likely.middle[word, register - 1] for word, register, pitch in measured])
     return off, loads @ loads.T + np.diag(own), loads
 
 
-def _joint_cost(likely, measured) -> float:  # type: ignore[no-untyped-def]
+def _joint_cost(likely: LikelyPitches, measured: Measured) -> float:
     if not measured:
         return 0.0
     off, spread, _ = _moments(likely, measured)
     return float(0.5 * (off @ np.linalg.solve(spread, off) + np.linalg.slogdet(2.0 * np.pi * spread)[1]))
 
 
-def _expected(likely, measured, place):  # type: ignore[no-untyped-def]
-    word, register = place
+def _expected(likely: LikelyPitches, measured: Measured, word: int, register: int) -> tuple[float, float]:
     own = likely.own[word, register - 1] ** 2 + walks._PLAYED_CENTS**2
     mine, middle = likely.loadings[word, register - 1], likely.middle[word, register - 1]
     if not measured:
-        return middle, mine @ mine + own
+        return float(middle), float(mine @ mine + own)
     off, spread, loads = _moments(likely, measured)
     share = np.linalg.solve(spread, loads @ mine)
-    return middle + share @ off, mine @ mine + own - share @ (loads @ mine)
+    return float(middle + share @ off), float(mine @ mine + own - share @ (loads @ mine))

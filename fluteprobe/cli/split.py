@@ -137,13 +137,17 @@ def _agreed(question: str) -> bool:
     """Ask at a terminal; where nobody can be asked, say how to agree."""
     from fluteprobe.cli import screen
 
-    if not sys.stdin.isatty():
+    if not _on_terminal():
         screen.say("Nothing was written: look at the table, then add --yes.", err=True)
         return False
     if click.confirm(question, err=True):
         return True
     screen.say("Nothing was written.", err=True)
     return False
+
+
+def _on_terminal() -> bool:
+    return sys.stdin.isatty()
 
 
 def _listed(cutting: "Cutting") -> str:

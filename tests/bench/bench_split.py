@@ -1,7 +1,7 @@
 """Splitting: how often every sound of a long recording is told right, and what an hour of sound costs.
 
 Sittings are the standard take sheet, played on simulated flutes that set no constant; their pitches come from
-the tube model and have a player's scatter (see `longs.py`). "Sure" is nine tenths and more, below which a
+the tube model and have a player's scatter (see `longs.py`). "Sure" is 95 % and more, below which a
 take is shown as doubtful. The hour holds 60 takes, 48 kHz, stereo, 16 bit; it is split by a fresh process,
 which writes the takes too. Memory is the largest resident set of that process or one of its helpers, in MB
 (10⁶ bytes).
@@ -23,6 +23,7 @@ from make_long import spoken
 from fluteprobe.flute.alignment import align
 from fluteprobe.session import FluteFacts, create_session, read_session
 from fluteprobe.session.names import TakeName
+from fluteprobe.splitting import SURE
 
 RATE_HZ = 48_000
 TAKES = 60
@@ -36,7 +37,7 @@ _MISHAPS: tuple[dict[Mishap, int], ...] = (
     {"strays": 1},
     {"skips": 1, "repeats": 1, "fails": 1, "strays": 1},
 )
-_CHANCES = (0.0, 0.5, 0.9, 0.99, 1.01)
+_CHANCES = (0.0, 0.5, SURE, 0.99, 1.01)
 _ROOM = 5e-4
 
 
@@ -60,8 +61,8 @@ def alignments(sittings: int) -> str:
                 ", ".join(f"{count} {word}" for word, count in mishaps.items()) or "as planned",
                 share_text(sum(all(right for right, _ in sitting) for sitting in answers), sittings),
                 share_text(sum(right for right, _ in flat), len(flat)),
-                share_text(sum(not right and sure < 0.9 for right, sure in flat), len(flat)),
-                share_text(sum(not right and sure >= 0.9 for right, sure in flat), len(flat)),
+                share_text(sum(not right and sure < SURE for right, sure in flat), len(flat)),
+                share_text(sum(not right and sure >= SURE for right, sure in flat), len(flat)),
                 f"{each_s:.2f}",
             ]
         )
