@@ -15,6 +15,7 @@ from fluteprobe.sound.decoding import NO_SOUND_FOUND, PROTECTED
 
 _STARTS = (b"ftyp", b"moov", b"mdat", b"wide", b"free", b"skip", b"pnot")
 _UNREAD = (b"mdat", b"free", b"skip", b"wide", b"uuid")
+_FEW_PIECES = 2**20  # old kinds of sound count single samples, of which a byte holds a few
 _MOST_EDITS = 1000
 _MOST_INDEX_BYTES = 2**26
 _COUNTS = re.compile(rb"(?:(?:stsz|stz2).{8}|trun.{4})(.{4})", re.DOTALL)
@@ -35,7 +36,8 @@ def fault_of(descriptor: int) -> str | None:
             file.seek(start)
             content = file.read(min(stop - start, _MOST_INDEX_BYTES + 1))
             pieces += _sum(_COUNTS, content)
-            if pieces > size or len(content) > _MOST_INDEX_BYTES or _sum(_EDITS, content) > _MOST_EDITS:
+            few = max(size, min(8 * size, _FEW_PIECES))
+            if pieces > few or _sum(_EDITS, content) > _MOST_EDITS or len(content) > _MOST_INDEX_BYTES:
                 return NO_SOUND_FOUND
             if b"cmov" in content:  # a compressed index, which could hold anything; unused for twenty years
                 return NO_SOUND_FOUND

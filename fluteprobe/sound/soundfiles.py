@@ -96,7 +96,7 @@ class SoundFileDecoder:
         try:
             with self._hush:
                 samples: Samples = self._file.read(frames, dtype="float32", always_2d=True)
-        except soundfile.LibsndfileError:
+        except (soundfile.LibsndfileError, ValueError):  # the latter where it finds itself beyond the end
             raise RecordingError(DAMAGED) from None
         return samples
 
