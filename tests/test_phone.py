@@ -264,7 +264,7 @@ NO_KIND = "not a sound file that can be read (WAV, AIFF, CAF, FLAC, Ogg, Opus, M
 UNFINISHED = "cut off: the recorder did not finish this file, so its index is missing; record it again"
 PROTECTED = "copy-protected: it cannot be read; record it anew, or save an unprotected copy"
 MANY = "80 channels; save the one to measure as WAV or FLAC"
-CUT_OFF = "cut off: the file is shorter than its header says; copy or record it again"
+CUT_OFF = "cut off or damaged: less can be read than its header says; copy or record it again"
 
 
 @pytest.mark.parametrize(

@@ -417,7 +417,7 @@ def test_a_file_cut_off_in_its_sound_is_used_as_far_as_it_goes(tmp_path: Path, k
     path.write_bytes(path.read_bytes()[: path.stat().st_size // 2])
     recording = open_recording(path)
     assert recording.cautions == (
-        "cut off: the file is shorter than its header says; copy or record it again",
+        "cut off or damaged: less can be read than its header says; copy or record it again",
     )
     assert recording.duration_s == pytest.approx(2.0, abs=0.3)
     assert abs(pitch_error_cents(recording.read(0, 48000), 48000)) < PITCH_TOLERANCE_CENTS
@@ -428,7 +428,7 @@ def test_a_long_file_cut_off_in_its_sound_is_streamed_as_far_as_it_goes(tmp_path
     path.write_bytes(path.read_bytes()[: path.stat().st_size // 2])
     recording = open_recording(path)
     assert recording.cautions == (
-        "cut off: the file is shorter than its header says; copy or record it again",
+        "cut off or damaged: less can be read than its header says; copy or record it again",
     )
     assert recording.duration_s == pytest.approx(100.0, abs=2.0)
     assert sum(len(block) for _, block in recording.blocks(10_000)) == recording.frames
@@ -441,7 +441,7 @@ def test_a_long_flac_damaged_amid_its_sound_is_streamed_as_far_as_it_goes(tmp_pa
     path.write_bytes(content)
     recording = open_recording(path)
     assert recording.cautions == (
-        "cut off: the file is shorter than its header says; copy or record it again",
+        "cut off or damaged: less can be read than its header says; copy or record it again",
     )
     assert recording.duration_s == pytest.approx(100.0, abs=2.0)
     assert sum(len(block) for _, block in recording.blocks(10_000)) == recording.frames
@@ -473,7 +473,7 @@ def test_an_absurd_header_takes_no_memory(tmp_path: Path, kind: str) -> None:
     assert peak < 10e6
     assert recording.duration_s == pytest.approx(1.0, abs=0.1)
     assert recording.cautions == (
-        "cut off: the file is shorter than its header says; copy or record it again",
+        "cut off or damaged: less can be read than its header says; copy or record it again",
     )
 
 
@@ -490,7 +490,7 @@ def test_a_length_of_a_million_million_samples_takes_no_memory(tmp_path: Path) -
     assert peak < 10e6
     assert recording.duration_s == 1.0
     assert recording.cautions == (
-        "cut off: the file is shorter than its header says; copy or record it again",
+        "cut off or damaged: less can be read than its header says; copy or record it again",
     )
 
 

@@ -21,7 +21,7 @@ HEAD_BYTES = 32
 LONGEST_S = 86_400.0
 _STANDARD_ERROR = 2
 
-CUT_OFF = "cut off: the file is shorter than its header says; copy or record it again"
+CUT_OFF = "cut off or damaged: less can be read than its header says; copy or record it again"
 DAMAGED = "damaged: it cannot be read to its end; copy or record it again"
 NO_SOUND_FOUND = "damaged or cut off: no sound can be read from it; copy or record it again"
 TOO_LONG = "longer than a day; cut it into shorter recordings"
