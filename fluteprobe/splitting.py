@@ -4,8 +4,9 @@ Conventions: times in seconds from the start of the long recording. A sound is w
 pauses. A cutting is a proposal: nothing is written by it; the same recording, order and session give the
 same one. The takes are numbered on from those that the session has.
 
-A take is doubtful where it is less than 95 % sure which one it is: somebody has to look. A cutting has
-faults where what was heard and the order cannot be brought together; nothing can be written from it then.
+A take that is less than 95 % sure to be that one is told as unsure; under 80 % it is doubtful, and somebody
+has to look. A cutting has faults where what was heard and the order cannot be brought together; nothing can
+be written from it then.
 """
 
 from collections.abc import Iterator, Mapping, Sequence
@@ -30,6 +31,7 @@ from fluteprobe.version import __version__
 
 SPLIT_SCHEMA = "fluteprobe/split/1"
 SURE = 0.95
+DOUBTFUL = 0.8
 
 _LARGEST_ORDER_BYTES = 100_000
 _SHORT_S, _BRIEF_S = 0.45, 0.8
@@ -79,8 +81,8 @@ class Sound:
 
     @property
     def is_doubtful(self) -> bool:
-        """Whether it is a take, and less than 95 % sure which."""
-        return self.file is not None and self.probability < SURE
+        """Whether it is a take, and so unsure which that somebody has to look."""
+        return self.file is not None and self.probability < DOUBTFUL
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -102,7 +104,7 @@ class Cutting:
 
     @property
     def doubtful(self) -> tuple[Sound, ...]:
-        """The takes of which it is not sure which they are."""
+        """The takes that somebody has to look at."""
         return tuple(sound for sound in self.sounds if sound.is_doubtful)
 
 
@@ -200,7 +202,7 @@ def _cut(recording: Recording, session: Session, order: Order, phrases: Sequence
         duration_s=recording.duration_s,
         order=order.name,
         sounds=sounds,
-        missing=tuple(_stem(order.takes[take]) for take in alignment.missing),
+        missing=tuple(_numbered(order, take) for take in alignment.missing),
         cautions=recording.cautions,
         faults=tuple(_faults(sounds, heard, order)),
     )
@@ -258,6 +260,13 @@ class _Namer:
         self.given[fingering, breath] = number
         stem = TakeName(fingering=fingering, breath=breath, number=number).stem
         return number, f"{stem}{self.suffix}"
+
+
+def _numbered(order: Order, take: int) -> str:
+    """Return a take's name, numbered where the order has the same one before."""
+    wanted = order.takes[take]
+    number = order.takes[: take + 1].count(wanted)
+    return TakeName(fingering=wanted.fingering, breath=wanted.breath, number=number).stem
 
 
 def _stem(take: Wanted) -> str:
@@ -326,7 +335,7 @@ def _remarks(sound: Sound, place: Placed, take: Wanted) -> Iterator[str]:
         yield "stayed low"
     elif take.breath != "over" and place.register > 1:
         yield "overblown"
-    if sound.is_doubtful:
+    if sound.probability < SURE:
         yield _doubt(sound)
     if min(sound.start_s - sound.cut_start_s, sound.cut_end_s - sound.end_s) < _LEAST_PAUSE_S:
         yield "short pause"

@@ -27,8 +27,10 @@ _DEMO_PAUSES_S = (0.8, 1.2)
 _DEMO_ROOM_DB = -78.0
 _DEMO = (
     "word", "xxxxxx", "xxxxxo", "xxxxoo", "word", "xxxxoo", "xxxooo", "xxoooo", "cough", "xooooo", "oooooo",
-    "xxxxxo-over", "xxxxoo-over",
+    "xxxxxx-over", "xxxxxo-over", "xxxxoo-over",
 )  # fmt: skip
+
+_TWO_TONES = {"xxxxxx-over"}
 
 
 def spoken(seconds: float, rate_hz: int, random: np.random.Generator, level_db: float = -30.0) -> Samples:
@@ -94,7 +96,8 @@ def main() -> None:
             sounds.append(coughed(rate_hz, random))
         else:
             samples, _ = soundfile.read(HERE / "heron" / "takes" / f"{name}.flac")
-            sounds.append(samples[: int(_DEMO_S * rate_hz)] * _release(int(_DEMO_S * rate_hz), rate_hz))
+            length = int((2.0 if name in _TWO_TONES else 1.0) * _DEMO_S * rate_hz)
+            sounds.append(samples[:length] * _release(len(samples[:length]), rate_hz))
     whole = in_one_go(sounds, rate_hz, random, room_db=_DEMO_ROOM_DB, pauses_s=_DEMO_PAUSES_S)
     soundfile.write(target, whole, rate_hz, subtype="PCM_16")
 

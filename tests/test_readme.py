@@ -116,6 +116,7 @@ def help_folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
         soundfile.write(takes / f"{path.stem}.wav", samples, rate_hz)
     if not (takes / "oxxxxx.wav").exists():
         shutil.copy(next(takes.glob("oxxxxx*.wav")), takes / "oxxxxx.wav")
+    shutil.copy(TOP / "samples" / "evening.flac", folder / "evening.flac")
     return folder
 
 

@@ -35,7 +35,7 @@ _NUMBERS = {0, 1, 3}
     metavar="FILE",
     help="A text file with the takes in the order played, one a line (oxxxxx-over), in place of the sheet's.",
 )
-@click.option("--yes", is_flag=True, help="Write the takes without asking, unless one is doubtful.")
+@click.option("--yes", is_flag=True, help="Write the takes without asking; refused where one is doubtful.")
 @json_option
 @click.pass_context
 def split(  # noqa: PLR0913, PLR0917  (click passes every option by name)
@@ -60,7 +60,7 @@ def split(  # noqa: PLR0913, PLR0917  (click passes every option by name)
 
     \b
     Example:
-      fluteprobe split evening.wav heron
+      fluteprobe split evening.flac heron
     """  # noqa: D301  (click reads the \b)
     from fluteprobe.cli import screen
     from fluteprobe.results import json_text

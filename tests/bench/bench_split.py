@@ -1,10 +1,9 @@
 """Splitting: how often every sound of a long recording is told right, and what an hour of sound costs.
 
 Sittings are the standard take sheet, played on simulated flutes that set no constant; their pitches come from
-the tube model and have a player's scatter (see `longs.py`). "Sure" is 95 % and more, below which a
-take is shown as doubtful. The hour holds 60 takes, 48 kHz, stereo, 16 bit; it is split by a fresh process,
-which writes the takes too. Memory is the largest resident set of that process or one of its helpers, in MB
-(10⁶ bytes).
+the tube model and have a player's scatter (see `longs.py`). A take is doubtful under 80 %: then a script
+writes nothing. The hour holds 60 takes, 48 kHz, stereo, 16 bit; it is split by a fresh process, which writes
+the takes too. Memory is the largest resident set of that process or one of its helpers, in MB (10⁶ bytes).
 """
 
 from collections.abc import Callable
@@ -23,7 +22,7 @@ from make_long import spoken
 from fluteprobe.flute.alignment import align
 from fluteprobe.session import FluteFacts, create_session, read_session
 from fluteprobe.session.names import TakeName
-from fluteprobe.splitting import SURE
+from fluteprobe.splitting import DOUBTFUL
 
 RATE_HZ = 48_000
 TAKES = 60
@@ -37,7 +36,7 @@ _MISHAPS: tuple[dict[Mishap, int], ...] = (
     {"strays": 1},
     {"skips": 1, "repeats": 1, "fails": 1, "strays": 1},
 )
-_CHANCES = (0.0, 0.5, SURE, 0.99, 1.01)
+_CHANCES = (0.0, 0.5, DOUBTFUL, 0.95, 0.99, 1.01)
 _ROOM = 5e-4
 
 
@@ -61,12 +60,19 @@ def alignments(sittings: int) -> str:
                 ", ".join(f"{count} {word}" for word, count in mishaps.items()) or "as planned",
                 share_text(sum(all(right for right, _ in sitting) for sitting in answers), sittings),
                 share_text(sum(right for right, _ in flat), len(flat)),
-                share_text(sum(not right and sure < SURE for right, sure in flat), len(flat)),
-                share_text(sum(not right and sure >= SURE for right, sure in flat), len(flat)),
+                share_text(sum(not right and sure < DOUBTFUL for right, sure in flat), len(flat)),
+                share_text(sum(not right and sure >= DOUBTFUL for right, sure in flat), len(flat)),
                 f"{each_s:.2f}",
             ]
         )
-    titles = ["mishaps", "sittings all right", "sounds right", "wrong, unsure", "wrong, sure", "s a sitting"]
+    titles = [
+        "mishaps",
+        "sittings all right",
+        "sounds right",
+        "wrong, doubtful",
+        "wrong, not so",
+        "s a sitting",
+    ]
     return table(titles, rows) + "\n\n" + _calibration(told)
 
 

@@ -10,7 +10,7 @@ import sys
 from pathlib import Path
 
 TESTS = Path(__file__).resolve().parent.parent
-PARTS = ("pitch", "speed", "registers", "quality", "drawing", "faults", "hostile", "compare")
+PARTS = ("pitch", "speed", "registers", "quality", "drawing", "faults", "hostile", "compare", "split")
 
 
 def main() -> None:
