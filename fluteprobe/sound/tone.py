@@ -54,6 +54,8 @@ _WARBLE_S = 0.6
 _WARBLE_TURNS = 4
 _LEAD_S = 2.0
 _CREST_TONES = 8
+# Cutting the crests takes away what the noise does to loudness, by which its share in the phase is judged.
+_CLIPPED_MORE = 1.15
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -190,12 +192,14 @@ def _tone(samples: Samples, rate_hz: int, steady: Steady, measured: Measured, ar
     partials = partials_of(pitch.frequency_hz, measured.orders, measured.amplitude)
     hnr = measured.harmonic_to_noise_db
     kind, words = _kind(measured, partials, spectrum, resonances)
+    told = tone_cautions(samples, rate_hz, measured, around.crest)
+    more = _CLIPPED_MORE if any(text.startswith("clipped") for text in told) else 1.0
     return Tone(
         start_s=start_s,
         end_s=end_s,
         kind=kind,
         frequency_hz=pitch.frequency_hz,
-        uncertainty_cents=pitch.uncertainty_cents,
+        uncertainty_cents=more * pitch.uncertainty_cents,
         partials=partials,
         harmonic_to_noise_db=hnr,
         breath_resonances=resonances,
@@ -204,7 +208,7 @@ def _tone(samples: Samples, rate_hz: int, steady: Steady, measured: Measured, ar
         attack_ms=steady.attack_ms,
         cautions=(
             *words,
-            *tone_cautions(samples, rate_hz, measured, around.crest),
+            *told,
             *room_cautions(spectrum, pause, pitch.frequency_hz),
         ),
     )

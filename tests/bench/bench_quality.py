@@ -233,7 +233,7 @@ SPOILT: Mapping[str, tuple[Spoil, float]] = {
     **{f"clipped at {share}, 30 dB": (_cut(share), 30.0) for share in (0.9, 0.7, 0.5, 0.3, 0.1)},
     **{f"squeezed, drive {drive}, 30 dB": (_squeezed(drive), 30.0) for drive in (1.5, 3.0)},
     "clipped at 0.3, 10 dB": (_cut(0.3), 10.0),
-    **{f"in noise, {snr:+.0f} dB": (_as_it_is, snr) for snr in (10.0, 5.0, 0.0, -5.0, -10.0)},
+    **{f"in noise, {snr:+.0f} dB": (_as_it_is, snr) for snr in (10.0, 5.0, 0.0, -3.0)},
 }
 
 
