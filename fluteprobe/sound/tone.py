@@ -54,8 +54,10 @@ _WARBLE_S = 0.6
 _WARBLE_TURNS = 4
 _LEAD_S = 2.0
 _CREST_TONES = 8
-# Cutting the crests takes away what the noise does to loudness, by which its share in the phase is judged.
-_CLIPPED_MORE = 1.15
+# Noise is judged by what it does to loudness and phase alike. Clipping takes the former away, and noise near
+# the tone's own level turns the phase by more than its share. Counted on made tones: see DEVELOPERS.md.
+_LESS_SURE = ("clipped", "noisy")
+_LESS_SURE_RATIO = 1.15
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -193,7 +195,7 @@ def _tone(samples: Samples, rate_hz: int, steady: Steady, measured: Measured, ar
     hnr = measured.harmonic_to_noise_db
     kind, words = _kind(measured, partials, spectrum, resonances)
     told = tone_cautions(samples, rate_hz, measured, around.crest)
-    more = _CLIPPED_MORE if any(text.startswith("clipped") for text in told) else 1.0
+    more = _LESS_SURE_RATIO if any(text.startswith(_LESS_SURE) for text in told) else 1.0
     return Tone(
         start_s=start_s,
         end_s=end_s,
