@@ -53,6 +53,7 @@ def asked(monkeypatch: pytest.MonkeyPatch) -> list[str]:
         return hear_recording(path)
 
     monkeypatch.setattr(hearing, "hear_recording", noted)
+    monkeypatch.delenv("OPENBLAS_NUM_THREADS", raising=False)  # so that no process is forked
     return names
 
 
