@@ -89,8 +89,7 @@ def compare(  # noqa: PLR0913, PLR0917  (click passes every option by name)
 
     \b
     Example:
-      fluteprobe measure heron --out before
-      fluteprobe compare before heron
+      fluteprobe compare heron bittern
     """  # noqa: D301  (click reads the \b)
     from fluteprobe.cli import screen
     from fluteprobe.cli.compared import told
