@@ -74,9 +74,16 @@ def course_of(samples: Samples, rate_hz: int, parts: Sequence[Part]) -> Course:
     ]
     return Course(
         level_db=level,
-        high_db=level_db(np.diff(samples, append=samples[-1:]), hop),
+        high_db=_high(samples, hop),
         tones=[(min(first, len(level) - 1), last) for first, last in spans],
     )
+
+
+def _high(samples: Samples, hop: int) -> Floats:
+    """Return the level of the differenced samples, whose last stretch may lack one sample and is repeated."""
+    levels = level_db(samples[1:] - samples[:-1], hop)
+    missing = len(samples) // hop - len(levels)
+    return np.append(levels, levels[-1:]) if missing else levels
 
 
 def level_db(samples: Samples, hop: int) -> Floats:

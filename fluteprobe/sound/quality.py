@@ -28,6 +28,7 @@ from fluteprobe.sound.course import (
     running_mean,
 )
 from fluteprobe.sound.hum import MAINS_HZ
+from fluteprobe.sound.partials import quick_length
 from fluteprobe.sound.quantile import median, quantile
 from fluteprobe.sound.recorder import automatic_gain, lossy_wall, noise_reduction
 
@@ -139,8 +140,9 @@ def _hum(slow: _Slow, course: Course, parts: Sequence[Part]) -> str | None:
 
 def _power(slow: _Slow) -> tuple[float, float, Floats]:
     """Return rate, spacing of the lines, and the power spectrum, whose sum over a line is its mean square."""
-    window = hann(len(slow.samples))
-    spectrum = np.abs(np.fft.rfft(slow.samples * window)) ** 2
+    window = hann(quick_length(len(slow.samples)))
+    lines = np.fft.rfft(slow.samples[: len(window)] * window)
+    spectrum = np.square(lines.real) + np.square(lines.imag)
     return slow.rate_hz, slow.rate_hz / len(window), 2.0 * spectrum / (len(window) * float(np.sum(window**2)))
 
 

@@ -15,7 +15,7 @@ import numpy as np
 from fluteprobe.sound.course import Course, Floats, Part, Samples, hann, running_mean
 from fluteprobe.sound.quantile import median, quantile
 
-_WALL_FRAMES = 8
+_WALL_FRAMES = 6
 _WALL_LENGTH_S = 0.046
 _BAND_HZ = 230.0
 _WALL_FROM_HZ = 4000.0

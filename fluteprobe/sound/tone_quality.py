@@ -35,7 +35,7 @@ _FEWEST_LEVELS = 6
 _CREST = (
     0.16  # of the noise's own movement; the crests of unclipped simulated tones move by 0.28 of it or more
 )
-_CREST_S = 0.7
+_CREST_S = 0.45
 _FEWEST_CRESTS = 30
 _HIGHEST_SHARE = 0.6
 _MID_WAVE = 0.5
@@ -55,7 +55,7 @@ _APART = 0.1
 def tone_cautions(samples: Samples, rate_hz: int, measured: Measured, crest: float) -> list[str]:
     """Say what makes a tone's numbers less sure; `crest` is the highest crest of the whole take."""
     pitch, hnr = measured.pitch, measured.harmonic_to_noise_db
-    level_db = 10.0 * np.log10(float(np.mean(samples.astype(np.float64) ** 2)) + 1e-20)
+    level_db = 10.0 * np.log10(float(samples @ samples) / len(samples) + 1e-20)
     seconds = len(samples) / rate_hz
     swing_db = 0.0 if pitch.vibrato else loudness_swing_db(samples, rate_hz)
     clipped = is_clipped(samples, measured.residual, rate_hz, pitch.frequency_hz, crest)
