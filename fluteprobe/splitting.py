@@ -16,16 +16,17 @@ from math import log2
 from pathlib import Path
 from typing import Any, Literal
 
-from fluteprobe.files import add_files, make_folder, read_whole
+from fluteprobe.files import add_files, make_folder, read_whole, sweep_passing
 from fluteprobe.flute.alignment import Alignment, Heard, Placed, Wanted, align
 from fluteprobe.flute.fingering import Breath, Fingering
 from fluteprobe.flute.plan import EDITIONS, take_plan
 from fluteprobe.flute.tuning import nearest_note
 from fluteprobe.session import TAKES_FOLDER, Session, SessionError, printable
+from fluteprobe.session.files import is_inside
 from fluteprobe.session.names import TakeName, UnfitNameError, example, read_take_name
 from fluteprobe.session.words import shown
 from fluteprobe.sound.cut import part_format, part_of
-from fluteprobe.sound.phrases import Phrase, find_phrases
+from fluteprobe.sound.phrases import Phrase, Progress, find_phrases
 from fluteprobe.sound.recording import Recording
 from fluteprobe.version import __version__
 
@@ -39,6 +40,7 @@ _QUIET_DB, _FAINT_DB = 15.0, 25.0  # under the middle one of all sounds that hol
 _GLIDING_CENTS, _SWINGING_CENTS = 40.0, 80.0
 _STRAY, _PERHAPS_STRAY, _LIKELY_STRAY = 0.03, 0.15, 0.5
 _LEAST_PAUSE_S = 0.3
+_LONGEST_TAKE_S = 120.0
 _MOST_OPEN, _OPEN_SHARE = 2, 0.25
 
 What = Literal["take", "again", "not a take", "voice or noise"]
@@ -158,7 +160,13 @@ def _words(text: str) -> Iterator[tuple[int, str]]:
 # --- hearing -----------------------------------------------------------------------------------------
 
 
-def cutting_of(recording: Recording, session: Session, order: Order, pool: Executor | None = None) -> Cutting:
+def cutting_of(
+    recording: Recording,
+    session: Session,
+    order: Order,
+    pool: Executor | None = None,
+    on_piece: Progress | None = None,
+) -> Cutting:
     """Listen to a long recording and say which take every sound in it is.
 
     Raises
@@ -166,7 +174,7 @@ def cutting_of(recording: Recording, session: Session, order: Order, pool: Execu
     RecordingError
         If the recording cannot be read.
     """
-    phrases = find_phrases(recording, pool)
+    phrases = find_phrases(recording, pool, on_piece)
     cutting = _cut(recording, session, order, phrases)
     if not cutting.faults or order.name not in {_edition_name(edition) for edition in EDITIONS}:
         return cutting
@@ -277,7 +285,8 @@ def _sound(phrase: Phrase, place: Placed | None, alignment: Alignment, order: Or
     """Return a phrase as what it was found to be."""
     sound = Sound(
         start_s=phrase.start_s, end_s=phrase.end_s,
-        cut_start_s=phrase.cut_start_s, cut_end_s=phrase.cut_end_s,
+        cut_start_s=phrase.cut_start_s,
+        cut_end_s=min(phrase.cut_end_s, phrase.cut_start_s + _LONGEST_TAKE_S),
         what="voice or noise", file=None, fingering=None, breath=None, number=None,
         frequency_hz=_frequency(phrase, "normal"), note=None, cents=None, register=None, expected_hz=None,
         probability=1.0, others=(), remark="",
@@ -337,7 +346,9 @@ def _remarks(sound: Sound, place: Placed, take: Wanted) -> Iterator[str]:
         yield "overblown"
     if sound.probability < SURE:
         yield _doubt(sound)
-    if min(sound.start_s - sound.cut_start_s, sound.cut_end_s - sound.end_s) < _LEAST_PAUSE_S:
+    if sound.end_s > sound.cut_end_s:
+        yield "its first two minutes"
+    elif min(sound.start_s - sound.cut_start_s, sound.cut_end_s - sound.end_s) < _LEAST_PAUSE_S:
         yield "short pause"
 
 
@@ -383,13 +394,18 @@ def write_takes(cutting: Cutting, recording: Recording, session: Session) -> tup
         If the cutting has faults.
     RecordingError
         If the recording cannot be read.
+    SessionError
+        If takes/ is a link that leads out of the session folder.
     OSError
         If a file cannot be written, or is there already.
     """
     if cutting.faults:
         raise ValueError("a cutting with faults cannot be written")
     folder = session.folder / TAKES_FOLDER
+    if not is_inside(folder, session.folder):
+        raise SessionError(f"{printable(str(folder))} leads out of the session folder: make it a folder")
     make_folder(folder)
+    sweep_passing(folder)
     places = [(folder / (sound.file or ""), sound) for sound in cutting.takes]
     end_s = recording.duration_s
     add_files(

@@ -82,9 +82,11 @@ def split(  # noqa: PLR0913, PLR0917  (click passes every option by name)
 
 
 def _heard(long: Path, session: "Session", order: "Order") -> "tuple[Recording, Cutting]":
-    """Listen to the long recording on all cores."""
+    """Listen to the long recording, on all cores where that works."""
     import os
+    from concurrent.futures import BrokenExecutor
 
+    from fluteprobe.cli import screen
     from fluteprobe.hearing import _pool
     from fluteprobe.session import SessionError, printable
     from fluteprobe.sound.recording import RecordingError, open_recording
@@ -92,8 +94,12 @@ def _heard(long: Path, session: "Session", order: "Order") -> "tuple[Recording, 
 
     try:
         recording = open_recording(long)
-        with _pool(os.cpu_count() or 1) as pool:
-            return recording, cutting_of(recording, session, order, pool)
+        with screen.progress("Listening") as on_piece:
+            try:
+                with _pool(os.cpu_count() or 1) as pool:
+                    return recording, cutting_of(recording, session, order, pool, on_piece)
+            except BrokenExecutor:  # a process was ended from outside
+                return recording, cutting_of(recording, session, order)
     except RecordingError as error:
         raise SessionError(f"{printable(str(long))}: {error}") from None
 

@@ -4,14 +4,15 @@ Conventions: times in seconds from the start of the recording, levels in dB agai
 every 10 ms. A pause lasts 0.3 s at least: so much is asked of the room's own noise when a take is measured. A
 phrase is what sounds between two pauses: one tone or several, or the breath alone.
 
-The recording is passed over once for its level. Only where that stands out of the room is it listened to, a
-piece of at most a minute at a time, on all cores; memory does not grow with the recording's length.
+The recording is passed over once for its level. Only where that stands out of the room is it listened to,
+some seconds at a time, on all cores; memory does not grow with the recording's length.
 """
 
 from collections import deque
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from concurrent.futures import Executor, Future
 from dataclasses import dataclass, replace
+from itertools import islice, starmap
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,6 +21,7 @@ from fluteprobe.sound.recording import Recording, Samples
 from fluteprobe.sound.tone import Tone, read_tones
 
 Floats = NDArray[np.float32]
+Progress = Callable[[int, int], None]
 
 STEP_S = 0.01
 PAUSE_S = 0.3
@@ -30,7 +32,7 @@ _ROOM_SHARE = 0.1
 _ROOM_AROUND_S = 30
 _ABOVE_ROOM_DB = 8.0
 _SHORTEST_S = 0.1
-_LONGEST_PIECE_S = 60.0
+_LONGEST_SLICE_S = 10.0
 _MARGIN_S = 0.4
 _ROOM_KEPT_S = 0.5
 _SHORTEST_TONE_S = 0.3
@@ -43,6 +45,8 @@ _ONE_FINGERING_CENTS = (
 _BREATH_S = 0.6
 _BREATH_DB = 10.0
 _BREATH_SHARE = 0.85
+_UNEVEN_DB = 2.0  # from one tenth of a second to the next: breath 0.8, words 2.4 and more
+_EDGE_STEPS = 5
 _WAITING = 4
 
 
@@ -76,8 +80,10 @@ class Phrase:
     level_db: float
 
 
-def find_phrases(recording: Recording, pool: Executor | None = None) -> tuple[Phrase, ...]:
-    """Return everything that sounds in a recording, in order.
+def find_phrases(
+    recording: Recording, pool: Executor | None = None, on_piece: Progress | None = None
+) -> tuple[Phrase, ...]:
+    """Return everything that sounds in a recording, in order; `on_piece` is told how many pieces are done.
 
     Raises
     ------
@@ -87,12 +93,15 @@ def find_phrases(recording: Recording, pool: Executor | None = None) -> tuple[Ph
     loudness = measure_loudness(recording)
     pieces = list(_pieces(loudness))
     found: list[Phrase] = []
-    for (first, last), tones in zip(pieces, _all_heard(recording, pieces, pool), strict=True):
+    heard = _all_heard(recording, pieces, loudness, pool)
+    for done, ((first, last), tones) in enumerate(zip(pieces, heard, strict=True), start=1):
         groups = _groups(tones, loudness)
         if groups:
             found += _phrases(groups, (first, last), loudness)
         else:
             found.append(_other(first, last, loudness))
+        if on_piece:
+            on_piece(done, len(pieces))
     return _with_pauses(found, loudness)
 
 
@@ -131,7 +140,7 @@ def _room(level: Floats) -> Floats:
 
 
 def _pieces(loudness: Loudness) -> Iterator[tuple[int, int]]:
-    """Yield (first, last) step, last excluded, of what sounds without a pause, a minute at most."""
+    """Yield (first, last) step, last excluded, of what sounds without a pause."""
     edges = np.flatnonzero(np.diff(loudness.sounds, prepend=False, append=False))
     joined: list[list[int]] = []
     for first, last in edges.reshape(-1, 2).tolist():
@@ -139,14 +148,13 @@ def _pieces(loudness: Loudness) -> Iterator[tuple[int, int]]:
             joined[-1][1] = last
         else:
             joined.append([first, last])
-    for first, last in joined:
-        if last - first >= _SHORTEST_S / STEP_S:
-            yield from _cut_at_quiet(first, last, loudness)
+    yield from ((first, last) for first, last in joined if last - first >= _SHORTEST_S / STEP_S)
 
 
-def _cut_at_quiet(first: int, last: int, loudness: Loudness) -> Iterator[tuple[int, int]]:
-    """Cut what is too long for one piece where it is quietest in the latter half of a minute."""
-    most = round(_LONGEST_PIECE_S / STEP_S)
+def _slices(piece: tuple[int, int], loudness: Loudness) -> Iterator[tuple[int, int]]:
+    """Yield a piece in slices of some seconds, each cut where it is quietest in its latter half."""
+    first, last = piece
+    most = round(_LONGEST_SLICE_S / STEP_S)
     while last - first > most:
         cut = first + most // 2 + int(np.argmin(loudness.level_db[first + most // 2 : first + most]))
         yield first, cut
@@ -155,26 +163,32 @@ def _cut_at_quiet(first: int, last: int, loudness: Loudness) -> Iterator[tuple[i
 
 
 def _all_heard(
-    recording: Recording, pieces: Sequence[tuple[int, int]], pool: Executor | None
-) -> Iterator[tuple[Tone, ...]]:
+    recording: Recording, pieces: Sequence[tuple[int, int]], loudness: Loudness, pool: Executor | None
+) -> Iterator[list[Tone]]:
     """Yield the tones of each piece."""
-    read = (_read(recording, pieces, k) for k in range(len(pieces)))
-    if pool is None:
-        yield from (_heard(piece, start_s) for piece, start_s in read)
-        return
+    slices = [list(_slices(piece, loudness)) for piece in pieces]
+    flat = [each for group in slices for each in group]
+    read = (_read(recording, flat, k) for k in range(len(flat)))
+    heard = starmap(_heard, read) if pool is None else _heard_beside(read, pool)
+    for group in slices:
+        yield [tone for tones in islice(heard, len(group)) for tone in tones]
+
+
+def _heard_beside(read: Iterable[tuple[Recording, float]], pool: Executor) -> Iterator[tuple[Tone, ...]]:
+    """Yield the tones of each slice, heard in a pool, with few slices in memory at a time."""
     waiting: deque[Future[tuple[Tone, ...]]] = deque()
-    for piece, start_s in read:
-        waiting.append(pool.submit(_heard, piece, start_s))
+    for part, start_s in read:
+        waiting.append(pool.submit(_heard, part, start_s))
         if len(waiting) > _WAITING:
             yield waiting.popleft().result()
     yield from (each.result() for each in waiting)
 
 
-def _read(recording: Recording, pieces: Sequence[tuple[int, int]], k: int) -> tuple[Recording, float]:
-    """Return a piece as a recording of its own, with a little of the pauses around it, and its start."""
-    before = pieces[k - 1][1] if k else 0
-    after = pieces[k + 1][0] if k + 1 < len(pieces) else recording.duration_s / STEP_S
-    first, last = (edge * STEP_S for edge in pieces[k])
+def _read(recording: Recording, slices: Sequence[tuple[int, int]], k: int) -> tuple[Recording, float]:
+    """Return a slice as a recording of its own, with a little of the pauses around it, and its start."""
+    before = slices[k - 1][1] if k else 0
+    after = slices[k + 1][0] if k + 1 < len(slices) else recording.duration_s / STEP_S
+    first, last = (edge * STEP_S for edge in slices[k])
     first -= min(_MARGIN_S, 0.5 * (first - before * STEP_S))
     last += min(_MARGIN_S, 0.5 * max(after * STEP_S - last, 0.0))
     start, stop = (min(round(edge * recording.rate_hz), recording.frames) for edge in (first, last))
@@ -182,9 +196,9 @@ def _read(recording: Recording, pieces: Sequence[tuple[int, int]], k: int) -> tu
     return replace(recording, frames=len(samples), _kept=samples), start / recording.rate_hz
 
 
-def _heard(piece: Recording, start_s: float) -> tuple[Tone, ...]:
-    """Return the tones of a piece that last, timed in the whole recording."""
-    heard = (tone for tone in read_tones(piece) if tone.kind != "breath only")
+def _heard(part: Recording, start_s: float) -> tuple[Tone, ...]:
+    """Return the tones of a slice that last, timed in the whole recording."""
+    heard = (tone for tone in read_tones(part) if tone.kind != "breath only")
     return tuple(_later(tone, start_s) for tone in heard if _lasts(tone))
 
 
@@ -286,11 +300,15 @@ def _other(first: int, last: int, loudness: Loudness) -> Phrase:
 
 
 def _is_even(level: Floats) -> bool:
-    """Whether a sound goes on evenly, as breath does; words and steps come and go."""
+    """Whether a sound goes on evenly, as breath does; words and steps come and go, in a long echo too."""
     loud = level > np.quantile(level, 0.9) - _BREATH_DB
     within = np.flatnonzero(loud)
-    core = loud[within[0] : within[-1] + 1]
-    return bool(len(core) * STEP_S >= _BREATH_S and np.mean(core) >= _BREATH_SHARE)
+    core = slice(int(within[0]), int(within[-1]) + 1)
+    if len(level[core]) * STEP_S < _BREATH_S or np.mean(loud[core]) < _BREATH_SHARE:
+        return False
+    inside = level[core][_EDGE_STEPS:-_EDGE_STEPS]
+    tenths = inside[: len(inside) // 10 * 10].reshape(-1, 10).mean(axis=1)
+    return bool(np.std(np.diff(tenths)) < _UNEVEN_DB)
 
 
 def _with_pauses(found: Sequence[Phrase], loudness: Loudness) -> tuple[Phrase, ...]:
