@@ -7,7 +7,7 @@ is looked at.
 
 import os
 import re
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from difflib import get_close_matches
 from pathlib import Path, PurePosixPath
 
@@ -24,7 +24,7 @@ class Finder:
 
     def __init__(self, folder: Path) -> None:
         self.folder = folder
-        self._names: dict[PurePosixPath, list[str]] = {}
+        self._names: dict[PurePosixPath, _Names] = {}
         self._inside: dict[PurePosixPath, bool] = {}
         self._misses = 0
 
@@ -58,13 +58,10 @@ class Finder:
             If it may be one of several.
         """
         here = base
-        for part in parts:
+        for depth, part in enumerate(parts, start=1):
             if not self._is_inside(here):
                 return here
-            names = self._in(here)
-            same = [part] if part in names else [name for name in names if same_name(name) == same_name(part)]
-            if not same and part is parts[-1]:
-                same = [name for name in names if same_name(split_ending(name)[0]) == same_name(part)]
+            same = self._in(here).called(part, without_ending=depth == len(parts))
             if len(same) > 1:
                 raise UnfitFileError(f"may be {' or '.join(map(shown, sorted(same)[:2]))}: write it in full")
             if not same:
@@ -77,13 +74,13 @@ class Finder:
             self._inside[path] = is_inside(self.folder / path, self.folder)
         return self._inside[path]
 
-    def _in(self, folder: PurePosixPath) -> list[str]:
+    def _in(self, folder: PurePosixPath) -> "_Names":
         """Return the names in a folder of the session, none where it is no folder."""
         if folder not in self._names:
             try:
-                self._names[folder] = os.listdir(self.folder / folder)  # noqa: PTH208
+                self._names[folder] = _Names(os.listdir(self.folder / folder))  # noqa: PTH208
             except OSError:
-                self._names[folder] = []
+                self._names[folder] = _Names(())
         return self._names[folder]
 
     def _nearest(self, name: str) -> str:
@@ -91,6 +88,25 @@ class Finder:
         self._misses += 1
         if self._misses > _MOST_GUESSES:
             return ""
-        there = sorted(self._in(PurePosixPath(TAKES_FOLDER)))[:_MOST_COMPARED]
+        there = sorted(self._in(PurePosixPath(TAKES_FOLDER)).all)[:_MOST_COMPARED]
         near = get_close_matches(name, there, n=1)
         return f"; did you mean {shown(near[0])}?" if near else f": put it into {TAKES_FOLDER}"
+
+
+class _Names:
+    """The names in one folder, found again whatever their case and spelling."""
+
+    def __init__(self, names: Iterable[str]) -> None:
+        self.all = frozenset(names)
+        self._alike: dict[str, list[str]] = {}
+        self._stems: dict[str, list[str]] = {}
+        for name in self.all:
+            self._alike.setdefault(same_name(name), []).append(name)
+            self._stems.setdefault(same_name(split_ending(name)[0]), []).append(name)
+
+    def called(self, text: str, *, without_ending: bool) -> list[str]:
+        """Return the name that is written exactly so, else those alike, else those with that stem."""
+        if text in self.all:
+            return [text]
+        alike = self._alike.get(same_name(text), [])
+        return alike or (self._stems.get(same_name(text), []) if without_ending else [])
