@@ -7,7 +7,7 @@ theirs, and is not told.
 from collections.abc import Iterable, Mapping, Sequence
 from math import log2
 
-from fluteprobe.flute.fingering import Breath, ladder
+from fluteprobe.flute.fingering import Breath, Fingering, ladder
 from fluteprobe.flute.joint import Heard, Kind
 from fluteprobe.flute.proportions import Known
 from fluteprobe.flute.speak import Try
@@ -87,16 +87,21 @@ def _cents(ratio: float) -> float:
 
 
 def known_rungs(holes: int, heard: Iterable[Heard]) -> dict[int, float]:
-    """Return the ladder's first register in cents, by open holes; a guess at one rung if none was heard."""
+    """Return the ladder's first register in cents, by open holes; a guess at one rung if none was heard.
+
+    The guess is from a higher register, if possible of the ladder, taken as harmonic. A leak at the top hole
+    leaves the second register where it is with that hole closed (common practice, no source).
+    """
     steps = {fingering: k for k, fingering in enumerate(ladder(holes))}
     tones = [each for each in heard if each.is_tone]
-    first = {
-        steps[each.fingering]: each.cents for each in tones if each.resonance == 1 and each.fingering in steps
-    }
+    on_ladder = [each for each in tones if each.fingering in steps]
+    first = {steps[each.fingering]: each.cents for each in on_ladder if each.resonance == 1}
     if first or not tones:
         return first
-    lowest = min(tones, key=lambda each: each.cents - _cents(each.resonance))
-    return {holes - lowest.fingering.closed_from_top: lowest.cents - _cents(lowest.resonance)}
+    lowest = min(on_ladder or tones, key=lambda each: each.cents - _cents(each.resonance))
+    states = str(lowest.fingering)
+    below = states if lowest.resonance == 1 else f"x{states[1:]}"
+    return {holes - Fingering(below).closed_from_top: lowest.cents - _cents(lowest.resonance)}
 
 
 def known_dimensions(survey: Survey) -> Known:
