@@ -106,7 +106,7 @@ def test_every_link_leads_to_a_file(document: str) -> None:
 
 @pytest.fixture(scope="module")
 def help_folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    """Return a folder with a session called heron, its takes as WAV, as the help's examples have it."""
+    """Return a folder with a session called heron, its takes as WAV, and what else the examples need."""
     folder = tmp_path_factory.mktemp("help")
     takes = folder / "heron" / "takes"
     takes.mkdir(parents=True)
@@ -117,6 +117,7 @@ def help_folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
     if not (takes / "oxxxxx.wav").exists():
         shutil.copy(next(takes.glob("oxxxxx*.wav")), takes / "oxxxxx.wav")
     shutil.copy(TOP / "samples" / "evening.flac", folder / "evening.flac")
+    shutil.copytree(TOP / "reports" / "bittern", folder / "bittern", ignore=shutil.ignore_patterns("*.p*"))
     return folder
 
 

@@ -74,7 +74,7 @@ _LINE_MM = 3.7
 _LABEL_MM = 24.0
 _KEY_MM, _KEY_LINE_MM = 12.6, 4.6
 _FOOT_MM = 5.0
-_MOST_NAME_LINES = 5
+_MOST_NAME_LINES, _MOST_NAMES = 5, 80
 _NOTE, _NUMBER, _BOLD = Type(size_pt=10.0), Type(size_pt=8.5), Type(size_pt=8.5, bold=True)
 _COLUMN = Type(size_pt=7.0)
 
@@ -210,9 +210,9 @@ def _plan(comparison: Comparison, tolerance_cents: float, page: Page, top: float
 
 def _name_lines(comparison: Comparison, page: Page) -> list[str]:
     """Return the flutes' numbers and names, in lines; of very many, the first."""
-    names = [f"{k} {name}" for k, name in enumerate(short_names(comparison), start=1)]
+    names = [f"{k} {name}" for k, name in enumerate(short_names(comparison)[:_MOST_NAMES], start=1)]
     lines = wrapped(names, SMALL, page.right_mm - MARGIN_MM, between="  ·  ")
-    if len(lines) > _MOST_NAME_LINES:
+    if len(lines) > _MOST_NAME_LINES or len(names) < len(comparison.flutes):
         lines = [*lines[: _MOST_NAME_LINES - 1], "… and more, in the order they were given"]
     return lines
 
