@@ -53,8 +53,8 @@ def forecast(survey: Survey) -> Forecast:
     fit = fitted(believed_shape(survey.flute.holes, rungs, known), heard)
     disagreements = _disagreements(fit)
     if _is_unfit(fit, disagreements):
-        plain = fitted(believed_shape(survey.flute.holes, rungs, without_dimensions(known)), heard)
-        to_blame = known.has_dimensions and not _is_unfit(plain, _disagreements(plain))
+        plain = believed_shape(survey.flute.holes, rungs, without_dimensions(known))
+        to_blame = known.has_dimensions and _fits(fitted(plain, heard))
         return _none(survey, _DIMENSIONS if to_blame else _TAKES, disagreements)
     return Forecast(
         flute=survey.flute,
@@ -108,6 +108,10 @@ def _is_unfit(fit: Fit, disagreements: Sequence[Disagreement]) -> bool:
         for each in disagreements
     )
     return far or fit.misfit_cents > _MOST_MISFIT_CENTS or fit.strangeness > _MOST_STRANGE
+
+
+def _fits(fit: Fit) -> bool:
+    return not _is_unfit(fit, _disagreements(fit))
 
 
 # --- predictions -------------------------------------------------------------------------------------

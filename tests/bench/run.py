@@ -10,7 +10,18 @@ import sys
 from pathlib import Path
 
 TESTS = Path(__file__).resolve().parent.parent
-PARTS = ("pitch", "speed", "registers", "quality", "drawing", "faults", "hostile", "compare", "split")
+PARTS = (
+    "pitch",
+    "speed",
+    "registers",
+    "quality",
+    "drawing",
+    "faults",
+    "hostile",
+    "compare",
+    "split",
+    "forecast",
+)
 
 
 def main() -> None:
