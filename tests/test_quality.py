@@ -63,8 +63,31 @@ def test_mains_hum(tmp_path: Path, mains_hz: float, level_db: float) -> None:
     assert float(match[2]) == pytest.approx(-level_db, abs=1.0)
 
 
+@pytest.mark.parametrize(("made", "read", "off"), [(44100, 48000, "+147"), (48000, 44100, "-147")])
+@pytest.mark.parametrize("mains_hz", [50.0, 60.0])
+def test_a_wrong_sampling_rate_shows_by_the_hum(made: int, read: int, off: str, mains_hz: float) -> None:
+    """A hum that was 50 or 60 Hz when it was recorded stands elsewhere when it is read at another rate."""
+    samples = faults.hummed(take(), made, mains_hz, -25.0).astype(np.float32)
+    part = Part(start=read, stop=2 * read, frequency_hz=523.0 * read / RATE_HZ, harmonic_to_noise_db=28.0)
+    (caution,) = take_cautions(samples, read, [part])
+    rates = f"{made / 1000:g} kHz were read as {read / 1000:g} kHz"
+    assert caution == (
+        f"wrong sampling rate: the mains hum at {mains_hz * read / made:.1f} Hz, as if {rates}, "
+        f"so that all is {off} cents off; record anew"
+    )
+
+
 def test_hum_that_does_no_harm_is_not_told(tmp_path: Path) -> None:
     assert told(tmp_path, faults.hummed(take(), RATE_HZ, 50.0, -48.0)) == ()
+
+
+def test_a_partial_that_folds_down_is_no_hum() -> None:
+    """852 Hz thinned to 1002 samples a second stands at 150 Hz."""
+    rng = np.random.default_rng(12)
+    tone = np.pad(make_tone(852.3, 1.6, "plain", 60.0, rng).samples, RATE_HZ // 2)
+    part = Part(start=RATE_HZ // 2, stop=2 * RATE_HZ, frequency_hz=852.3, harmonic_to_noise_db=30.0)
+    samples = 0.2 * tone + 5e-4 * faults.coloured(len(tone), RATE_HZ, 1.0, rng)
+    assert not any("hum" in text for text in take_cautions(samples.astype(np.float32), RATE_HZ, [part]))
 
 
 def test_a_low_tone_at_a_multiple_of_the_mains_is_no_hum(tmp_path: Path) -> None:

@@ -12,7 +12,8 @@ counted on takes with and without each fault is in DEVELOPERS.md.
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from itertools import pairwise
+from itertools import pairwise, product
+from math import log2, log10
 
 import numpy as np
 
@@ -48,6 +49,9 @@ _HUM_OVER = 25.0  # the median of exponential noise is ln 2 of its mean: chance 
 _HUM_ALONE_OVER = 250.0
 _HUM_UNDER_TONE_DB = -40.0
 _TONE_SHARE = 0.05
+_FOLDED = 12  # partials that are strong enough to be seen folded down
+_FOLDED_HZ = 3.0
+_CONFUSED_RATES = ((44100, 48000), (48000, 44100))  # made at the one, read at the other
 
 
 def take_cautions(samples: Samples, rate_hz: int, parts: Sequence[Part]) -> tuple[str, ...]:
@@ -124,18 +128,43 @@ def _levelled(low: Floats, tones: Sequence[Stretch]) -> Floats:
 
 
 def _hum(slow: _Slow, course: Course, parts: Sequence[Part]) -> str | None:
-    """Tell mains hum that stands less than 40 dB under the tone."""
+    """Tell mains hum that stands less than 40 dB under the tone, and one that stands at no mains frequency.
+
+    Mains keep within 0.2 Hz of 50 or 60 Hz (common practice, no source).
+    """
     spectrum = _power(slow)
-    found = [(mains, *_hum_lines(spectrum, mains, parts)) for mains in MAINS_HZ]
-    mains, over, power = max(found, key=lambda each: each[2])
-    told = sum(each > _HUM_OVER for each in over) >= 2 or max(over, default=0.0) > _HUM_ALONE_OVER
-    level = 10.0 * np.log10(power + 1e-20)
-    if not told or level < course.tone_db + _HUM_UNDER_TONE_DB:
-        return None
-    return (
-        f"mains hum ({mains:.0f} Hz): {_apart(level - course.tone_db)} the tone; "
-        "move away from lamps and chargers, or unplug the recorder"
-    )
+    for mains, level in ((mains, _hum_db(spectrum, mains, parts)) for mains in MAINS_HZ):
+        if level is not None and level > course.tone_db + _HUM_UNDER_TONE_DB:
+            return (
+                f"mains hum ({mains:.0f} Hz): {_apart(level - course.tone_db)} the tone; "
+                "move away from lamps and chargers, or unplug the recorder"
+            )
+    return _wrong_rate(spectrum, course, parts)
+
+
+def _wrong_rate(spectrum: tuple[float, float, Floats], course: Course, parts: Sequence[Part]) -> str | None:
+    """Tell a hum that stands where mains would if the recording were read at the wrong one of two rates."""
+    for (made, read), mains in product(_CONFUSED_RATES, MAINS_HZ):
+        hz = mains * read / made
+        level = _hum_db(spectrum, hz, parts, alone=False)
+        if level is not None and level > course.tone_db + _HUM_UNDER_TONE_DB:
+            rates = f"{made / 1000:g} kHz were read as {read / 1000:g} kHz"
+            off_cents = 1200.0 * log2(read / made)
+            return (
+                f"wrong sampling rate: the mains hum at {hz:.1f} Hz, as if {rates}, "
+                f"so that all is {off_cents:+.0f} cents off; record anew"
+            )
+    return None
+
+
+def _hum_db(
+    spectrum: tuple[float, float, Floats], mains_hz: float, parts: Sequence[Part], *, alone: bool = True
+) -> float | None:
+    """Return the level of hum at a frequency's multiples; None where neither two nor a clear one is there."""
+    over, power = _hum_lines(spectrum, mains_hz, parts)
+    several = sum(each > _HUM_OVER for each in over) >= 2
+    clear = alone and max(over, default=0.0) > _HUM_ALONE_OVER
+    return 10.0 * log10(power + 1e-20) if several or clear else None
 
 
 def _power(slow: _Slow) -> tuple[float, float, Floats]:
@@ -155,7 +184,7 @@ def _hum_lines(
     over, total = [], 0.0
     for hz in (k * mains_hz for k in range(1, _HUM_LINES + 1)):
         place = round(hz / line_hz)
-        near = any(abs(hz / part.frequency_hz - 1.0) < _TONE_SHARE for part in parts)
+        near = any(_is_the_tones(hz, part.frequency_hz, slow_rate_hz) for part in parts)
         if near or place - aside < 1 or place + aside >= len(power):
             continue
         peak = place - reach + int(np.argmax(power[place - reach : place + reach + 1]))
@@ -165,6 +194,13 @@ def _hum_lines(
         over.append(float(power[peak]) / max(median(beside), 1e-30))
         total += float(power[peak - 1 : peak + 2].sum()) / passed**2 if over[-1] > _HUM_OVER else 0.0
     return over, total
+
+
+def _is_the_tones(hz: float, tone_hz: float, slow_rate_hz: float) -> bool:
+    """Whether the tone itself, or a partial of it that thinning folds down, may stand at a frequency."""
+    partials = np.arange(1, _FOLDED + 1) * tone_hz
+    folded = np.abs(partials - slow_rate_hz * np.round(partials / slow_rate_hz))
+    return abs(hz / tone_hz - 1.0) < _TONE_SHARE or bool(np.any(np.abs(folded - hz) < _FOLDED_HZ))
 
 
 def _apart(level_db: float) -> str:
