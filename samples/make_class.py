@@ -9,6 +9,7 @@ measuring (TONE_UNCERTAINTY_CENTS); the measurements are then summed up as any o
 import sys
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from functools import cache
 from pathlib import Path
 
 import numpy as np
@@ -62,6 +63,7 @@ CLASS = (
 )  # fmt: skip
 
 
+@cache
 def model() -> Tube:
     """Return the six-hole flute that all of the class are copies of."""
     tube = Tube(

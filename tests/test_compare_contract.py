@@ -116,7 +116,7 @@ ANY_FLUTE = st.builds(
 
 
 @given(st.lists(ANY_FLUTE, min_size=2, max_size=6), st.sampled_from([None, "fingering", "note"]))
-@settings(max_examples=60)
+@settings(max_examples=40)
 def test_any_surveys_compare_to_json_by_the_schema(surveys: list[Survey], by: Any) -> None:
     values = json.loads(json.dumps(comparison_json(compare(surveys, by=by)), allow_nan=False))
     VALIDATOR.validate(values)

@@ -23,7 +23,7 @@ from fluteprobe.pages.comparison import (
     title_of,
     write_comparison,
 )
-from fluteprobe.pages.paper import ACCENT
+from fluteprobe.pages.paper import ACCENT, QUIET
 from fluteprobe.pages.student import remarks_of, student_figures, write_students
 from fluteprobe.survey import Survey
 
@@ -245,5 +245,11 @@ def test_sheets_are_one_document_with_a_page_each(tmp_path: Path) -> None:
 
 def test_the_most_notes_that_fit_a_sheet_are_kept() -> None:
     comparison = compare([sixty_entries(), sixty_entries()], names=["one", "two"])
-    for page in student_figures(comparison):
-        check_page(page)
+    page, _ = student_figures(comparison)
+    check_page(page)
+    labels = labels_on(page)
+    (left_out,) = (int(x.get_text().split()[1]) for x in labels if x.get_text().endswith(" higher"))
+    own = [x for x in labels if " ±" in x.get_text() and x.get_color() == QUIET]
+    rows = len(comparison.rows)
+    assert len(own) == rows - left_out
+    assert 0 < left_out < rows

@@ -6,7 +6,7 @@ more than the uncertainty allows. Then comes how far it is from the others' midd
 them. A note that this flute does not have yet stands there with the fingering that gives it elsewhere.
 
 Conventions: lengths in millimetres, deviations in cents off equal temperament at the comparison's A4. One
-page for each flute; lines grow closer with more notes, and of more than fit, the highest are left out.
+page for each flute; lines grow closer with more notes, and of more than fit, the highest are counted only.
 """
 
 from collections.abc import Iterator, Sequence
@@ -166,6 +166,9 @@ def _draw_sheet(comparison: Comparison, standing: Standing, paper: str, toleranc
     draw_head(page, _head(comparison, standing))
     most = int((_rows_bottom_mm(page) - plan.top_mm) / plan.row_mm)
     stands = standing.rows[:most][::-1]
+    if len(stands) < len(standing.rows):
+        words = f"and {len(standing.rows) - len(stands)} higher"
+        page.text(MARGIN_MM, plan.top_mm - 2.4, words, LABEL, colour=QUIET)
     _draw_strip(page, plan, plan.top_mm + plan.row_mm * len(stands))
     for k, stand in enumerate(stands):
         _draw_stand(page, plan, stand, plan.top_mm + (k + 0.5) * plan.row_mm)
