@@ -157,6 +157,7 @@ def _written(path: Path, content: bytes, lasting: bool) -> Iterator[Path]:
     try:
         with file:
             _write(file, content, path, lasting)
+            del content  # not to be held until all files are in their places
             if fcntl is None:
                 file.close()  # only closed files can be moved there
             yield passing

@@ -2,6 +2,7 @@
 
 import os
 import re
+import tracemalloc
 from dataclasses import replace
 from pathlib import Path
 
@@ -11,6 +12,7 @@ import soundfile
 from longs import evening, holes_of, wanted
 
 from fluteprobe import splitting
+from fluteprobe.files import add_files
 from fluteprobe.flute.alignment import Wanted
 from fluteprobe.session import FluteFacts, Session, SessionError, create_session, read_session
 from fluteprobe.session.names import TakeName
@@ -228,3 +230,12 @@ def test_the_same_recording_gives_the_same_cutting(
 ) -> None:
     recording, cutting = planned
     assert cut(recording, session) == cutting
+
+
+def test_takes_are_written_one_at_a_time_in_memory(tmp_path: Path) -> None:
+    tracemalloc.start()
+    add_files((tmp_path / f"{k}.bin", bytes(2_000_000)) for k in range(10))
+    _, peak = tracemalloc.get_traced_memory()
+    tracemalloc.stop()
+    assert peak < 6_000_000
+    assert len(list(tmp_path.iterdir())) == 10
