@@ -69,7 +69,7 @@ _WIDEST_COLUMN_MM, _STRIP_MM, _WIDE_STRIP_MM = 24.0, 46.0, 88.0
 _DOUBT_FROM_MM = 19.0  # columns with room for an uncertainty too
 _NUMBERS_MM, _DIFFERENCE_MM = 21.0, 48.0
 _GAP_MM = 4.0
-_HEADS_MM = 7.0
+_HEADS_MM, _STAGGER_MM = 7.0, 2.6
 _LINE_MM = 3.7
 _LABEL_MM = 24.0
 _KEY_MM, _KEY_LINE_MM = 12.6, 4.6
@@ -267,17 +267,19 @@ def _head(comparison: Comparison) -> Head:
 
 
 def _draw_columns(page: Page, plan: Plan, bottom: float) -> None:
-    """Draw the heads of the columns: a number each, and a fine line down."""
+    """Draw the heads of the columns: a name or a number each, on two levels where tight; a fine line down."""
     y = plan.top_mm - 2.4
     if not plan.has_columns:
         page.text(plan.left_mm, y, "how many play it", LABEL, colour=QUIET)
         return
     names = [f"{k} {name}" for k, name in enumerate(short_names(plan.comparison), start=1)]
     fit = all(width_mm(name, SMALL) < plan.column_mm - 0.6 for name in names)
+    tight = width_mm(str(len(names)), _COLUMN) > plan.column_mm - 0.8
     for k, name in enumerate(names):
         x = plan.middle_mm(k)
         words, voice = (name, SMALL) if fit else (str(k + 1), _COLUMN)
-        page.text(x, y, words, voice, align="center", colour=QUIET)
+        raised = _STAGGER_MM if tight and not k % 2 else 0.0
+        page.text(x, y - raised, words, voice, align="center", colour=QUIET)
         page.line((x, plan.top_mm), (x, bottom), colour=BAND)
 
 
