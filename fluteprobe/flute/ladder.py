@@ -46,9 +46,8 @@ class Ladder:
         """
         highest_open = self.holes - fingering.closed_from_top
         lowest_open = self.holes - len(fingering.states.rstrip("o"))
-        others = {
-            k: pitch for k, pitch in self.rungs.items() if not (fingering.is_ladder and k == highest_open)
-        }
+        own = highest_open if fingering.is_ladder else None
+        others = {k: pitch for k, pitch in self.rungs.items() if k != own}
         if not others:
             return None
         low_rungs = [pitch for k, pitch in others.items() if k <= lowest_open]

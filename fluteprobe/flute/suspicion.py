@@ -45,6 +45,7 @@ _GAIN = 6.5
 _ALIKE = 2.0
 _MOST_NAMES = 2
 _MOST_BAD_SHARE = 0.5
+_MOST_TRIED = 6  # of the badly explained takes, the worst, in each round
 _ROUNDS = 4
 
 _Takes = Mapping[str, Sequence[Sounding]]
@@ -124,6 +125,7 @@ class _Session:
         self.takes = takes
         self.model = model
         self._registers = {id(tone): _register_shares(tone) for tones in takes.values() for tone in tones}
+        self._known: dict[tuple[object, ...], float] = {}
 
     def ladder(self, labels: _Labels) -> Ladder:
         """Return the ladder that a labelling makes."""
@@ -132,23 +134,27 @@ class _Session:
 
     def likelihoods(self, labels: _Labels) -> dict[str, float]:
         """Return each take's log-likelihood given the others, that of its worst explained tone."""
-        ladder = self.ladder(labels)
-        return {take: self.likelihood(take, labels[take], labels, ladder) for take in self.takes}
+        ladder, groups = self.ladder(labels), _groups(labels)
+        return {take: self.likelihood(take, its, groups[its], ladder) for take, its in labels.items()}
 
     def bad(self, labels: _Labels) -> list[str]:
-        """Return the takes that a labelling explains badly; none where it explains most of them so."""
-        bad = [take for take, value in self.likelihoods(labels).items() if value < _BADLY]
-        return bad if len(bad) <= _MOST_BAD_SHARE * len(labels) else []
+        """Return the takes that a labelling explains worst; none where it explains most of them badly."""
+        value = self.likelihoods(labels)
+        bad = sorted((take for take in value if value[take] < _BADLY), key=lambda take: value[take])
+        return bad[:_MOST_TRIED] if len(bad) <= _MOST_BAD_SHARE * len(labels) else []
 
-    def likelihood(self, take: str, fingering: Fingering, labels: _Labels, ladder: Ladder) -> float:
-        """Return a take's log-likelihood under a fingering, given how the others are labelled."""
-        others = [
-            tone
-            for other, tones in self.takes.items()
-            if other != take and labels[other] == fingering
-            for tone in tones
-        ]
-        return min(self._log_density(tone, fingering, others, ladder) for tone in self.takes[take])
+    def likelihood(self, take: str, fingering: Fingering, group: Sequence[str], ladder: Ladder) -> float:
+        """Return a take's log-likelihood under a fingering, given the takes of that fingering.
+
+        What is asked twice is worked out once.
+        """
+        partners = tuple(other for other in group if other != take)
+        key = (take, fingering, partners, ladder.reach(fingering))
+        if key not in self._known:
+            others = [tone for other in partners for tone in self.takes[other]]
+            densities = (self._log_density(tone, fingering, others, ladder) for tone in self.takes[take])
+            self._known[key] = min(densities)
+        return self._known[key]
 
     def _log_density(
         self, tone: Sounding, fingering: Fingering, others: Sequence[Sounding], ladder: Ladder
@@ -218,6 +224,14 @@ def _normal(x: float, spread: float) -> float:
     return exp(-0.5 * (x / spread) ** 2) / (spread * 2.506628)
 
 
+def _groups(labels: _Labels) -> dict[Fingering, list[str]]:
+    """Return the takes of every fingering."""
+    groups: dict[Fingering, list[str]] = {}
+    for take, fingering in labels.items():
+        groups.setdefault(fingering, []).append(take)
+    return groups
+
+
 # --- other labellings --------------------------------------------------------------------------------
 
 
@@ -251,18 +265,15 @@ def _with_alternatives(changes: Sequence[_Change]) -> _Change:
 
 def _possible(session: _Session, labels: _Labels, bad: Sequence[str]) -> list[_Labels]:
     """Return the labellings worth trying: a bad take under another name, or exchanged with another take."""
-    ladder = session.ladder(labels)
+    ladder, groups = session.ladder(labels), _groups(labels)
     tried: list[_Labels] = []
     for take in bad:
         for fingering in dict.fromkeys([*labels.values(), *rungs(session.holes)]):
-            if fingering == labels[take] or session.likelihood(take, fingering, labels, ladder) < _BADLY:
+            group = groups.get(fingering, ())
+            if fingering == labels[take] or session.likelihood(take, fingering, group, ladder) < _BADLY:
                 continue
             tried.append({**labels, take: fingering})
-            tried += [
-                {**labels, take: fingering, other: labels[take]}
-                for other, its in labels.items()
-                if its == fingering
-            ]
+            tried += [{**labels, take: fingering, other: labels[take]} for other in group]
     return tried
 
 
