@@ -74,8 +74,11 @@ def _part(samples: Samples, tracks: Tracks) -> float | None:
         if tracks.frequency_hz / parts < LOWEST_FUNDAMENTAL_HZ:
             continue
         between = demodulate(samples, tracks.rate_hz, tracks.frequency_hz, orders, periods)
+        loud = _power(between) > least
+        if not loud.any():
+            continue
         line = lines(standing(between, np.interp(between.time_s, tracks.time_s, phase)))
-        alone = (_power(between) > least) & (line.prominence > _ALONE)
+        alone = loud & (line.prominence > _ALONE)
         chance = np.sort(np.where(alone, line.chance, 1.0))
         if chance[0] < sure or chance[1] < _SURE_OF_TWO:
             return 1.0 / parts

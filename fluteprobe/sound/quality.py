@@ -47,6 +47,7 @@ _HUM_LINES = 3
 _HUM_OFF_HZ = 0.5
 _HUM_OVER = 25.0  # the median of exponential noise is ln 2 of its mean: chance 3e-8 a line
 _HUM_ALONE_OVER = 250.0
+_CONFIRMING_DB = 20.0
 _HUM_UNDER_TONE_DB = -40.0
 _TONE_SHARE = 0.05
 _FOLDED = 12  # partials that are strong enough to be seen folded down
@@ -81,6 +82,19 @@ class _Slow:
 
     samples: Floats
     rate_hz: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class _Spectrum:
+    """The low-passed take's power spectrum, lines `line_hz` apart; its sum over a line is its mean square.
+
+    Lines under `faintest` are not asked: they cannot even confirm a hum that is worth telling.
+    """
+
+    rate_hz: float
+    line_hz: float
+    power: Floats
+    faintest: float
 
 
 def _slow(samples: Samples, rate_hz: int) -> _Slow:
@@ -132,9 +146,10 @@ def _hum(slow: _Slow, course: Course, parts: Sequence[Part]) -> str | None:
 
     Mains keep within 0.2 Hz of 50 or 60 Hz (common practice, no source).
     """
-    spectrum = _power(slow)
+    least_db = course.tone_db + _HUM_UNDER_TONE_DB
+    spectrum = _power(slow, least_db)
     for mains, level in ((mains, _hum_db(spectrum, mains, parts)) for mains in MAINS_HZ):
-        if level is not None and level > course.tone_db + _HUM_UNDER_TONE_DB:
+        if level is not None and level > least_db:
             return (
                 f"mains hum ({mains:.0f} Hz): {_apart(level - course.tone_db)} the tone; "
                 "move away from lamps and chargers, or unplug the recorder"
@@ -142,7 +157,7 @@ def _hum(slow: _Slow, course: Course, parts: Sequence[Part]) -> str | None:
     return _wrong_rate(spectrum, course, parts)
 
 
-def _wrong_rate(spectrum: tuple[float, float, Floats], course: Course, parts: Sequence[Part]) -> str | None:
+def _wrong_rate(spectrum: _Spectrum, course: Course, parts: Sequence[Part]) -> str | None:
     """Tell a hum that stands where mains would if the recording were read at the wrong one of two rates."""
     for (made, read), mains in product(_CONFUSED_RATES, MAINS_HZ):
         hz = mains * read / made
@@ -158,7 +173,7 @@ def _wrong_rate(spectrum: tuple[float, float, Floats], course: Course, parts: Se
 
 
 def _hum_db(
-    spectrum: tuple[float, float, Floats], mains_hz: float, parts: Sequence[Part], *, alone: bool = True
+    spectrum: _Spectrum, mains_hz: float, parts: Sequence[Part], *, alone: bool = True
 ) -> float | None:
     """Return the level of hum at a frequency's multiples; None where neither two nor a clear one is there."""
     over, power = _hum_lines(spectrum, mains_hz, parts)
@@ -167,25 +182,31 @@ def _hum_db(
     return 10.0 * log10(power + 1e-20) if several or clear else None
 
 
-def _power(slow: _Slow) -> tuple[float, float, Floats]:
-    """Return rate, spacing of the lines, and the power spectrum, whose sum over a line is its mean square."""
+def _power(slow: _Slow, least_db: float) -> _Spectrum:
+    """Return the power spectrum, for hum of at least a level."""
     window = hann(quick_length(len(slow.samples)))
     lines = np.fft.rfft(slow.samples[: len(window)] * window)
     spectrum = np.square(lines.real) + np.square(lines.imag)
-    return slow.rate_hz, slow.rate_hz / len(window), 2.0 * spectrum / (len(window) * float(np.sum(window**2)))
+    return _Spectrum(
+        rate_hz=slow.rate_hz,
+        line_hz=slow.rate_hz / len(window),
+        power=2.0 * spectrum / (len(window) * float(np.sum(window**2))),
+        faintest=10.0 ** ((least_db - _CONFIRMING_DB) / 10.0),
+    )
 
 
-def _hum_lines(
-    spectrum: tuple[float, float, Floats], mains_hz: float, parts: Sequence[Part]
-) -> tuple[list[float], float]:
+def _hum_lines(spectrum: _Spectrum, mains_hz: float, parts: Sequence[Part]) -> tuple[list[float], float]:
     """Return how far the lowest multiples stand over their neighbours, and the power of those that do."""
-    slow_rate_hz, line_hz, power = spectrum
+    slow_rate_hz, line_hz, power = spectrum.rate_hz, spectrum.line_hz, spectrum.power
     reach, aside = max(round(_HUM_OFF_HZ / line_hz), 1), max(round(8.0 / line_hz), 8)
     over, total = [], 0.0
     for hz in (k * mains_hz for k in range(1, _HUM_LINES + 1)):
         place = round(hz / line_hz)
-        near = any(_is_the_tones(hz, part.frequency_hz, slow_rate_hz) for part in parts)
-        if near or place - aside < 1 or place + aside >= len(power):
+        if place - aside < 1 or place + aside >= len(power):
+            continue
+        if power[place - reach : place + reach + 1].max() < spectrum.faintest:
+            continue
+        if any(_is_the_tones(hz, part.frequency_hz, slow_rate_hz) for part in parts):
             continue
         peak = place - reach + int(np.argmax(power[place - reach : place + reach + 1]))
         wide = 4.0 * hz / slow_rate_hz  # what thinning, by a Hann window four samples wide, passes
