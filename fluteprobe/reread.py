@@ -7,6 +7,7 @@ it is told in one line without control characters.
 
 import json
 import re
+from itertools import pairwise
 from pathlib import Path
 from typing import Any
 
@@ -30,6 +31,7 @@ from fluteprobe.flute.fingering import BREATHS, MAX_HOLES, Fingering
 from fluteprobe.flute.register import REGISTERS, Evidence, RegisterCall
 from fluteprobe.flute.tuning import A4_RANGE_HZ
 from fluteprobe.session import FluteFacts, Problem, Sitting, printable
+from fluteprobe.session.keys import MOST_PLACES
 from fluteprobe.sound.stored import tone_from
 from fluteprobe.survey import Entry, Reading, Survey
 
@@ -120,6 +122,7 @@ def _flute(values: Any) -> FluteFacts:
         key=field(values, "key", _perhaps_text),
         wood=field(values, "wood", _perhaps_text),
         bore_mm=field(values, "bore_mm", _perhaps_above_zero),
+        bore_profile_mm=field_if_there(values, "bore_profile_mm", unless_null(_profile), None),
         wall_mm=field(values, "wall_mm", _perhaps_above_zero),
         holes_mm=field(values, "holes_mm", unless_null(each(_pair))),
         length_mm=field_if_there(values, "length_mm", _perhaps_above_zero, None),
@@ -132,6 +135,21 @@ def _pair(values: Any) -> tuple[float, float]:
     if len(pair) != 2:
         raise UnfitError.found(values, "a distance and a diameter")
     return pair[0], pair[1]
+
+
+def _profile(values: Any) -> tuple[tuple[float, float], ...]:
+    profile = each(_place)(values)
+    going_back = any(later[0] < earlier[0] for earlier, later in pairwise(profile))
+    if going_back or not 2 <= len(profile) <= MOST_PLACES:
+        raise UnfitError.found(values, f"2 to {MOST_PLACES} places, from the sound hole to the foot")
+    return profile
+
+
+def _place(values: Any) -> tuple[float, float]:
+    pair = each(not_below_zero)(values)
+    if len(pair) != 2:
+        raise UnfitError.found(values, "a distance and a diameter")
+    return pair[0], above_zero(pair[1])
 
 
 def _sitting(values: Any) -> Sitting:

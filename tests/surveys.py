@@ -263,6 +263,7 @@ def full_survey() -> Survey:
             survey.flute,
             holes_mm=((105.0, 9.0), (127.0, 9.5)),
             bore_mm=19.0,
+            bore_profile_mm=((0.0, 19.0), (200.0, 18.0), (200.0, 17.5), (385.0, 16.5)),
             length_mm=385.0,
             tolerance_mm=0.5,
         ),

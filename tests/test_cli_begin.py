@@ -58,7 +58,8 @@ def test_a_folder_is_made_and_it_says_what_next() -> None:
 def test_every_fact_is_an_option() -> None:
     flute = FluteFacts(
         name="Wren", holes=2, maker="Osier & Reed", serial="027", key="A", wood="yew", bore_mm=19.5,
-        wall_mm=4.0, holes_mm=((105.0, 9.0), (127.5, 9.5)), length_mm=385.0, tolerance_mm=0.5,
+        bore_profile_mm=((0.0, 20.0), (385.0, 18.5)), wall_mm=4.0,
+        holes_mm=((105.0, 9.0), (127.5, 9.5)), length_mm=385.0, tolerance_mm=0.5,
     )  # fmt: skip
     sitting = Sitting(
         a4_hz=442.0, air_temperature_c=-2.5, reference_temperature_c=20.0, date="2026-01-31", player="Ada",
@@ -66,7 +67,8 @@ def test_every_fact_is_an_option() -> None:
     )  # fmt: skip
     result = begin(
         "new", "--name", "Wren", "--holes", "2", "--maker", "Osier & Reed", "--serial", "027", "--key", "A",
-        "--wood", "yew", "--bore-mm", "19,5 mm", "--wall-mm", "4", "--hole-mm", "105", "9", "--hole-mm",
+        "--wood", "yew", "--bore-mm", "19,5 mm", "--bore-profile-mm", "0", "20 mm",
+        "--bore-profile-mm", "385", "18,5", "--wall-mm", "4", "--hole-mm", "105", "9", "--hole-mm",
         "127,5", "9.5 mm", "--length-mm", "385", "--tolerance-mm", "0,5", "--a4-hz", "442 Hz",
         "--temperature", "−2,5 °C", "--reference-temperature", "20 C", "--date", "2026-01-31",
         "--player", "Ada", "--place", "back room", "--microphone", "phone",
@@ -99,6 +101,11 @@ def test_holes_that_are_measured_are_counted() -> None:
             ["--hole-mm", "127", "9", "--hole-mm", "105", "9"],
             "'--hole-mm': found 127 9, 105 9, expected [[distance from the sound hole, diameter], …] in mm, "
             "top hole first, each farther than the one before",
+        ),
+        (
+            ["--bore-profile-mm", "0", "19"],
+            "'--bore-profile-mm': found 0 19, expected [[distance from the sound hole, bore there], …] in "
+            "mm, from the sound hole to the foot, 2 to 60 of them; an even bore is bore_mm",
         ),
     ],
 )

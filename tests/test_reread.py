@@ -52,9 +52,10 @@ def test_a_survey_comes_back_as_it_was_written(make: Any) -> None:
 
 def test_a_survey_from_before_the_length_was_told_reads_as_one_without_it() -> None:
     values = survey_json(full_survey())
-    older = {key: value for key, value in values["flute"].items() if key not in {"length_mm", "tolerance_mm"}}
+    later = {"bore_profile_mm", "length_mm", "tolerance_mm"}
+    older = {key: value for key, value in values["flute"].items() if key not in later}
     flute = survey_from_json({**values, "flute": older}).flute
-    assert (flute.length_mm, flute.tolerance_mm) == (None, None)
+    assert (flute.bore_profile_mm, flute.length_mm, flute.tolerance_mm) == (None, None, None)
 
 
 # --- what is wrong is told in one line ---------------------------------------------------------------
@@ -69,6 +70,14 @@ def test_a_survey_from_before_the_length_was_told_reads_as_one_without_it() -> N
         (("flute", "holes"), 5, 'tones[0].fingering is "oxxxxx", expected a fingering of 5 holes'),
         (("flute", "holes_mm"), [[1]],
          "flute.holes_mm[0] is a list of 1, expected a distance and a diameter"),
+        (("flute", "bore_profile_mm"), [[0, 19], [385]],
+         "flute.bore_profile_mm[1] is a list of 1, expected a distance and a diameter"),
+        (("flute", "bore_profile_mm"), [[0, 19]],
+         "flute.bore_profile_mm is a list of 1, expected 2 to 60 places, from the sound hole to the foot"),
+        (("flute", "bore_profile_mm"), [[10, 19], [0, 18]],
+         "flute.bore_profile_mm is a list of 2, expected 2 to 60 places, from the sound hole to the foot"),
+        (("flute", "bore_profile_mm"), [[0, 0], [385, 18]],
+         "flute.bore_profile_mm[0] is 0.0, expected a number above 0"),
         (("flute", "length_mm"), -1, "flute.length_mm is -1, expected a number above 0"),
         (("session", "a4_hz"), True, "session.a4_hz is true, expected a number"),
         (("session", "a4_hz"), 300, "session.a4_hz is 300, expected a number from 380 to 500"),

@@ -53,6 +53,7 @@ def test_everything_that_flute_toml_can_say(tmp_path: Path) -> None:
         key = "A minor"
         wood = "yew"
         bore_mm = 19
+        bore_profile_mm = [[0, 19.5], [385, 18.5]]
         wall_mm = 4.5
         holes_mm = [
             [105, 9],
@@ -74,7 +75,8 @@ def test_everything_that_flute_toml_can_say(tmp_path: Path) -> None:
     session = read_session(tmp_path)
     assert session.flute == FluteFacts(
         name="Heron", holes=2, maker="Osier & Reed", serial="27", key="A minor", wood="yew", bore_mm=19.0,
-        wall_mm=4.5, holes_mm=((105.0, 9.0), (127.5, 9.5)), length_mm=385.0, tolerance_mm=0.3,
+        bore_profile_mm=((0.0, 19.5), (385.0, 18.5)), wall_mm=4.5,
+        holes_mm=((105.0, 9.0), (127.5, 9.5)), length_mm=385.0, tolerance_mm=0.3,
     )  # fmt: skip
     assert session.sitting == Sitting(
         a4_hz=442.0, air_temperature_c=22.5, reference_temperature_c=20.0, date="2026-01-31", player="Ada",

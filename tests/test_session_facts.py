@@ -92,8 +92,8 @@ def test_letters_with_marks_are_read_in_every_usual_encoding(heron: Path, encodi
         (
             PLAIN + "colour = 1\n",
             "flute.toml line 3: key colour: not known in [flute]; "
-            "known are name, holes, maker, serial, key, wood, bore_mm, wall_mm, holes_mm, length_mm, "
-            "tolerance_mm",
+            "known are name, holes, maker, serial, key, wood, bore_mm, bore_profile_mm, wall_mm, holes_mm, "
+            "length_mm, tolerance_mm",
         ),
         (
             PLAIN + "a4_hz = 440\n",
@@ -159,6 +159,88 @@ def test_a_fault_is_told_with_its_line_what_was_found_and_what_is_expected(
     heron: Path, text: str, expected: str
 ) -> None:
     assert fault(heron, text) == expected
+
+
+BORE = "[[distance from the sound hole, bore there], …] in mm, from the sound hole to the foot"
+
+
+@pytest.mark.parametrize(
+    ("lines", "told"),
+    [
+        (
+            "bore_profile_mm = [0, 19, 385, 16]",
+            f"line 3: key bore_profile_mm: found [0, 19, 385, 16], expected {BORE}: put each place's two "
+            "numbers into [ ] of their own",
+        ),
+        (
+            "bore_profile_mm = [[0, 19], [385, 16.5, 3]]",
+            f"line 3: key bore_profile_mm: found [[0, 19], [385, 16.5, 3]], expected {BORE}; numbers have a "
+            "point, not a comma: 9.5",
+        ),
+        ("bore_profile_mm = 19", f"line 3: key bore_profile_mm: found 19, expected {BORE}"),
+        (
+            "bore_profile_mm = [[-5, 19], [385, 16]]",
+            f"line 3: key bore_profile_mm: found [[-5, 19], [385, 16]], expected {BORE}",
+        ),
+        (
+            "bore_profile_mm = [[0, 1.9], [385, 1.6]]",
+            f"line 3: key bore_profile_mm: found [[0, 1.9], [385, 1.6]], expected {BORE}",
+        ),
+        (
+            "bore_profile_mm = [[0, 19]]",
+            f"line 3: key bore_profile_mm: found [[0, 19]], expected {BORE}, 2 to 60 of them; an even bore "
+            "is bore_mm",
+        ),
+        (
+            "bore_profile_mm = [[0, 19], [385, 16], [200, 18]]",
+            f"line 3: key bore_profile_mm: found [[0, 19], [385, 16], [200, 18]], expected {BORE}, none "
+            "nearer than the one before; at a step one distance twice",
+        ),
+        (
+            "bore_profile_mm = [[0, 19], [9, 18], [9, 17], [9, 16]]",
+            f"line 3: key bore_profile_mm: found [[0, 19], [9, 18], [9, 17], [9, 16]], expected {BORE}, none "
+            "nearer than the one before; at a step one distance twice",
+        ),
+        (
+            "bore_profile_mm = [[0, 19], [400, 16]]\nlength_mm = 385",
+            "line 3: key bore_profile_mm: found a distance of 400, expected at most 385, where the foot is "
+            "(length_mm)",
+        ),
+        (
+            "bore_profile_mm = [[0, 19], [385, 16]]\nbore_mm = 21",
+            "line 4: key bore_mm: found 21, expected 16 to 19, as bore_profile_mm has it; with that key "
+            "bore_mm may be left out",
+        ),
+        (
+            "bore_profile_mm = [[0, 19] [385, 16]]",
+            "line 3: key bore_profile_mm: found [[0, 19] [385, 16]], expected numbers in brackets with "
+            "commas between: [[105.0, 9.0], [127.0, 9.5]]",
+        ),
+        ("taper = 1", "line 3: key taper: not known in [flute]; did you mean bore_profile_mm?"),
+        (
+            "bore profile = [[0, 19], [385, 16]]",
+            "line 3: found bore profile = [[0, 19], [385, 16]], expected bore_profile_mm before =",
+        ),
+    ],
+)
+def test_what_is_wrong_with_a_bore_s_profile_is_told(heron: Path, lines: str, told: str) -> None:
+    assert fault(heron, f"{PLAIN}{lines}\n") == f"flute.toml {told}"
+
+
+@pytest.mark.parametrize("bore", ["", "bore_mm = 18.2\n"])
+def test_a_bore_s_profile_may_taper_and_step_and_tells_the_bore_at_the_sound_hole(
+    heron: Path, bore: str
+) -> None:
+    text = f"{PLAIN}{bore}bore_profile_mm = [[0, 19], [200, 18], [200, 17.5], [385, 16]]\nlength_mm = 385\n"
+    (heron / "flute.toml").write_text(text)
+    flute = read_session(heron).flute
+    assert flute.bore_profile_mm == ((0.0, 19.0), (200.0, 18.0), (200.0, 17.5), (385.0, 16.0))
+    assert flute.bore_at_head_mm == 19.0
+
+
+def test_without_a_profile_the_bore_is_the_same_at_the_sound_hole() -> None:
+    assert FluteFacts(name="A", holes=6, bore_mm=19.5).bore_at_head_mm == 19.5
+    assert FluteFacts(name="A", holes=6).bore_at_head_mm is None
 
 
 # --- what is no TOML ---------------------------------------------------------------------------------

@@ -36,15 +36,15 @@ _HOLES = Fact("flute", "holes")
 _TEMPERATURE = Fact("session", "air_temperature_c")
 
 
-def _hole_pairs(_ctx: click.Context, _param: click.Parameter, words: tuple[tuple[str, str], ...]) -> Any:
-    """Return each hole's distance and diameter, top hole first, None where none were typed."""
+def _pairs(_ctx: click.Context, param: click.Parameter, words: tuple[tuple[str, str], ...]) -> Any:
+    """Return the pairs that were typed, checked as in the file; None where none were."""
     from fluteprobe.session.keys import KEYS, UnfitError, number_in
     from fluteprobe.session.words import shown
 
     if not words:
         return None
     try:
-        return KEYS["flute"]["holes_mm"].read([[number_in(word) for word in pair] for pair in words])
+        return KEYS["flute"][param.name or ""].read([[number_in(word) for word in pair] for pair in words])
     except UnfitError as error:
         found = shown(", ".join(" ".join(pair) for pair in words))
         raise click.BadParameter(f"found {found}, expected {error}") from None
@@ -63,6 +63,14 @@ def _hole_pairs(_ctx: click.Context, _param: click.Parameter, words: tuple[tuple
 @click.option(
     "--bore-mm", type=Fact("flute", "bore_mm"), metavar="MM", help="Inner diameter of the sounding tube."
 )
+@click.option(
+    "--bore-profile-mm",
+    type=(str, str),
+    multiple=True,
+    callback=_pairs,
+    metavar="FAR WIDE",
+    help="If it tapers or steps: the bore at a distance from the sound hole; once for each place, in order.",
+)
 @click.option("--wall-mm", type=Fact("flute", "wall_mm"), metavar="MM", help="Thickness of its wall.")
 @click.option(
     "--length-mm", type=Fact("flute", "length_mm"), metavar="MM", help="From the sound hole to the foot."
@@ -72,7 +80,7 @@ def _hole_pairs(_ctx: click.Context, _param: click.Parameter, words: tuple[tuple
     "holes_mm",
     type=(str, str),
     multiple=True,
-    callback=_hole_pairs,
+    callback=_pairs,
     metavar="FAR WIDE",
     help="A hole's distance from the sound hole and its diameter; once for each hole, top hole first.",
 )

@@ -133,7 +133,7 @@ def _several(key: str, value: str) -> Cure | None:
 
 def _array(key: str, value: str) -> Cure | None:
     """Tell pairs of numbers whose brackets or commas are wrong."""
-    if key != "holes_mm" and not value.startswith("["):
+    if key not in {"holes_mm", "bore_profile_mm"} and not value.startswith("["):
         return None
     numbers = re.findall(r"[0-9]{1,9}(?:\.[0-9]{1,9})?", value)
     pairs = [f"[{far}, {wide}]" for far, wide in zip(numbers[::2], numbers[1::2], strict=False)]

@@ -22,6 +22,10 @@ class FluteFacts:
 
     `holes_mm` pairs each hole's distance from the sound hole with its diameter, top hole first; `length_mm`
     is from the sound hole to the foot. `tolerance_mm` is the standard uncertainty of all these dimensions.
+
+    `bore_profile_mm` pairs distances from the sound hole with the bore's diameter there, straight in between
+    and even beyond both ends; two diameters at one distance are a step. Where it is given it is the bore, and
+    `bore_mm` only one of its diameters, which may be left out.
     """
 
     name: str
@@ -31,10 +35,16 @@ class FluteFacts:
     key: str | None = None
     wood: str | None = None
     bore_mm: float | None = None
+    bore_profile_mm: tuple[tuple[float, float], ...] | None = None
     wall_mm: float | None = None
     holes_mm: tuple[tuple[float, float], ...] | None = None
     length_mm: float | None = None
     tolerance_mm: float | None = None
+
+    @property
+    def bore_at_head_mm(self) -> float | None:
+        """The bore's diameter at the sound hole: the first of its profile, or that of an even bore."""
+        return self.bore_profile_mm[0][1] if self.bore_profile_mm else self.bore_mm
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -81,7 +91,7 @@ def facts_faults(flute: FluteFacts, sitting: Sitting) -> tuple[str, ...]:
     given = {"flute": _given(flute), "session": _given(sitting)}
     faults: list[str] = []
     values = {table: _read_table(table, given[table], place, faults) for table in KEYS}
-    return (*faults, *_pair_faults(values["flute"], place))
+    return (*faults, *_pair_faults(values["flute"], place), *_bore_faults(values["flute"], place))
 
 
 def _given(values: FluteFacts | Sitting) -> dict[str, Any]:
@@ -205,6 +215,7 @@ def _hole_faults(toml: Toml, flute: Mapping[str, Any], place: _Place) -> Iterato
     if isinstance(given, dict) and "holes" not in given and not meant:
         yield f"{place('flute')}: key holes: missing in [flute], expected holes = 1 to {MAX_HOLES}"
     yield from _pair_faults(flute, place)
+    yield from _bore_faults(flute, place)
 
 
 def _pair_faults(flute: Mapping[str, Any], place: _Place) -> Iterator[str]:
@@ -218,6 +229,26 @@ def _pair_faults(flute: Mapping[str, Any], place: _Place) -> Iterator[str]:
         yield (
             f"{place('flute', 'length_mm')}: key length_mm: found {flute['length_mm']:g}, expected more than "
             f"{pairs[-1][0]:g}, where the lowest hole is: from the sound hole to the foot"
+        )
+
+
+def _bore_faults(flute: Mapping[str, Any], place: _Place) -> Iterator[str]:
+    """Tell whether the bore's profile goes on beyond the foot, or the bore is none of its diameters."""
+    profile = flute.get("bore_profile_mm")
+    if profile is None:
+        return
+    end, length = profile[-1][0], flute.get("length_mm", profile[-1][0])
+    if end > length:
+        yield (
+            f"{place('flute', 'bore_profile_mm')}: key bore_profile_mm: found a distance of {end:g}, "
+            f"expected at most {length:g}, where the foot is (length_mm)"
+        )
+    sizes = [size for _, size in profile]
+    least, most = min(sizes), max(sizes)
+    if not least <= flute.get("bore_mm", least) <= most:
+        yield (
+            f"{place('flute', 'bore_mm')}: key bore_mm: found {flute['bore_mm']:g}, expected {least:g} to "
+            f"{most:g}, as bore_profile_mm has it; with that key bore_mm may be left out"
         )
 
 

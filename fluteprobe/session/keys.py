@@ -18,8 +18,10 @@ from fluteprobe.flute.tuning import A4_RANGE_HZ
 from fluteprobe.session.words import UNSAFE, shown
 
 TEMPERATURE_RANGE_C = (-20.0, 50.0)
+MOST_PLACES = 60  # of a bore's profile
 
 _DISTANCE_MM, _DIAMETER_MM, _LENGTH_MM = (1.0, 3000.0), (0.1, 50.0), (20.0, 4000.0)
+_ALONG_MM, _BORE_MM = (0.0, 4000.0), (2.0, 100.0)
 _HOTTEST_F = 122.0
 _LONGEST_TEXT, _LONGEST_KEY = 200, 40
 _UNITS = r"(?:°\s*[cf]?|[cf]|deg(?:rees)?\.?|celsius|grad|mm|cm|hz|hertz|holes?)"
@@ -30,15 +32,18 @@ _NUMBER = re.compile(
 _OTHER_WORDS = {
     "a4": "a4_hz",
     "air_temperature": "air_temperature_c",
+    "bore_shape": "bore_profile_mm",
     "diameter": "bore_mm",
     "fundamental": "key",
     "material": "wood",
     "mic": "microphone",
     "number_of_holes": "holes",
     "pitch": "a4_hz",
+    "profile": "bore_profile_mm",
     "recorded": "date",
     "reference": "reference_temperature_c",
     "room": "place",
+    "taper": "bore_profile_mm",
     "temp": "air_temperature_c",
     "temperature": "air_temperature_c",
     "temperature_c": "air_temperature_c",
@@ -166,22 +171,38 @@ def _unquoted(value: Any) -> str:
 
 def _hole_pairs(value: Any) -> tuple[tuple[float, float], ...]:
     expected = "[[distance from the sound hole, diameter], …] in mm, top hole first"
-    distance, diameter = _number(*_DISTANCE_MM, "mm"), _number(*_DIAMETER_MM, "mm")
-    try:
-        pairs = tuple((distance(far), diameter(wide)) for far, wide in value)
-    except (TypeError, ValueError):
-        raise UnfitError(f"{expected}{_pair_hint(value)}") from None
+    pairs = _pairs(value, _number(*_DISTANCE_MM, "mm"), _number(*_DIAMETER_MM, "mm"), expected, "hole")
     if any(later[0] <= earlier[0] for earlier, later in pairwise(pairs)):
         raise UnfitError(f"{expected}, each farther than the one before")
     return pairs
 
 
-def _pair_hint(value: Any) -> str:
+def _bore_pairs(value: Any) -> tuple[tuple[float, float], ...]:
+    expected = "[[distance from the sound hole, bore there], …] in mm, from the sound hole to the foot"
+    pairs = _pairs(value, _number(*_ALONG_MM, "mm"), _number(*_BORE_MM, "mm"), expected, "place")
+    if not 2 <= len(pairs) <= MOST_PLACES:
+        raise UnfitError(f"{expected}, 2 to {MOST_PLACES} of them; an even bore is bore_mm")
+    places = [place for place, _ in pairs]
+    if places != sorted(places) or any(places.count(place) > 2 for place in places):
+        raise UnfitError(f"{expected}, none nearer than the one before; at a step one distance twice")
+    return pairs
+
+
+def _pairs(
+    value: Any, first: Reader, second: Reader, expected: str, each: str
+) -> tuple[tuple[float, float], ...]:
+    try:
+        return tuple((first(far), second(wide)) for far, wide in value)
+    except (TypeError, ValueError):
+        raise UnfitError(f"{expected}{_pair_hint(value, each)}") from None
+
+
+def _pair_hint(value: Any, each: str) -> str:
     """Say what is likely wrong with pairs that are none."""
     if not isinstance(value, list) or not value:
         return ""
     if all(isinstance(item, int | float) for item in value):
-        return ": put each hole's two numbers into [ ] of their own" if len(value) > 2 else ""
+        return f": put each {each}'s two numbers into [ ] of their own" if len(value) > 2 else ""
     lengths = {len(item) for item in value if isinstance(item, list)}
     return "; numbers have a point, not a comma: 9.5" if lengths & {3, 4} else ""
 
@@ -196,9 +217,13 @@ KEYS: Mapping[str, Mapping[str, Key]] = MappingProxyType(
             "key": Key(read=_text, example='"A minor"'),
             "wood": Key(read=_text, example='"cherry"'),
             "bore_mm": Key(
-                read=_number(2.0, 100.0, "mm"),
+                read=_number(*_BORE_MM, "mm"),
                 is_number=True,
                 example="19.0            # inner diameter of the sounding tube",
+            ),
+            "bore_profile_mm": Key(
+                read=_bore_pairs,
+                example="[[0.0, 19.0], [385.0, 16.5]]   # if it tapers: distance, bore; at a step one twice",
             ),
             "wall_mm": Key(
                 read=_number(0.2, 50.0, "mm"),
