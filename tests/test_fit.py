@@ -47,6 +47,18 @@ def test_known_dimensions_give_back_length_and_head() -> None:
     assert tube.head_correction_mm == pytest.approx(40.0, abs=2.0)
 
 
+def test_a_tapered_bore_is_fitted_by_its_known_profile() -> None:
+    """A bore from 20 to 16 mm: length and head come back as for an even one."""
+    profile = ((0.0, 20.0), (400.0, 16.0))
+    tube = replace(SIX_HOLES, bore_mm=20.0, profile_mm=profile)
+    heard = heard_of(survey_of_tube(tube, first_takes(), blown=as_believed()))
+    known = Known(wall_mm=4.0, holes_mm=SIX_HOLES.holes_mm, air_c=21.0, profile_mm=profile)
+    tapered = fitted(believed_shape(6, known_rungs(6, heard), known), heard)
+    assert tapered.shape.tube.length_mm == pytest.approx(400.0, abs=1.5)
+    assert tapered.shape.tube.head_correction_mm == pytest.approx(40.0, abs=2.0)
+    assert tapered.misfit_cents < 10.0
+
+
 @pytest.mark.parametrize("random", range(1, 4))
 def test_without_a_ruler_the_uncertainty_covers_the_truth(random: int) -> None:
     """Chi square of the shape's numbers by their covariance: under its 99.9 % point for 17 numbers."""

@@ -189,7 +189,7 @@ def test_a_gap_is_a_note_above_the_first_register_that_nothing_gives() -> None:
     survey = survey_of_tube(SIX_HOLES, [*first_takes(), *upper_takes()])
     top_hz = max(entry.frequency_hz for entry in survey.entries if entry.register == 1)
     played = {entry.note for entry in survey.entries}
-    for each in forecast(survey).predictions:
+    for each in with_upper().predictions:
         fills = (
             each.measured_hz is None and each.note not in played and cents(each.frequency_hz, top_hz) > 50.0
         )

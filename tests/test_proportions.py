@@ -34,6 +34,14 @@ def test_without_a_ruler_the_flute_lies_within_what_is_believed(rungs: dict[int,
     assert np.linalg.eigvalsh(shape.covariance).min() > 0.0
 
 
+def test_a_bore_that_tapers_is_told_by_its_shares() -> None:
+    known = Known(profile_mm=((0.0, 20.0), (380.0, 16.0)), air_c=21.0)
+    shape = believed_shape(6, RUNGS, known)
+    assert shape.values[BORE] == 20.0
+    assert shape.setting.profile == ((0.0, 1.0), (380.0, 0.8))
+    assert known.has_dimensions
+
+
 def test_a_deeper_head_means_holes_nearer_to_it() -> None:
     covariance = believed_shape(6, RUNGS, Known()).covariance
     assert (covariance[HEAD, [LENGTH, *range(FIRST_PLACE, FIRST_PLACE + 6)]] < 0.0).all()
@@ -41,7 +49,7 @@ def test_a_deeper_head_means_holes_nearer_to_it() -> None:
 
 def test_unmeasured_air_is_believed_less_surely() -> None:
     measured, not_measured = (believed_shape(6, RUNGS, Known(air_c=air)) for air in (20.0, None))
-    assert measured.temperature_c == not_measured.temperature_c == 20.0
+    assert measured.setting.temperature_c == not_measured.setting.temperature_c == 20.0
     assert not_measured.covariance[-1, -1] > measured.covariance[-1, -1]
 
 

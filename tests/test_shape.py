@@ -14,6 +14,7 @@ from fluteprobe.flute.shape import (
     LENGTH,
     WALL,
     Reals,
+    Setting,
     followed,
     opening_slopes,
     pitches,
@@ -24,7 +25,7 @@ from fluteprobe.flute.tube import openness_of, resonances
 
 WORDS = [*ladder(6), *(Fingering(word) for word in ("oxxxxx", "xoxxxx", "xxoxoo", "hxxxxx", "xxvxxx"))]
 OPENNESS = openness_of(WORDS)
-AIR_C = SIX_HOLES.temperature_c
+SETTING = Setting(temperature_c=SIX_HOLES.temperature_c)
 STRONG = resonances(SIX_HOLES, WORDS, 3).strength > 5.0  # weaker ones sound on no flute
 
 
@@ -36,14 +37,24 @@ def values_of_six_holes() -> Reals:
 
 
 def test_a_shape_is_its_tube_and_back() -> None:
-    assert tube_of(values_of_six_holes(), AIR_C) == SIX_HOLES
+    assert tube_of(values_of_six_holes(), SETTING) == SIX_HOLES
 
 
 @given(st.lists(st.floats(-500.0, 900.0), min_size=17, max_size=17))
 def test_any_numbers_are_some_tube(numbers: list[float]) -> None:
     """The solver may try anything; `Tube` itself refuses what cannot be."""
-    tube = tube_of(np.array(numbers), AIR_C)
+    tube = tube_of(np.array(numbers), SETTING)
     assert len(tube.holes_mm) == 6
+
+
+def test_a_bore_that_narrows_keeps_its_shares() -> None:
+    """The fitted bore is that at the sound hole; the foot is narrower by the same share."""
+    setting = Setting(temperature_c=21.0, profile=((0.0, 1.0), (400.0, 0.8)))
+    values = values_of_six_holes()
+    values[BORE] = 20.0
+    tube = tube_of(values, setting)
+    assert tube.profile_mm == ((0.0, 20.0), (400.0, 16.0))
+    assert np.nanmax(np.abs(pitches(tube, OPENNESS, 1) - pitches(SIX_HOLES, OPENNESS, 1))) > 5.0
 
 
 def test_followed_resonances_are_the_peaks_that_a_search_finds() -> None:
@@ -58,7 +69,7 @@ def test_a_resonance_that_is_not_there_stays_unknown() -> None:
     near = pitches(SIX_HOLES, OPENNESS, 3)
     near[2, 1] = np.nan
     assert np.isnan(followed(SIX_HOLES, OPENNESS, near)[2, 1])
-    assert np.isnan(slopes(values_of_six_holes(), AIR_C, OPENNESS, near)[2, 1]).all()
+    assert np.isnan(slopes(values_of_six_holes(), SETTING, OPENNESS, near)[2, 1]).all()
 
 
 @pytest.mark.parametrize("number", [LENGTH, BORE, WALL, HEAD, FIRST_PLACE + 2, FIRST_PLACE + 6 + 4])
@@ -68,15 +79,15 @@ def test_slopes_are_what_a_changed_tube_does(number: int) -> None:
     step = np.zeros(len(values))
     step[number] = 0.2
     here = pitches(SIX_HOLES, OPENNESS, 2)
-    high, low = (pitches(tube_of(values + sign * step, AIR_C), OPENNESS, 2) for sign in (1.0, -1.0))
+    high, low = (pitches(tube_of(values + sign * step, SETTING), OPENNESS, 2) for sign in (1.0, -1.0))
     difference = (high - low) / 0.4
-    off = np.abs(slopes(values, AIR_C, OPENNESS, here)[..., number] - difference)[STRONG[:, :2]]
+    off = np.abs(slopes(values, SETTING, OPENNESS, here)[..., number] - difference)[STRONG[:, :2]]
     assert off.max() < 0.03 * np.abs(difference).max() + 0.02
 
 
 def test_warm_air_moves_every_resonance_alike() -> None:
     here = pitches(SIX_HOLES, OPENNESS, 2)
-    assert (slopes(values_of_six_holes(), AIR_C, OPENNESS, here)[..., -1] == 1.0).all()
+    assert (slopes(values_of_six_holes(), SETTING, OPENNESS, here)[..., -1] == 1.0).all()
 
 
 def test_opening_a_hole_further_is_what_another_openness_does() -> None:

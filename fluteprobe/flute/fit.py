@@ -120,7 +120,7 @@ class _Misses:
         self.root = np.linalg.cholesky(believed.covariance)
         self.start = np.linalg.solve(self.root, start - believed.values)
         self.is_bump = np.array([not each.is_tone for each in heard] + [False] * len(start))
-        self._at = pitches(tube_of(start, believed.temperature_c), self.openness, max(self.pick[1]) + 1)
+        self._at = pitches(tube_of(start, believed.setting), self.openness, max(self.pick[1]) + 1)
         self._steps = self.start
 
     def values(self, steps: Reals) -> Reals:
@@ -130,7 +130,7 @@ class _Misses:
         return np.append(np.nan_to_num((self._pitch(steps)[self.pick] - self.wanted) / self.spread), steps)
 
     def jacobian(self, steps: Reals) -> Reals:
-        moved = slopes(self.values(steps), self.believed.temperature_c, self.openness, self._pitch(steps))
+        moved = slopes(self.values(steps), self.believed.setting, self.openness, self._pitch(steps))
         return np.vstack([
             np.nan_to_num(moved[self.pick] @ self.root / self.spread[:, None]), np.eye(len(steps))
         ])  # fmt: skip
@@ -143,7 +143,7 @@ class _Misses:
     def _pitch(self, steps: Reals) -> Reals:
         """Return the resonances, followed from the shape before; the solver asks twice for the same one."""
         if not np.array_equal(steps, self._steps):
-            tube = tube_of(self.values(steps), self.believed.temperature_c)
+            tube = tube_of(self.values(steps), self.believed.setting)
             self._at = followed(tube, self.openness, self._at, _FOLLOWING_STEPS)
             self._steps = steps.copy()
         return self._at

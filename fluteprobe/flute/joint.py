@@ -139,7 +139,7 @@ class Joint:
         openness = openness_of(self.fingerings)
         self.resonances: Resonances = resonances(shape.tube, openness, COUNT)
         self.pitch = np.asarray(1200.0 * np.log2(self.resonances.frequency_hz))
-        self._moved = slopes(shape.values, shape.temperature_c, openness, self.pitch)
+        self._moved = slopes(shape.values, shape.setting, openness, self.pitch)
         self._opening = _opening(self.fingerings, opening_slopes(shape.tube, openness, self.pitch))
         self._ease = np.clip(ease(signs_of(self.resonances, 2)), *_EASE_RANGE)
         self._alike = _alike(openness)
@@ -189,7 +189,7 @@ class Joint:
         return Shape(
             values=before.values + gain @ self.surprise,
             covariance=0.5 * (covariance + covariance.T),
-            temperature_c=before.temperature_c,
+            setting=before.setting,
         )
 
     def one_left_out(self) -> tuple[Reals, Reals]:

@@ -12,7 +12,7 @@ from math import hypot, sqrt
 
 import numpy as np
 
-from fluteprobe.flute.shape import BORE, FIRST_PLACE, HEAD, LENGTH, WALL, Reals, Shape
+from fluteprobe.flute.shape import BORE, FIRST_PLACE, HEAD, LENGTH, WALL, Reals, Setting, Shape
 from fluteprobe.flute.tube import FOOT_CORRECTION
 from fluteprobe.flute.tuning import speed_of_sound_m_per_s
 
@@ -34,21 +34,35 @@ _CENTS_PER_C = 3.0
 class Known:
     """What a maker measured, in mm, None where not: `holes_mm` as (distance from the sound hole, diameter).
 
-    `tolerance_mm` is how far each may be off (one standard deviation). `air_c` is the air's temperature in
-    °C.
+    `profile_mm` is the bore where it is not even, as (distance from the sound hole, diameter); `bore_mm` is
+    then that at the sound hole. `tolerance_mm` is how far each may be off (one standard deviation). `air_c`
+    is the air's temperature in °C.
     """
 
     bore_mm: float | None = None
     wall_mm: float | None = None
     length_mm: float | None = None
     holes_mm: tuple[tuple[float, float], ...] | None = None
+    profile_mm: tuple[tuple[float, float], ...] = ()
     tolerance_mm: float = 0.3
     air_c: float | None = None
 
     @property
+    def profile(self) -> tuple[tuple[float, float], ...]:
+        """The bore's profile as shares of that at the sound hole; empty where it is even or not known."""
+        return tuple((place, size / self.profile_mm[0][1]) for place, size in self.profile_mm)
+
+    @property
+    def head_bore_mm(self) -> float | None:
+        """The bore at the sound hole."""
+        return self.profile_mm[0][1] if self.profile_mm else self.bore_mm
+
+    @property
     def has_dimensions(self) -> bool:
         """Whether any dimension was measured."""
-        return any(each is not None for each in (self.bore_mm, self.wall_mm, self.length_mm, self.holes_mm))
+        return any(
+            each is not None for each in (self.head_bore_mm, self.wall_mm, self.length_mm, self.holes_mm)
+        )
 
 
 def without_dimensions(known: Known) -> Known:
@@ -87,7 +101,9 @@ def believed_shape(holes: int, rungs: Mapping[int, float], known: Known) -> Shap
         _WARMED_CENTS if known.air_c is not None else hypot(_WARMED_CENTS, _CENTS_PER_C * _AIR_SPREAD_C)
     )
     covariance[-1, -1] = air_spread**2
-    return Shape(values=values, covariance=covariance, temperature_c=air_c)
+    return Shape(
+        values=values, covariance=covariance, setting=Setting(temperature_c=air_c, profile=known.profile)
+    )
 
 
 def _whole_ladder(holes: int, rungs: Mapping[int, float]) -> tuple[Reals, Reals]:
@@ -104,7 +120,7 @@ def _whole_ladder(holes: int, rungs: Mapping[int, float]) -> tuple[Reals, Reals]
 def _usual_values(holes: int, half_mm: Reals, known: Known) -> Reals:
     """Return the likeliest shape; `half_mm` holds half a wavelength of every rung."""
     lowest_hz = 1.7e5 / half_mm[0]
-    bore = known.bore_mm or _BORE_MM * sqrt(_BORE_AT_HZ / lowest_hz)
+    bore = known.head_bore_mm or _BORE_MM * sqrt(_BORE_AT_HZ / lowest_hz)
     wall = known.wall_mm or _WALL_MM
     sizes = np.full(holes, _HOLE_BORES * bore)
     if known.holes_mm is not None:
@@ -143,7 +159,7 @@ def _tie_to_head(covariance: Reals, holes: int) -> None:
 
 def _pin(values: Reals, covariance: Reals, known: Known) -> None:
     """Put in what was measured, with its tolerance."""
-    pins = {BORE: known.bore_mm, WALL: known.wall_mm, LENGTH: known.length_mm}
+    pins = {BORE: known.head_bore_mm, WALL: known.wall_mm, LENGTH: known.length_mm}
     for k, (place, size) in enumerate(known.holes_mm or ()):
         pins[FIRST_PLACE + k] = place
         pins[FIRST_PLACE + len(known.holes_mm or ()) + k] = size

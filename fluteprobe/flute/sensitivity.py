@@ -27,7 +27,7 @@ from fluteprobe.flute.tube import FOOT_CORRECTION, Tube, hole_pressures, opennes
 
 CHANGE_MM = 0.1
 
-_DRAWS = 14
+_DRAWS = 10
 _SEED = 7
 _PROBES = 25
 _PROBE_MM = 0.02
@@ -47,9 +47,10 @@ class Measure:
 class TubeWords:
     """The fitted tube in a maker's words.
 
-    `effective_length_mm` is half a wavelength of a plain tube: length and both end corrections together.
-    `pressure_maximum_mm` is where the all-closed first register's pressure swings most, `top_hole_mm` where
-    the top hole is; `stretch_cents` is how far the second resonance of that fingering lies from the octave.
+    `bore_mm` is that at the sound hole. `effective_length_mm` is half a wavelength of a plain tube: length
+    and both end corrections together. `pressure_maximum_mm` is where the all-closed first register's
+    pressure swings most, `top_hole_mm` where the top hole is; `stretch_cents` is how far the second
+    resonance of that fingering lies from the octave.
     """
 
     effective_length_mm: Measure
@@ -80,8 +81,8 @@ class Sensitivity:
 def tube_words(shape: Shape) -> TubeWords:
     """Return what the fit says of the whole tube."""
     draws = _drawn(shape)
-    foot = FOOT_CORRECTION * draws[:, BORE] / 2.0
-    tubes = [tube_of(each, shape.temperature_c) for each in draws]
+    tubes = [tube_of(each, shape.setting) for each in draws]
+    foot = 1000.0 * FOOT_CORRECTION * np.array([tube.radius_at_m(tube.length_mm) for tube in tubes])
     closed = np.zeros((1, shape.holes))
     middle = pitches(shape.tube, closed, 2)
     heard = np.array([followed(tube, closed, middle)[0] for tube in tubes])
@@ -113,8 +114,8 @@ def sensitivities(
     middle = pitches(shape.tube, openness, registers)
     moved = []
     for values in _drawn(shape):
-        at = followed(tube_of(values, shape.temperature_c), openness, middle)
-        moved.append(CHANGE_MM * slopes(values, shape.temperature_c, openness, at))
+        at = followed(tube_of(values, shape.setting), openness, middle)
+        moved.append(CHANGE_MM * slopes(values, shape.setting, openness, at))
     changes = np.array(moved)
     return tuple(
         Sensitivity(

@@ -27,15 +27,26 @@ _STEP_OPEN = 0.01
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class Setting:
+    """What is not fitted: the air's temperature in °C, and how the bore widens and narrows, if it does.
+
+    `profile` pairs places in mm from the sound hole with the bore there as a share of the fitted bore.
+    """
+
+    temperature_c: float
+    profile: tuple[tuple[float, float], ...] = ()
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class Shape:
     """What is believed of a flute's shape: the likeliest values and their covariance.
 
-    `values` has shape (2 holes + 5,), `covariance` the same twice; the air is at `temperature_c`.
+    `values` has shape (2 holes + 5,), `covariance` the same twice.
     """
 
     values: Reals
     covariance: Reals
-    temperature_c: float
+    setting: Setting
 
     @property
     def holes(self) -> int:
@@ -45,10 +56,10 @@ class Shape:
     @property
     def tube(self) -> Tube:
         """The tube of the likeliest values."""
-        return tube_of(self.values, self.temperature_c)
+        return tube_of(self.values, self.setting)
 
 
-def tube_of(values: Reals, temperature_c: float) -> Tube:
+def tube_of(values: Reals, setting: Setting) -> Tube:
     """Return the tube of a shape; what no tube can have (tiny holes, holes that cross) is cut off."""
     holes = (len(values) - FIRST_PLACE - 1) // 2
     order = np.arange(holes + 1)
@@ -62,7 +73,8 @@ def tube_of(values: Reals, temperature_c: float) -> Tube:
         wall_mm=float(wall),
         holes_mm=tuple((float(place), float(size)) for place, size in zip(places[:-1], sizes, strict=True)),
         head_correction_mm=float(head),
-        temperature_c=temperature_c,
+        temperature_c=setting.temperature_c,
+        profile_mm=tuple((place, float(share * bore)) for place, share in setting.profile),
     )
 
 
@@ -86,19 +98,19 @@ def followed(tube: Tube, openness: Reals, near_cents: Reals, rounds: int = 4) ->
     return np.asarray(np.where(known, 1200.0 * np.log2(frequency), np.nan))
 
 
-def slopes(values: Reals, temperature_c: float, openness: Reals, at_cents: Reals) -> Reals:
+def slopes(values: Reals, setting: Setting, openness: Reals, at_cents: Reals) -> Reals:
     """Return how resonances move with the shape, cents per mm (air: cents per cent).
 
     The shape is (fingerings, count, numbers in the shape); `at_cents` are the resonances of that shape.
     """
     known = np.isfinite(at_cents)
     frequency = np.where(known, 2.0 ** (at_cents / 1200.0), 100.0)
-    impedance, slope = _line(tube_of(values, temperature_c), openness, frequency)
+    impedance, slope = _line(tube_of(values, setting), openness, frequency)
     moved = np.ones((*at_cents.shape, len(values)))
     for k in range(len(values) - 1):
         changed = values.copy()
         changed[k] += _STEP_MM
-        there = 1.0 / input_admittance(tube_of(changed, temperature_c), openness, frequency)
+        there = 1.0 / input_admittance(tube_of(changed, setting), openness, frequency)
         moved[..., k] = -((there - impedance) / slope).real / _STEP_MM
     moved[..., :-1] *= (1200.0 / np.log(2.0) / frequency)[..., None]
     return np.asarray(np.where(known[..., None], moved, np.nan))
