@@ -200,12 +200,13 @@ def _doubted(reading: Reading, doubt: str | None) -> Reading:
 def _dimensions(session: Session) -> Dimensions | None:
     """Return the dimensions where flute.toml gives bore, wall and holes; air unknown is taken as 20 °C."""
     flute, air_c = session.flute, session.sitting.air_temperature_c
-    if flute.bore_mm is None or flute.wall_mm is None or flute.holes_mm is None:
+    if flute.bore_at_head_mm is None or flute.wall_mm is None or flute.holes_mm is None:
         return None
     return Dimensions(
-        bore_mm=flute.bore_mm,
+        bore_mm=flute.bore_at_head_mm,
         wall_mm=flute.wall_mm,
         holes_mm=flute.holes_mm,
+        profile_mm=flute.bore_profile_mm or (),
         temperature_c=20.0 if air_c is None else air_c,
     )
 

@@ -1,5 +1,6 @@
 """The acoustic model as a witness, fitted to a flute whose truth is known: the tube itself."""
 
+from dataclasses import replace
 from math import log2
 
 import numpy as np
@@ -15,6 +16,8 @@ TUBE = Tube(
     bore_mm=19.0, length_mm=385.0, wall_mm=4.0, holes_mm=HOLES_MM, head_correction_mm=44.0, temperature_c=22.0
 )
 GIVEN = Dimensions(bore_mm=19.0, wall_mm=4.0, holes_mm=HOLES_MM, temperature_c=22.0)
+TAPERED_MM = ((0.0, 20.0), (385.0, 15.0))
+STEPPED_MM = ((0.0, 19.0), (230.0, 19.0), (230.0, 16.0), (385.0, 16.0))
 ASKED = [Fingering("xxxxxx"), Fingering("oxxxxx"), Fingering("hxxxxx")]
 
 
@@ -41,6 +44,24 @@ def test_upper_resonances_are_told_from_the_ladder_alone() -> None:
     true = resonances(TUBE, ASKED, 3).frequency_hz
     told = np.array([model.resonances_hz[fingering] for fingering in ASKED])
     assert 1200.0 * np.log2(told / true) == pytest.approx(np.zeros((3, 3)), abs=12.0)
+
+
+@pytest.mark.parametrize("profile", [TAPERED_MM, STEPPED_MM], ids=["tapered", "stepped"])
+def test_a_bore_that_is_not_even_is_told_by_its_profile(profile: tuple[tuple[float, float], ...]) -> None:
+    """Within 3 cents with the profile, which leaves only length and head open; 35 and more astray without."""
+    tube = replace(TUBE, bore_mm=profile[0][1], profile_mm=profile)
+    asked = [Fingering(word) for word in ("xxxxxx", "oxxxxx", "xxxxxo", "xxxooo", "xoxxxx")]
+    true = resonances(tube, asked, 3).frequency_hz
+    told = replace(GIVEN, bore_mm=profile[0][1], profile_mm=profile)
+    even = replace(GIVEN, bore_mm=0.5 * (profile[0][1] + profile[-1][1]))
+    models = [fitted_model(dimensions, rungs(tube), asked) for dimensions in (told, even)]
+    off = [
+        1200.0 * np.log2(np.array([model.resonances_hz[each] for each in asked]) / true)
+        for model in models
+        if model is not None
+    ]
+    assert np.abs(off[0]).max() < 3.0
+    assert np.abs(off[1]).max() > 35.0
 
 
 @pytest.mark.parametrize("register", [1, 2, 3])

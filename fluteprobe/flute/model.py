@@ -36,11 +36,15 @@ _STRAY = 1e-5
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Dimensions:
-    """What flute.toml tells of a flute's bore: mm, holes as (distance from the sound hole, diameter)."""
+    """What flute.toml tells of a flute's bore: mm, holes as (distance from the sound hole, diameter).
+
+    `bore_mm` is the bore at the sound hole, and everywhere but where `profile_mm` tells more (see `Tube`).
+    """
 
     bore_mm: float
     wall_mm: float
     holes_mm: tuple[tuple[float, float], ...]
+    profile_mm: tuple[tuple[float, float], ...] = ()
     temperature_c: float = 20.0
 
 
@@ -109,6 +113,7 @@ def _first_guess(dimensions: Dimensions, lowest: int, rungs: Mapping[int, float]
         length_mm=max(length, last_hole + dimensions.bore_mm),
         head_correction_mm=head,
         temperature_c=dimensions.temperature_c,
+        profile_mm=dimensions.profile_mm,
     )
 
 
