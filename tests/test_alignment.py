@@ -57,7 +57,7 @@ def test_most_sounds_of_sittings_with_mishaps_are_told_right_and_the_sure_ones_n
     mishaps: dict[Mishap, int] = {"skips": 1, "repeats": 1, "fails": 1}
     answers = [
         (each.take == true, each.probability)
-        for seed in (5001, 5006, 5009)
+        for seed in (5001, 5006)
         for sitting in [played(seed, mishaps)]
         for each, true in zip(align(sitting.heard, sitting.order).placed, sitting.truth, strict=True)
     ]
@@ -182,13 +182,13 @@ SOUNDS = st.one_of(
 ORDERS = st.lists(st.sampled_from(ORDER[:3] + ORDER[6:8]), min_size=1, max_size=3)
 
 
-@settings(max_examples=30)
+@settings(max_examples=15)
 @given(heard=st.lists(SOUNDS, max_size=2), order=ORDERS)
 def test_the_cheapest_walk_is_the_cheapest_of_all(heard: list[Heard], order: list[Wanted]) -> None:
     assert align(heard, order).cost == pytest.approx(_cheapest_of_all(heard, order), abs=1e-6)
 
 
-@settings(max_examples=20)
+@settings(max_examples=10)
 @given(heard=st.lists(SOUNDS, max_size=12))
 def test_takes_come_in_order_and_chances_add_up(heard: list[Heard]) -> None:
     alignment = align(heard, ORDER)
@@ -201,7 +201,7 @@ def test_takes_come_in_order_and_chances_add_up(heard: list[Heard]) -> None:
         assert (each.part == "stray") == (each.take is None)
 
 
-@settings(max_examples=6)
+@settings(max_examples=3)
 @given(shift=st.floats(-500.0, 500.0))
 def test_another_flute_s_size_changes_no_place(shift: float) -> None:
     heard = [tone(float(each.pitch_cents or 0.0) + shift) for each in as_planned()]
