@@ -24,6 +24,7 @@ Floats = NDArray[np.float64]
 
 _EVEN = 0.55
 _EVEN_DB = 10.0
+_HELD_CENTS = 6.0  # wanders less: a room that fades a tone in and out leaves its pitch, noise does not
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -44,7 +45,8 @@ class Measured:
     def sounds(self) -> bool:
         """Whether there is a tone: a partial that noise alone would not make."""
         uneven = self.evenness < _EVEN and self.harmonic_to_noise_db < _EVEN_DB
-        return bool(np.any(self.amplitude > 0.0)) and not uneven
+        stirred = uneven and self.pitch.wander_cents > _HELD_CENTS
+        return bool(np.any(self.amplitude > 0.0)) and not stirred
 
     @property
     def harmonic_to_noise_db(self) -> float:
