@@ -7,21 +7,22 @@ Impedances and admittances are normalised by the bore's characteristic impedance
 numbers. A resonance is a maximum of the admittance that the jet meets at the sound hole; NaN stands where
 there are fewer resonances than were asked for.
 
-A bore that is no plain cylinder is a row of short ones, each as wide as the bore in its middle; what the flow
-does beyond plane waves at a step is left out.
+A bore that is no plain cylinder is a row of cones and cylinders; what the flow does beyond plane waves at a
+step is left out.
 
 The formulas are published ones, quoted from memory:
 walls       Keefe, JASA 75, 58 (1984): propagation constant for a smooth isothermal wall
 foot        Levine & Schwinger, Phys. Rev. 73, 383 (1948), as fitted by Silva et al., J. Sound Vib. 322 (2009)
 holes       Keefe, JASA 72, 676 (1982); Dalmont et al., Acta Acustica 88, 567 (2002); Lefebvre & Scavone,
             JASA 131, 3153 (2012)
+cones       radius times pressure is a plane wave; Fletcher & Rossing, ch. 8
 sound hole  an acoustic mass; Fletcher & Rossing, The Physics of Musical Instruments, ch. 8 and 16
 """
 
 from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import pairwise
-from math import pi, sqrt
+from math import ceil, pi, sqrt
 
 import numpy as np
 import numpy.typing as npt
@@ -34,7 +35,7 @@ Complexes = npt.NDArray[np.complex128]
 
 FOOT_CORRECTION = 0.6133  # in bore radii, unflanged (Levine & Schwinger 1948)
 
-_LONGEST_PIECE_MM = 5.0  # of a bore that widens or narrows
+_LONGEST_CONE_MM = 60.0  # whose walls' losses are those of its mean radius
 _POINTS_PER_SPACING = 24
 _CHUNK = 64
 _REFINING_STEPS = (1.0, 0.3, 0.05, 0.05, 0.02)  # in grid steps
@@ -241,11 +242,24 @@ class _Air:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class _Piece:
-    """A short cylinder of the bore; `wideness` is its area over that of the tube's `bore_mm`."""
+    """A piece of the bore, a cone or cylinder: its length, and its radius at the upper and the lower end.
+
+    `reference_m` is the radius whose characteristic impedance is 1.
+    """
 
     length_m: float
-    radius_m: float
-    wideness: float
+    upper_m: float
+    lower_m: float
+    reference_m: float
+
+    @property
+    def slope(self) -> float:
+        """How much the radius grows towards the foot, per length."""
+        return (self.lower_m - self.upper_m) / self.length_m
+
+    def propagation(self, air: _Air) -> Complexes:
+        """Return attenuation + j phase constant in 1/m."""
+        return air.propagation(0.5 * (self.upper_m + self.lower_m))
 
 
 def _require_holes(tube: Tube, states: Reals) -> None:
@@ -271,23 +285,54 @@ def _impedance(tube: Tube, states: Reals, frequency_hz: Reals) -> Complexes:
 def _through_bore(z: Complexes, pieces: list[_Piece], air: _Air) -> Complexes:
     """Return the impedance before some pieces of the bore from that after them."""
     for piece in reversed(pieces):
-        tanh = np.tanh(air.propagation(piece.radius_m) * piece.length_m)
-        z = (z + tanh / piece.wideness) / (1.0 + z * tanh * piece.wideness)
+        turn = piece.propagation(air)
+        tanh = np.tanh(turn * piece.length_m)
+        if piece.slope == 0.0:
+            wideness = (piece.upper_m / piece.reference_m) ** 2
+            z = (z + tanh / wideness) / (1.0 + z * tanh * wideness)
+        else:
+            wave, rise = _wave(z, 1.0, piece.lower_m, piece, turn)
+            wave, rise = wave - rise * tanh / turn, rise - wave * tanh * turn
+            pressure, flow = _plain(wave, rise, piece.upper_m, piece, turn)
+            z = pressure / flow
     return np.asarray(z)
 
 
+def _wave(
+    pressure: Complexes, flow: Complexes | float, radius_m: float, piece: _Piece, turn: Complexes
+) -> tuple[Complexes, Complexes]:
+    """Return radius times pressure, and how it rises per metre, at one end of a piece."""
+    return radius_m * pressure, piece.slope * pressure - flow * turn * piece.reference_m**2 / radius_m
+
+
+def _plain(
+    wave: Complexes, rise: Complexes, radius_m: float, piece: _Piece, turn: Complexes
+) -> tuple[Complexes, Complexes]:
+    """Return pressure and flow at one end of a piece: the way back from `_wave`."""
+    pressure = wave / radius_m
+    return pressure, (piece.slope * pressure - rise) * radius_m / (turn * piece.reference_m**2)
+
+
 def _pieces(tube: Tube, upper_mm: float, lower_mm: float) -> list[_Piece]:
-    """Return the cylinders that stand for a stretch of the bore, from head to foot."""
-    turns = [upper_mm, *(place for place, _ in tube.profile_mm if upper_mm < place < lower_mm), lower_mm]
+    """Return the cones and cylinders that a stretch of the bore consists of, from head to foot."""
+    turns = {upper_mm, *(place for place, _ in tube.profile_mm if upper_mm < place < lower_mm), lower_mm}
     pieces = []
-    for first_mm, last_mm in pairwise(turns):
-        count = int(np.ceil((last_mm - first_mm) / _LONGEST_PIECE_MM)) if tube.profile_mm else 1
-        step_mm = (last_mm - first_mm) / max(count, 1)
-        for middle_mm in first_mm + step_mm * (np.arange(count) + 0.5):
-            radius_m = tube.radius_at_m(float(middle_mm))
-            wideness = (radius_m / tube.radius_m) ** 2
-            pieces.append(_Piece(length_m=step_mm / 1000.0, radius_m=radius_m, wideness=wideness))
+    for first_mm, last_mm in pairwise(sorted(turns)):
+        count = ceil((last_mm - first_mm) / _LONGEST_CONE_MM) if tube.profile_mm else 1
+        step_mm = (last_mm - first_mm) / count
+        pieces += [_piece(tube, first_mm + k * step_mm, step_mm) for k in range(count)]
     return pieces
+
+
+def _piece(tube: Tube, upper_mm: float, length_mm: float) -> _Piece:
+    """Return a piece without turns; its ends' radii follow from two places within, clear of steps."""
+    above, below = (tube.radius_at_m(upper_mm + share * length_mm) for share in (1.0 / 3.0, 2.0 / 3.0))
+    return _Piece(
+        length_m=length_mm / 1000.0,
+        upper_m=2.0 * above - below,
+        lower_m=2.0 * below - above,
+        reference_m=tube.radius_m,
+    )
 
 
 def _foot_impedance(tube: Tube, air: _Air) -> Complexes:
@@ -345,8 +390,8 @@ def _covered_end(outer_m: float, hole_m: float, openness: Reals, air: _Air) -> C
     """Return the admittance of a hole's outer end, normalised by the hole's own characteristic impedance.
 
     The outer correction on a cylinder of radius `outer_m` is Dalmont's (2002); a partly covered hole is a
-    diaphragm there, its inner correction after Kergomard & Garcia, J. Sound Vib. 114, 465 (1987), with viscous
-    friction.
+    diaphragm there, its inner correction after Kergomard & Garcia, J. Sound Vib. 114, 465 (1987), with
+    viscous friction.
     """
     root = np.sqrt(openness)
     outside = 0.82 - 0.47 * (hole_m / outer_m) ** 0.8
@@ -435,10 +480,9 @@ def _along(
 ) -> tuple[Complexes, Complexes]:
     """Return pressure and flow after some pieces of the bore from those before them."""
     for piece in pieces:
-        turn = air.propagation(piece.radius_m) * piece.length_m
-        cosh, sinh = np.cosh(turn), np.sinh(turn)
-        pressure, flow = (
-            pressure * cosh - flow * sinh / piece.wideness,
-            flow * cosh - pressure * sinh * piece.wideness,
-        )
+        turn = piece.propagation(air)
+        cosh, sinh = np.cosh(turn * piece.length_m), np.sinh(turn * piece.length_m)
+        wave, rise = _wave(pressure, flow, piece.upper_m, piece, turn)
+        wave, rise = wave * cosh + rise * sinh / turn, rise * cosh + wave * sinh * turn
+        pressure, flow = _plain(wave, rise, piece.lower_m, piece, turn)
     return pressure, flow
