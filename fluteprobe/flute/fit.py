@@ -76,7 +76,7 @@ def fitted(believed: Shape, heard: Sequence[Heard]) -> Fit:
     for gate_cents in _GATES_CENTS:
         used = _numbered(heard, shape, gate_cents)
         shape = _least_squares(believed, shape.values, used)
-    return _refined(believed, shape, used)
+    return _refined(believed, shape, heard)
 
 
 def _numbered(heard: Sequence[Heard], shape: Shape, gate_cents: float) -> list[Heard]:
@@ -177,28 +177,36 @@ def _spread(heard: Heard) -> float:
 
 
 def _refined(believed: Shape, shape: Shape, heard: Sequence[Heard]) -> Fit:
-    """Refine the shape with everything correlated; forgive breath resonances that nothing else foretells."""
-    plain = np.array([each.variance for each in heard])
-    variance = plain
+    """Refine the shape with everything correlated; forgive breath resonances that nothing else foretells.
+
+    Numbers are told anew for each shape: a faint resonance more or less below shifts them.
+    """
     for _ in range(_REFINED):
-        joint = Joint(believed, shape, heard, variance)
-        shape, variance = joint.refined(), _forgiven(joint, plain)
-    joint = Joint(believed, shape, heard, variance)
+        joint = _forgiving(believed, shape, heard)
+        shape = joint.refined()
+    joint = _forgiving(believed, shape, heard)
     deviation, spread = joint.one_left_out()
     return Fit(
         believed=believed,
-        shape=joint.refined(),
-        heard=tuple(heard),
-        variance=variance,
+        shape=replace(joint.refined(), values=shape.values),
+        heard=joint.heard,
+        variance=joint.variance,
         deviation_cents=deviation,
         surprise=deviation / np.sqrt(spread),
-        strangeness=joint.strangeness(np.array([each.is_tone for each in heard])),
+        strangeness=joint.strangeness(np.array([each.is_tone for each in joint.heard])),
     )
+
+
+def _forgiving(believed: Shape, shape: Shape, heard: Sequence[Heard]) -> Joint:
+    numbered = _numbered(heard, shape, _GATES_CENTS[-1])
+    plain = np.array([each.variance for each in numbered])
+    strict = Joint(believed, shape, numbered, plain)
+    return strict.with_variance(_forgiven(strict, plain))
 
 
 def _forgiven(joint: Joint, plain: Reals) -> Reals:
     """Return the scatter, larger for breath resonances that all the rest does not foretell."""
     deviation, variance = joint.one_left_out()
-    excess = np.abs(deviation) / np.sqrt(variance - joint.variance + plain) / _SOFT
+    excess = np.abs(deviation) / np.sqrt(variance) / _SOFT
     is_bump = np.array([not each.is_tone for each in joint.heard])
     return np.where(is_bump, plain * np.maximum(excess, 1.0) ** 2, plain)

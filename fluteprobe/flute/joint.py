@@ -13,6 +13,7 @@ counted on simulated flutes (tests/bench/bench_forecast.py), their spreads widen
 """
 
 from collections.abc import Iterable, Mapping, Sequence
+from copy import copy
 from dataclasses import dataclass
 from types import MappingProxyType
 from typing import Literal, get_args
@@ -76,6 +77,7 @@ _EASE_RANGE = (-2.0, 6.0)
 _LEFT_OUT_CENTS = np.array([4.0, 7.0, 10.0, 14.0])  # by resonance
 _LEFT_OUT_SIZES = (0.35, 0.5, 0.7, 1.0, 1.4, 2.0, 2.8, 4.0)
 _SIZE_SPREAD = 0.7  # of the logarithm
+_LEAST_CERTAINTY = 1e-9  # per cents²; where dimensions are absurd, rounding gives less
 _ALIKE_RESONANCES = 0.5
 _ALIKE_HOLES = 2.0  # holes that differ, over which fingerings cease to be alike
 _ALONE = 0.4  # what is left out of each fingering by itself, beside what is shared
@@ -155,6 +157,13 @@ class Joint:
         self.covariance = shared + self.left_out**2 * rest
         self.variance = variance
 
+    def with_variance(self, variance: Reals) -> "Joint":
+        """Return the same with another scatter, in cents², of what was heard."""
+        other = copy(self)
+        other.covariance = self.covariance + np.diag(variance - self.variance)
+        other.variance = variance
+        return other
+
     def asked(self, wanted: Sequence[tuple[Fingering, int]]) -> Asked:
         """Return tones to foretell, from fingerings and registers (2 or 3)."""
         return Asked(
@@ -198,7 +207,8 @@ class Joint:
         Both follow from the inverse of the covariance alone (Rasmussen & Williams 2006, eq. 5.12).
         """
         inverse = np.linalg.inv(self.covariance)
-        return (inverse @ self.surprise) / np.diag(inverse), 1.0 / np.diag(inverse)
+        certainty = np.maximum(np.diag(inverse), _LEAST_CERTAINTY)
+        return (inverse @ self.surprise) / certainty, 1.0 / certainty
 
     def strangeness(self, chosen: Flags) -> float:
         """Return how improbable the chosen among what was heard are: near 1 where all is as believed.

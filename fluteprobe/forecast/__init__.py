@@ -14,10 +14,11 @@ import numpy as np
 
 from fluteprobe.flute.fingering import Fingering
 from fluteprobe.flute.fit import Fit, fitted
-from fluteprobe.flute.joint import Flags, Joint
+from fluteprobe.flute.joint import Flags, Heard, Joint
 from fluteprobe.flute.plan import take_plan
 from fluteprobe.flute.proportions import believed_shape, without_dimensions
 from fluteprobe.flute.sensitivity import sensitivities, tube_words
+from fluteprobe.flute.shape import Shape
 from fluteprobe.flute.speak import Try, chances
 from fluteprobe.flute.tuning import nearest_note
 from fluteprobe.forecast.choice import in_order, with_ranks
@@ -34,6 +35,8 @@ UPPER_REGISTERS = (2, 3)
 _WIDEST_CENTS = 75.0  # a forecast less sure than this names no note
 _FAR_CENTS, _FAR_SURPRISE = 60.0, 4.5
 _MOST_MISFIT_CENTS, _MOST_STRANGE = 40.0, 3.0
+_NEAREST_HOLES_MM = 5.0  # fingers need more
+_PIN_MM = 1.0
 _MENTIONED_SURPRISE, _MENTIONED = 3.0, 5
 _NEARLY_ALL, _HARDLY_ANY = 0.8, 0.05  # of what is known of a pitch
 
@@ -50,11 +53,11 @@ def forecast(survey: Survey) -> Forecast:
     rungs = known_rungs(survey.flute.holes, heard)
     if not rungs:
         return _none(survey, "no tone whose register is known: record the ladder first, from all closed up")
-    fit = fitted(believed_shape(survey.flute.holes, rungs, known), heard)
-    disagreements = _disagreements(fit)
-    if _is_unfit(fit, disagreements):
+    fit = _fit(believed_shape(survey.flute.holes, rungs, known), heard)
+    disagreements = () if fit is None else _disagreements(fit)
+    if fit is None or _is_unfit(fit, disagreements):
         plain = believed_shape(survey.flute.holes, rungs, without_dimensions(known))
-        to_blame = known.has_dimensions and _fits(fitted(plain, heard))
+        to_blame = known.has_dimensions and _fits(_fit(plain, heard))
         return _none(survey, _DIMENSIONS if to_blame else _TAKES, disagreements)
     return Forecast(
         flute=survey.flute,
@@ -107,11 +110,22 @@ def _is_unfit(fit: Fit, disagreements: Sequence[Disagreement]) -> bool:
         abs(each.deviation_cents) > _FAR_CENTS and abs(each.surprise) > _FAR_SURPRISE
         for each in disagreements
     )
-    return far or fit.misfit_cents > _MOST_MISFIT_CENTS or fit.strangeness > _MOST_STRANGE
+    places = np.array([0.0, *(place for place, _ in fit.shape.tube.holes_mm)])
+    near = bool(np.diff(places).min() < _NEAREST_HOLES_MM)
+    within = fit.misfit_cents < _MOST_MISFIT_CENTS and fit.strangeness < _MOST_STRANGE
+    return far or near or not within
 
 
-def _fits(fit: Fit) -> bool:
-    return not _is_unfit(fit, _disagreements(fit))
+def _fits(fit: Fit | None) -> bool:
+    return fit is not None and not _is_unfit(fit, _disagreements(fit))
+
+
+def _fit(believed: Shape, heard: Sequence[Heard]) -> Fit | None:
+    """Return the fitted tube; None for holes to which no formula applies."""
+    sizes = [size for _, size in believed.tube.holes_mm]
+    if min(sizes) < _PIN_MM or max(sizes) > believed.tube.bore_mm:
+        return None
+    return fitted(believed, heard)
 
 
 # --- predictions -------------------------------------------------------------------------------------
