@@ -271,6 +271,14 @@ def test_impossible_dimensions_are_told_as_such() -> None:
     )
 
 
+@pytest.mark.parametrize("size_mm", [0.2, 45.0])
+def test_holes_like_pins_or_wider_than_the_bore_are_told_as_such(size_mm: float) -> None:
+    holes = tuple((place, size_mm) for place, _ in SIX_HOLES.holes_mm)
+    result = forecast(survey_of_tube(SIX_HOLES, first_takes(), bore_mm=19.0, holes_mm=holes))
+    assert (result.reason or "").startswith("a tube of the dimensions in flute.toml does not sound")
+    assert result.predictions == ()
+
+
 def test_right_dimensions_are_believed() -> None:
     right = survey_of_tube(SIX_HOLES, first_takes(), bore_mm=19.0, wall_mm=4.0, holes_mm=SIX_HOLES.holes_mm)
     assert forecast(right).reason is None

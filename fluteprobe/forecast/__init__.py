@@ -38,7 +38,7 @@ _MOST_MISFIT_CENTS, _MOST_STRANGE = 40.0, 3.0
 _NEAREST_HOLES_MM = 5.0  # fingers need more
 _PIN_MM = 1.0
 _MENTIONED_SURPRISE, _MENTIONED = 3.0, 5
-_NEARLY_ALL, _HARDLY_ANY = 0.8, 0.05  # of what is known of a pitch
+_NEARLY_ALL = 0.8  # of what is known of a pitch
 
 _TAKES = "no tube sounds like these takes: see whether their names are right, those below first"
 _DIMENSIONS = (
@@ -206,7 +206,7 @@ def _basis(joint: Joint, wanted: Wanted, spread: float, keep: Flags) -> Basis:
         return "fitted tube"
     _, without = joint.foretold(joint.asked([wanted]), keep & ~bumps)
     share = 1.0 - (spread / float(without[0])) ** 2
-    return "breath resonance" if share > _NEARLY_ALL else "both" if share > _HARDLY_ANY else "fitted tube"
+    return "breath resonance" if share > _NEARLY_ALL else "both"
 
 
 def _played(survey: Survey) -> list[Fingering]:

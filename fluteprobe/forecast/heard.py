@@ -111,7 +111,7 @@ def known_dimensions(survey: Survey) -> Known:
         bore_mm=flute.bore_mm,
         wall_mm=flute.wall_mm,
         length_mm=flute.length_mm,
-        profile_mm=getattr(flute, "bore_profile_mm", None) or (),
+        profile_mm=flute.bore_profile_mm or (),
         holes_mm=flute.holes_mm,
         tolerance_mm=flute.tolerance_mm or _TOLERANCE_MM,
         air_c=survey.sitting.air_temperature_c,
