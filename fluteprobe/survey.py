@@ -28,6 +28,8 @@ from fluteprobe.session import FluteFacts, Problem, Session, Sitting, Take, read
 from fluteprobe.sound.recording import RecordingError
 from fluteprobe.sound.tone import Tone
 
+# The breath that a register is blown with, the usual one first: of those above the first, and of the first.
+_USUAL: tuple[tuple[Breath, ...], ...] = (("over", "normal", "soft"), ("normal", "soft", "over"))
 _NO_CALL = RegisterCall(register=None, probability=dict.fromkeys(REGISTERS, 1.0 / 3.0))
 
 Progress = Callable[[int, int], None]
@@ -241,20 +243,32 @@ def _pitch_cents(tone: Tone) -> float:
 
 def summed_up(readings: Sequence[Reading], takes: Sequence[Take], sitting: Sitting) -> tuple[Entry, ...]:
     """Return one entry for every fingering and register that was decided, low to high."""
-    groups: dict[tuple[Fingering, Register], list[Reading]] = {}
+    groups: dict[tuple[Fingering, Register], dict[Breath | None, list[Reading]]] = {}
     for reading in readings:
         if (
             reading.fingering is not None
             and reading.call.register is not None
             and reading.tone.kind == "tone"
         ):
-            groups.setdefault((reading.fingering, reading.call.register), []).append(reading)
-    scatter = _pooled_scatter_cents(list(groups.values()))
-    entries = [_entry(group, takes, sitting, scatter) for group in groups.values()]
+            breaths = groups.setdefault((reading.fingering, reading.call.register), {})
+            breaths.setdefault(reading.breath, []).append(reading)
+    scatter = _pooled_scatter_cents([group for breaths in groups.values() for group in breaths.values()])
+    blown = [_as_it_is_blown(register, breaths) for (_, register), breaths in groups.items()]
+    entries = [_entry(group, takes, sitting, scatter) for group in blown]
     first = {entry.fingering: entry for entry in entries if entry.register == 1}
     return tuple(
         sorted((_stretched(entry, first) for entry in entries), key=lambda entry: entry.frequency_hz)
     )
+
+
+def _as_it_is_blown(register: Register, breaths: Mapping[Breath | None, list[Reading]]) -> Sequence[Reading]:
+    """Return the tones of a register as it is usually blown: normally for the first, hard for those above.
+
+    Breath bends a tone: one that was overblown and stayed in the first register is far sharp of what the
+    fingering plays there. It counts where the fingering gave that register in no other way.
+    """
+    usual = _USUAL[register == 1]
+    return breaths[min(breaths, key=lambda breath: usual.index(breath or "normal"))]
 
 
 def _entry(group: Sequence[Reading], takes: Sequence[Take], sitting: Sitting, scatter_cents: float) -> Entry:

@@ -436,6 +436,24 @@ def test_cautions_stand_in_brief_in_the_table_and_in_full_on_stderr(
     ]
 
 
+def test_what_many_takes_share_of_the_room_is_said_once(here: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """As of the first take, on stderr; in the table only what is a take's own."""
+    plain = one_take()
+    hum = "mains hum (50 Hz): {} dB under the tone; move away from lamps and chargers"
+    tones = []
+    for k, name in enumerate(("xxxxxx", "xxxxxo", "xxxxoo", "xxxooo")):
+        tone = reading(name, kind="tone", frequency_hz=330.0)
+        own = (hum.format(20 + k), "clipped: record with less gain")
+        tones.append(
+            replace(tone, tone=replace(tone.tone, cautions=own), call=replace(tone.call, register=1))
+        )
+    measures_as(replace(plain, readings=tuple(tones)), monkeypatch)
+    told = run("measure", "heron").stderr.splitlines()
+    assert told[0] == f"Caution: 4 takes: {hum.format(20)}"
+    assert sum("mains hum" in line for line in told) == 1
+    assert sum("clipped" in line for line in told) == 4
+
+
 def test_an_uncertainty_is_never_shown_as_nought_nor_a_deviation_as_minus_nought() -> None:
     plain = one_take()
     entry = replace(plain.entries[0], cents=-0.04, uncertainty_cents=0.002)

@@ -57,6 +57,14 @@ def test_flutes_in_other_keys_are_compared_by_note() -> None:
     assert "the flutes are of different builds, so they are compared by sounding note" in comparison.cautions
 
 
+def test_rows_are_named_at_the_a4_that_is_told_unless_the_group_leans_together() -> None:
+    """Flutes 53 cents apart lean nowhere, so that 18 flat of E4 is E4; all 45 flat are still one note."""
+    apart = compare([flute("Wren", [-18.0] * ROWS), flute("Coot", [35.0] * ROWS)], by="note")
+    assert {abs(cell.cents) <= 50.0 for row in apart.rows for cell in row.played} == {True}
+    together = compare([flute("Wren", [-45.0] * ROWS), flute("Coot", [-52.0] * ROWS)], by="note")
+    assert all(len(row.played) == 2 for row in together.rows)
+
+
 def test_how_rows_are_made_can_be_chosen() -> None:
     surveys = [flute("Wren", [0.0] * ROWS), flute("Coot", [0.0] * ROWS)]
     assert compare(surveys, by="note").by == "note"

@@ -7,7 +7,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from fluteprobe.flute.bumps import bump_clue
-from fluteprobe.flute.evidence import PRIOR, REGISTERS, Clue, decide
+from fluteprobe.flute.evidence import PRIOR, REGISTERS, Clue, Register, decide
 from fluteprobe.flute.fingering import Breath, Fingering, ladder
 from fluteprobe.flute.ladder import companion_clue, known_ladder, ladder_clue
 from fluteprobe.flute.register import SAME_PITCH_CENTS, Sounding, register_alone, registers_of
@@ -74,6 +74,22 @@ def test_clues_are_combined_by_bayes_rule() -> None:
         assert call.probability[register] == pytest.approx(weight[register] / sum(weight.values()))
     assert call.evidence[0].favours == 1
     assert call.evidence[0].log_odds == pytest.approx(1.0986, abs=1e-4)
+
+
+def test_one_clue_is_outvoted_by_two_as_firm_and_by_no_less() -> None:
+    """250 and 220 to 1 against 29 to 1 leave a chance of 0.05 %; 60 and 60 against 40, more than 0.2 %."""
+
+    def clue(register: Register, odds: float) -> Clue:
+        likelihood = dict.fromkeys(REGISTERS, 1.0) | {register: odds}
+        return Clue(source=f"{odds:g}", likelihood=likelihood, detail="")
+
+    assert decide([clue(1, 250.0), clue(1, 220.0), clue(3, 29.0)]).register == 1
+    assert decide([clue(1, 60.0), clue(1, 60.0), clue(2, 40.0)]).register is None
+    assert decide([clue(1, 50000.0), clue(2, 29.0)]).register is None
+    assert (
+        decide([clue(1, 250.0), clue(1, 220.0), clue(1, 220.0), clue(2, 20.0), clue(3, 20.0)]).register
+        is None
+    )
 
 
 def test_the_whole_ladder_is_the_first_register() -> None:

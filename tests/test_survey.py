@@ -138,6 +138,22 @@ def test_reliability_is_the_share_of_takes_that_gave_it() -> None:
     assert entry.reliability == pytest.approx(1.0 / 3.0)
 
 
+def test_a_register_is_told_by_the_breath_it_is_blown_with() -> None:
+    """Overblown and still in the first register, 70 cents sharp: that is not what the fingering plays."""
+    sharp = replace(reading("hard", 440.0 * 2.0 ** (70.0 / 1200.0), 0.5), breath="over")
+    low, high = reading("low", 440.0, 0.5), replace(reading("high", 885.0, 0.5, register=2), breath="over")
+    takes = [take("low"), replace(take("hard"), breath="over"), replace(take("high"), breath="over")]
+    first, second = summed_up([low, sharp, high], takes, Sitting())
+    assert first.cents == pytest.approx(0.0, abs=1e-6)
+    assert first.uncertainty_cents == pytest.approx(0.5)
+    assert (first.takes, first.tones, first.reliability) == (("low",), 1, 1.0)
+    assert second.takes == ("high",)
+    assert second.uncertainty_cents == pytest.approx(0.5)
+    assert second.reliability == pytest.approx(0.5)
+    (alone,) = summed_up([sharp], takes, Sitting())
+    assert alone.takes == ("hard",)
+
+
 def test_cents_are_carried_to_the_reference_temperature() -> None:
     """From 26 to 20 °C, c going with the root of the absolute temperature: 600 log2(293.15 / 299.15)."""
     sitting = Sitting(air_temperature_c=26.0, reference_temperature_c=20.0)

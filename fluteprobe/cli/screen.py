@@ -21,6 +21,11 @@ from fluteprobe.survey import Entry, Reading, Survey
 
 WIDTH = 80
 SHOW_PROGRESS_AFTER_S = 1.0
+SHARED = 4  # takes with one caution, from which on it is said once for all of them
+
+_SURROUNDINGS = (
+    "nothing above", "mains hum", "a noisy room", "automatic gain", "noise reduction", "wrong sampling rate",
+)  # fmt: skip
 
 _PLAIN = str.maketrans({"♯": "#", "±": "+/-", "−": "-", "–": "-", "…": "...", "·": "|", "°": " ", "’": "'"})
 
@@ -52,14 +57,45 @@ def tell_problems(problems: Iterable[Problem]) -> None:
 
 
 def tell_cautions(readings: Iterable[Reading]) -> None:
-    """Say on stderr which numbers are less sure and why, a line each."""
+    """Say on stderr which numbers are less sure and why, a line each.
+
+    What many takes share, of the room and the recorder, is said once for all of them, as of the first.
+    """
+    readings = list(readings)
+    shared = _shared(readings)
+    said: set[str] = set()
     for reading in readings:
-        place = f"{printable(reading.take)}, {_span(reading)}"
-        for caution in reading.tone.cautions:
-            say(f"Caution: {place}: {printable(caution)}", err=True)
-        if _is_undecided(reading) and reading.fingering is not None:
-            chances = ", ".join(f"{k} {100 * p:.0f} %" for k, p in sorted(reading.call.probability.items()))
-            say(f"Caution: {place}: register undecided ({chances})", err=True)
+        for text in _cautions(reading):
+            kind = _surroundings(text)
+            if kind in said:
+                continue
+            place = f"{printable(reading.take)}, {_span(reading)}"
+            if kind in shared:
+                said.add(kind)
+                place = f"{shared[kind]} takes"
+            say(f"Caution: {place}: {printable(text)}", err=True)
+
+
+def _shared(readings: Iterable[Reading]) -> dict[str, int]:
+    """Return the cautions of room and recorder that many takes share, and how many takes those are."""
+    takes: dict[str, set[str]] = {kind: set() for kind in _SURROUNDINGS}
+    for reading in readings:
+        for text in reading.tone.cautions:
+            takes.get(_surroundings(text), set()).add(reading.take)
+    return {kind: len(names) for kind, names in takes.items() if len(names) >= SHARED}
+
+
+def _surroundings(text: str) -> str:
+    """Return which caution of the room or the recorder a text is, or the text itself."""
+    return next((kind for kind in _SURROUNDINGS if text.startswith(kind)), text)
+
+
+def _cautions(reading: Reading) -> Iterator[str]:
+    """Yield what a tone's cautions say, and whether its register is undecided for no other reason."""
+    yield from reading.tone.cautions
+    if _is_undecided(reading) and reading.fingering is not None and reading.call.caution is None:
+        chances = ", ".join(f"{k} {100 * p:.0f} %" for k, p in sorted(reading.call.probability.items()))
+        yield f"register undecided ({chances})"
 
 
 def tell_written(paths: Iterable[Path], *, as_result: bool = False) -> None:
@@ -198,7 +234,9 @@ def _heard_row(reading: Reading) -> Row:
 def _entry_cautions(entry: Entry, readings: Iterable[Reading]) -> str:
     """Return in brief what is said against the tones that an entry sums up."""
     mine = [r for r in readings if r.fingering == entry.fingering and r.call.register == entry.register]
-    return _brief([caution for reading in mine for caution in reading.tone.cautions])
+    shared = _shared(readings)
+    cautions = [caution for reading in mine for caution in reading.tone.cautions]
+    return _brief(caution for caution in cautions if _surroundings(caution) not in shared)
 
 
 def _brief(cautions: Iterable[str]) -> str:

@@ -6,7 +6,7 @@ Conventions: pitches in cents above 1 Hz; tables have shape (rows, flutes), NaN 
 from collections import Counter
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from math import atan2, cos, log2, nan, pi, sin
+from math import atan2, cos, hypot, log2, nan, pi, sin
 
 import numpy as np
 
@@ -21,6 +21,7 @@ ALIKE_CENTS = 60.0  # a fingering of the same build is within this; a semitone i
 ALIKE_SHARE = 0.75  # of the shared fingerings, for flutes to count as one build
 FEWEST_ALIKE = 3  # shared fingerings, or all that the smaller survey has
 SPEAKS_WELL = 0.75  # share of takes from which a fingering counts as one to rely on
+_TOGETHER = 0.7
 
 Key = tuple[str, int]  # a fingering and its register, or a note and 0
 
@@ -132,10 +133,14 @@ def leaning_cents(pitches: Reals) -> float:
     """Return by how much pitches lie off the semitones of a scale on average, in [-50, 50].
 
     They lie on a circle of a semitone, and this is their mean direction (Mardia & Jupp, Directional
-    Statistics, 2000, ch. 2), so that a group that is 45 cents flat is not split between two notes.
+    Statistics, 2000, ch. 2), so that a group that is 45 cents flat is not split between two notes. Pitches
+    that lie all round the circle (a mean resultant length under 0.7: more than 13 cents of scatter) lean
+    nowhere: 0.
     """
     angles = 2.0 * pi * pitches / 100.0
     east, north = sum(cos(a) for a in angles), sum(sin(a) for a in angles)
+    if hypot(east, north) < _TOGETHER * len(angles):
+        return 0.0
     return 100.0 * atan2(north, east) / (2.0 * pi)
 
 

@@ -19,6 +19,7 @@ REGISTERS: tuple[Register, ...] = (1, 2, 3)
 
 SURE = 0.9
 CONTRADICTION = 12.0
+OUTVOTED = 0.002
 _FIRM = 1.0
 PRIOR: Mapping[Register, float] = MappingProxyType({1: 0.5, 2: 0.38, 3: 0.12})
 
@@ -66,6 +67,11 @@ class Clue:
     likelihood: Mapping[Register, float]
     detail: str
 
+    def speaks_for(self, register: Register) -> bool:
+        """Whether it is likelier than either other register by the factor that makes a contradiction."""
+        others = max(self.likelihood[other] for other in REGISTERS if other != register)
+        return self.likelihood[register] > CONTRADICTION * others
+
     def speaks_against(self, register: Register) -> bool:
         """Whether another register is likelier by this clue by the factor that makes a contradiction."""
         return max(self.likelihood.values()) > CONTRADICTION * self.likelihood[register]
@@ -83,7 +89,9 @@ def decide(clues: Iterable[Clue], prior: Mapping[Register, float] = PRIOR) -> Re
     """Combine independent clues by Bayes' rule.
 
     Undecided unless one register reaches probability `SURE` and no clue speaks against it by a factor of
-    `CONTRADICTION`: where two clues contradict each other, one of them is wrong, and which is not known.
+    `CONTRADICTION`: where two clues contradict each other, one of them is wrong, and which is not known. But
+    where two clues say one thing as firmly as a third says another, and all together leave less than a chance
+    of `OUTVOTED`, the third is the one that is wrong.
     """
     told = tuple(clues)
     logs = {
@@ -96,6 +104,8 @@ def decide(clues: Iterable[Clue], prior: Mapping[Register, float] = PRIOR) -> Re
     probability = {register: weight / total for register, weight in weights.items()}
     best = max(REGISTERS, key=lambda register: probability[register])
     against = [clue for clue in told if clue.speaks_against(best)]
+    if len(against) == 1 and sum(clue.speaks_for(best) for clue in told) >= 2:
+        against = against if probability[best] < 1.0 - OUTVOTED else []
     return RegisterCall(
         register=best if probability[best] >= SURE and not against else None,
         probability=probability,

@@ -48,7 +48,7 @@ _HUM_OFF_HZ = 0.5
 _HUM_OVER = 25.0  # the median of exponential noise is ln 2 of its mean: chance 3e-8 a line
 _HUM_ALONE_OVER = 250.0
 _CONFIRMING_DB = 20.0
-_HUM_UNDER_TONE_DB = -40.0
+_HUM_UNDER_TONE_DB = -32.0
 _TONE_SHARE = 0.05
 _FOLDED = 12  # partials that are strong enough to be seen folded down
 _FOLDED_HZ = 3.0
@@ -142,7 +142,7 @@ def _levelled(low: Floats, tones: Sequence[Stretch]) -> Floats:
 
 
 def _hum(slow: _Slow, course: Course, parts: Sequence[Part]) -> str | None:
-    """Tell mains hum that stands less than 40 dB under the tone, and one that stands at no mains frequency.
+    """Tell mains hum that stands less than 32 dB under the tone, and one that stands at no mains frequency.
 
     Mains keep within 0.2 Hz of 50 or 60 Hz (common practice, no source).
     """
