@@ -137,6 +137,22 @@ class _Session:
         ladder, groups = self.ladder(labels), _groups(labels)
         return {take: self.likelihood(take, its, groups[its], ladder) for take, its in labels.items()}
 
+    def relabelled(
+        self, labels: _Labels, before: _Labels, ladder: Ladder, known: Mapping[str, float]
+    ) -> dict[str, float]:
+        """Return the same where it is `known` of the labels and ladder before: only what changes is asked."""
+        if self.ladder(labels) != ladder:
+            return self.likelihoods(labels)
+        changed = {take for take in labels if labels[take] != before[take]}
+        touched = {fingering for take in changed for fingering in (labels[take], before[take])}
+        groups = _groups(labels)
+        anew = {
+            take: self.likelihood(take, fingering, groups[fingering], ladder)
+            for fingering in touched
+            for take in groups.get(fingering, ())
+        }
+        return {**known, **anew}
+
     def bad(self, labels: _Labels) -> list[str]:
         """Return the takes that a labelling explains worst; none where it explains most of them badly."""
         value = self.likelihoods(labels)
@@ -240,10 +256,11 @@ def _best_change(session: _Session, labels: _Labels) -> _Change | None:
     bad = session.bad(labels)
     if not bad:
         return None
-    before = sum(session.likelihoods(labels).values())
+    ladder, known = session.ladder(labels), session.likelihoods(labels)
+    before = sum(known.values())
     changes = []
     for renamed in _possible(session, labels, bad):
-        value = session.likelihoods(renamed)
+        value = session.relabelled(renamed, labels, ladder, known)
         changed = tuple(take for take in renamed if renamed[take] != labels[take])
         gain = sum(value.values()) - before
         if gain > _GAIN and min(value[take] for take in changed) > _FITS:
