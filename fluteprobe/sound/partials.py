@@ -223,8 +223,10 @@ def without_partials(
     if np.max(np.abs(np.diff(seen))) > _STRAYING_RAD:
         hop, at, seen = _frames(len(samples), still, phase, 0.5)
     turned = seen + 2.0 * np.pi * still.frequency_hz * at
-    now = _interpolated(at, still.time_s, _smoothed(still.phasors)) * unturning(-turned, still.orders)
-    parts = np.concatenate([now.real[:, told], now.imag[:, told]], axis=1).astype(np.float32)
+    last = int(np.flatnonzero(told)[-1]) + 1
+    turning = unturning(-turned, still.orders[:last])[:, told[:last]]
+    now = _interpolated(at, still.time_s, _smoothed(still.phasors[:, told])) * turning
+    parts = np.concatenate([now.real, now.imag], axis=1).astype(np.float32)
     model = parts @ _waves(still, hop, still.orders[told])
     whole = (model[:-1, hop:] + model[1:, :hop]).reshape(-1)[: len(samples)]
     return np.subtract(samples, whole, out=whole)

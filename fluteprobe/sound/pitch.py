@@ -12,7 +12,7 @@ Where the phases leave the line by more than their noise, the tone moves: the fe
 noise cannot explain are added (Schwarz's criterion), and the pitch is the mean over time of that curve.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -107,7 +107,7 @@ def refined(guide: Tracks) -> float:
 def phase_track(tracks: Tracks) -> PhaseTrack:
     """Combine the phases of all partials into the fundamental's, each weighted by its own noise."""
     phase = guide_phase(tracks)
-    noise = _own_noise_variances(tracks)
+    tracks, noise = _with_something_to_say(tracks)
     for _ in range(_ROUNDS):
         errors = _phase_errors(tracks, phase)
         scatter = np.mean(errors**2, axis=0)
@@ -129,6 +129,13 @@ def guide_phase(tracks: Tracks) -> Floats:
     phasors = tracks.phasors[:, strongest]
     steps = np.angle(phasors[1:] * phasors[:-1].conj()) / tracks.orders[strongest]
     return np.concatenate([[0.0], np.cumsum(steps)])
+
+
+def _with_something_to_say(tracks: Tracks) -> tuple[Tracks, Floats]:
+    """Return the partials that stand out of their own noise, or else the best, and their noise variances."""
+    noise = _own_noise_variances(tracks)
+    telling = noise <= max(_ASTRAY / 2.0, float(noise.min()))
+    return replace(tracks, orders=tracks.orders[telling], phasors=tracks.phasors[:, telling]), noise[telling]
 
 
 def _phase_errors(tracks: Tracks, phase: Floats) -> Floats:
