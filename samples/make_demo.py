@@ -142,6 +142,8 @@ def _facts(build: FluteBuild, **words: str) -> FluteFacts:
         bore_mm=tube.bore_mm,
         wall_mm=tube.wall_mm,
         holes_mm=holes,
+        length_mm=round(tube.length_mm, 1),
+        tolerance_mm=0.3,
         **words,
     )
 
