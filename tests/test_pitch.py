@@ -36,7 +36,7 @@ def read(samples: Samples, coarse_hz: float, rate_hz: int = RATE_HZ) -> Pitch:
 def test_error_stands_at_the_cramer_rao_bound_and_uncertainty_covers_it(timbre: str, snr_db: float) -> None:
     rng = np.random.default_rng([20, int(snr_db), len(timbre)])
     ratios, errors, covered = [], [], []
-    for base_hz, duration_s in PITCHES * 8:
+    for base_hz, duration_s in PITCHES * 4:
         frequency_hz = base_hz * 2.0 ** (rng.uniform(-50, 50) / 1200.0)
         made = make_tone(frequency_hz, duration_s, timbre, snr_db, rng)
         pitch = read(made.samples, frequency_hz * 2.0 ** (rng.uniform(-15, 15) / 1200.0))
@@ -44,10 +44,10 @@ def test_error_stands_at_the_cramer_rao_bound_and_uncertainty_covers_it(timbre: 
         ratios.append(error / bound_cents(made, frequency_hz))
         errors.append(error)
         covered.append(abs(error) < 2.0 * pitch.uncertainty_cents)
-    # 1.3 is the requirement; the rms of 56 normal values scatters by 10 % itself, which 0.15 allows for.
-    assert np.sqrt(np.mean(np.square(ratios))) < 1.3 + 0.15
-    # 56 cases at 95.4 % coverage fall under 86 % less than once in a thousand runs (binomial).
-    assert np.mean(covered) > 0.86
+    # 1.3 is the requirement; the rms of 28 normal values scatters by 13 % itself, which 0.2 allows for.
+    assert np.sqrt(np.mean(np.square(ratios))) < 1.3 + 0.2
+    # 28 cases at 95.4 % coverage fall under 78 % less than once in a thousand runs (binomial).
+    assert np.mean(covered) > 0.78
     assert abs(np.mean(errors)) < 0.05
 
 
@@ -82,7 +82,7 @@ def test_a_bump_of_breath_noise_at_half_the_frequency_is_no_fundamental() -> Non
     drift=st.floats(-30.0, 30.0),
     frequency_hz=st.floats(150.0, 1800.0),
 )
-@settings(max_examples=25, deadline=None, derandomize=True)
+@settings(max_examples=12, deadline=None, derandomize=True)
 def test_moving_tones(rate_hz: float, extent: float, drift: float, frequency_hz: float) -> None:
     rng = np.random.default_rng(23)
     whole_s = round(3.0 * rate_hz) / rate_hz
@@ -103,7 +103,7 @@ def test_uncertainty_covers_the_middle_of_a_wandering_pitch() -> None:
     step_s, memory_s, spread_cents = 0.005, 0.15, 4.0
     keep = np.exp(-step_s / memory_s)
     covered = []
-    for _ in range(120):
+    for _ in range(40):
         pushes = rng.standard_normal(650) * spread_cents * np.sqrt(1.0 - keep**2)
         wander = np.zeros(650)
         for i in range(1, 650):
@@ -113,5 +113,5 @@ def test_uncertainty_covers_the_middle_of_a_wandering_pitch() -> None:
         made = make_tone(500.0, 3.0, "plain", 30.0, rng, movement_cents=movement)
         pitch = read(made.samples, 500.0)
         covered.append(abs(cents(pitch.frequency_hz / 500.0)) < 2.0 * pitch.uncertainty_cents)
-    # Wanted: 93 to 99 %. 120 cases at 95 % scatter by 2 %, so 89 to 100 % passes; the benchmark has more.
-    assert np.mean(covered) > 0.89
+    # Wanted: 93 to 99 %. 40 cases at 95 % scatter by 3.4 %, so 85 to 100 % passes; the benchmark has more.
+    assert np.mean(covered) > 0.85

@@ -61,7 +61,8 @@ def test_surely_keeps_its_word() -> None:
     in_tune = np.abs(true) <= 20.0
     assert in_tune[told >= SURE].mean() > 0.98  # most are far inside
     assert in_tune[told < UNLIKELY].mean() < 0.005
-    for low in np.arange(0.05, 0.95, 0.1):  # and in between the probability is the share: 400 and more in a bin
+    # In between the probability is the share: 400 and more in a bin.
+    for low in np.arange(0.05, 0.95, 0.1):
         some = (told >= low) & (told < low + 0.1)
         assert in_tune[some].mean() == pytest.approx(told[some].mean(), abs=0.08)  # 3 standard errors
 
