@@ -252,9 +252,9 @@ def summed_up(readings: Sequence[Reading], takes: Sequence[Take], sitting: Sitti
         ):
             breaths = groups.setdefault((reading.fingering, reading.call.register), {})
             breaths.setdefault(reading.breath, []).append(reading)
-    scatter = _pooled_scatter_cents([group for breaths in groups.values() for group in breaths.values()])
+    scatter = _scatter_of_breaths_cents(list(groups.values()))
     blown = [_as_it_is_blown(register, breaths) for (_, register), breaths in groups.items()]
-    entries = [_entry(group, takes, sitting, scatter) for group in blown]
+    entries = [_entry(group, takes, sitting, scatter[group[0].breath]) for group in blown]
     first = {entry.fingering: entry for entry in entries if entry.register == 1}
     return tuple(
         sorted((_stretched(entry, first) for entry in entries), key=lambda entry: entry.frequency_hz)
@@ -324,6 +324,22 @@ def _mean(group: Sequence[Reading], scatter_cents: float) -> tuple[float, float]
 
 def _own_variance(reading: Reading) -> float:
     return max(reading.tone.uncertainty_cents or 0.0, 1e-3) ** 2
+
+
+def _scatter_of_breaths_cents(
+    groups: Sequence[Mapping[Breath | None, Sequence[Reading]]],
+) -> dict[Breath | None, float]:
+    """Return the scatter between takes by breath; a breath of which nothing was repeated has that of all.
+
+    Hard blowing scatters more, and says nothing of how well a normal breath repeats.
+    """
+    of_all = _pooled_scatter_cents([group for breaths in groups for group in breaths.values()])
+    scatter: dict[Breath | None, float] = {}
+    for breath in {breath for breaths in groups for breath in breaths}:
+        mine = [breaths[breath] for breaths in groups if breath in breaths]
+        repeated = any(len(group) > 1 for group in mine)
+        scatter[breath] = _pooled_scatter_cents(mine) if repeated else of_all
+    return scatter
 
 
 def _pooled_scatter_cents(groups: Sequence[Sequence[Reading]]) -> float:

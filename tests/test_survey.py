@@ -154,6 +154,19 @@ def test_a_register_is_told_by_the_breath_it_is_blown_with() -> None:
     assert alone.takes == ("hard",)
 
 
+def test_hard_blowing_s_scatter_makes_no_normal_take_unsure() -> None:
+    other = Fingering("xxxxxo")
+    hard = [
+        replace(reading(name, hz, 0.5, register=2), breath="over")
+        for name, hz in (("a", 880.0), ("b", 890.0))
+    ]
+    normal = [reading("c", 440.0, 0.5), reading("d", 440.0, 0.5)]
+    alone = replace(reading("e", 494.0, 0.5), fingering=other)
+    takes = [replace(take(name), breath="over") for name in "ab"] + [take(name) for name in "cde"]
+    entries = summed_up([*hard, *normal, alone], takes, Sitting())
+    assert [entry.uncertainty_cents < 1.0 for entry in entries] == [True, True, False]
+
+
 def test_cents_are_carried_to_the_reference_temperature() -> None:
     """From 26 to 20 °C, c going with the root of the absolute temperature: 600 log2(293.15 / 299.15)."""
     sitting = Sitting(air_temperature_c=26.0, reference_temperature_c=20.0)

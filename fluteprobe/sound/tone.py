@@ -142,11 +142,11 @@ def _pause(recording: Recording, spans: tuple[Span, ...]) -> Samples | None:
         recording.frames + margin,
     ]
     gaps = [(edges[i] + margin, edges[i + 1] - margin) for i in range(0, len(edges), 2)]
-    pauses = [
+    pauses = (  # one at a time: an hour has thousands
         recording.read(start, start + length)
         for first, last in gaps
         for start in range(first, last - length + 1, length)[:_MOST_PAUSES]
-    ]
+    )
     return min(pauses, key=lambda pause: float(np.mean(pause**2)), default=None)
 
 
