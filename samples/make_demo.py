@@ -8,6 +8,7 @@ import json
 import sys
 from dataclasses import asdict, dataclass, replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import soundfile
@@ -134,10 +135,11 @@ def _voiced(tube: Tube, aim: float) -> FluteBuild:
     )
 
 
-def _facts(build: FluteBuild, **words: str) -> FluteFacts:
+def _facts(build: FluteBuild, *, name: str, **words: Any) -> FluteFacts:
     tube = build.tube
     holes = tuple((round(place, 1), size) for place, size in tube.holes_mm)
     return FluteFacts(
+        name=name,
         holes=len(holes),
         bore_mm=tube.bore_mm,
         wall_mm=tube.wall_mm,
