@@ -59,11 +59,10 @@ EVERY: list[Callable[[], Survey]] = [
 ]  # fmt: skip
 SHEETS: list[tuple[Callable[[], Survey], str, bool]] = [
     *((make, "a4", False) for make in EVERY),
-    *((make, "letter", False) for make in (heron, sixty_entries)),
+    (heron, "letter", False),
     *((make, "a6", False) for make in (heron, sixty_entries, strange_words, flat, nothing_heard)),
     *((make, "4x6", False) for make in (heron, high_flute)),
     *((make, "a4", True) for make in (heron, sixty_entries)),
-    (heron, "letter", True),
 ]
 
 
