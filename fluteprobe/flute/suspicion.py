@@ -16,6 +16,7 @@ overblown take in any register, a half-hole, a flute of an odd scale.
 
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from itertools import islice
 from math import exp, hypot, log, log2
 
 from fluteprobe.flute.bumps import Bump, bump_clue
@@ -45,6 +46,8 @@ _GAIN = 6.5
 _ALIKE = 2.0
 _MOST_NAMES = 2
 _MOST_BAD_SHARE = 0.5
+# Where a fingering has many takes, some tell as much as all of them.
+_MOST_PARTNERS, _MOST_EXCHANGES = 6, 4
 _MOST_TRIED = 6  # of the badly explained takes, the worst, in each round
 _ROUNDS = 4
 
@@ -164,7 +167,7 @@ class _Session:
 
         What is asked twice is worked out once.
         """
-        partners = tuple(other for other in group if other != take)
+        partners = tuple(islice((other for other in group if other != take), _MOST_PARTNERS))
         key = (take, fingering, partners, ladder.reach(fingering))
         if key not in self._known:
             others = [tone for other in partners for tone in self.takes[other]]
@@ -259,7 +262,7 @@ def _best_change(session: _Session, labels: _Labels) -> _Change | None:
     ladder, known = session.ladder(labels), session.likelihoods(labels)
     before = sum(known.values())
     changes = []
-    for renamed in _possible(session, labels, bad):
+    for renamed in _possible(session, labels, bad, known):
         value = session.relabelled(renamed, labels, ladder, known)
         changed = tuple(take for take in renamed if renamed[take] != labels[take])
         gain = sum(value.values()) - before
@@ -280,7 +283,9 @@ def _with_alternatives(changes: Sequence[_Change]) -> _Change:
     return replace(best, doubted=doubted)
 
 
-def _possible(session: _Session, labels: _Labels, bad: Sequence[str]) -> list[_Labels]:
+def _possible(
+    session: _Session, labels: _Labels, bad: Sequence[str], known: Mapping[str, float]
+) -> list[_Labels]:
     """Return the labellings worth trying: a bad take under another name, or exchanged with another take."""
     ladder, groups = session.ladder(labels), _groups(labels)
     tried: list[_Labels] = []
@@ -290,7 +295,8 @@ def _possible(session: _Session, labels: _Labels, bad: Sequence[str]) -> list[_L
             if fingering == labels[take] or session.likelihood(take, fingering, group, ladder) < _BADLY:
                 continue
             tried.append({**labels, take: fingering})
-            tried += [{**labels, take: fingering, other: labels[take]} for other in group]
+            worst = sorted(group, key=lambda other: known[other])[:_MOST_EXCHANGES]
+            tried += [{**labels, take: fingering, other: labels[take]} for other in worst]
     return tried
 
 

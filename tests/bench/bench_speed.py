@@ -151,7 +151,7 @@ def run(command: Sequence[str]) -> Cost:
 
 
 def _measure(folder: Path) -> tuple[str, ...]:
-    return ("measure", "--json", str(folder), "--out", str(folder.parent / "out"))
+    return ("measure", "--json", "--anew", str(folder), "--out", str(folder.parent / "out"))
 
 
 def _names() -> Iterator[str]:
