@@ -121,11 +121,16 @@ def _fits(fit: Fit | None) -> bool:
 
 
 def _fit(believed: Shape, heard: Sequence[Heard]) -> Fit | None:
-    """Return the fitted tube; None for holes to which no formula applies."""
+    """Return the fitted tube; None for dimensions to which no formula applies, before or after the fit."""
     sizes = [size for _, size in believed.tube.holes_mm]
     if min(sizes) < _PIN_MM or max(sizes) > believed.tube.bore_mm:
         return None
-    return fitted(believed, heard)
+    try:
+        with np.errstate(all="ignore"):
+            fit = fitted(believed, heard)
+    except (ValueError, np.linalg.LinAlgError):  # far from any flute: no such tube, or no such covariance
+        return None
+    return fit if np.isfinite(fit.shape.values).all() else None
 
 
 # --- predictions -------------------------------------------------------------------------------------
