@@ -27,9 +27,9 @@ from fluteprobe.flute.tube import FOOT_CORRECTION, Tube, hole_pressures, opennes
 
 CHANGE_MM = 0.1
 
-_DRAWS = 10
+_DRAWS = 8
 _SEED = 7
-_PROBES = 25
+_PROBES = 13
 _PROBE_MM = 0.02
 _PROBE_CLEAR_MM = 0.01
 _FORMULA_SHARE = 0.05  # how exact the formulas for holes are: common practice, no source

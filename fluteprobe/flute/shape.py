@@ -117,15 +117,15 @@ def slopes(values: Reals, setting: Setting, openness: Reals, at_cents: Reals) ->
 
 
 def opening_slopes(tube: Tube, openness: Reals, at_cents: Reals) -> Reals:
-    """Return how resonances move as each hole is uncovered further, in cents per unit of openness.
+    """Return how resonances move as partly open holes are uncovered further, in cents per unit of openness.
 
-    The shape is (fingerings, count, holes).
+    The shape is (fingerings, count, holes); holes that no fingering opens partly are passed over, with 0.
     """
     known = np.isfinite(at_cents)
     frequency = np.where(known, 2.0 ** (at_cents / 1200.0), 100.0)
     impedance, slope = _line(tube, openness, frequency)
     moved = np.zeros((*at_cents.shape, openness.shape[1]))
-    for hole in range(openness.shape[1]):
+    for hole in np.flatnonzero(((openness > 0.0) & (openness < 1.0)).any(axis=0)):
         step = np.where(openness[:, hole] > 0.5, -_STEP_OPEN, _STEP_OPEN)
         changed = openness.copy()
         changed[:, hole] += step
