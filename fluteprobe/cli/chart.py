@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import click
 
 from fluteprobe.cli.measure import measured
-from fluteprobe.cli.options import FOLDER, anew_option, out_option, reports_folder
+from fluteprobe.cli.options import FOLDER, anew_option, formats_of, out_option, reports_folder
 
 if TYPE_CHECKING:
     from fluteprobe.forecast import Prediction
@@ -41,15 +41,6 @@ class Wish:
         return self.name == "chart"
 
 
-def _formats(ctx: click.Context, param: click.Parameter, given: tuple[str, ...]) -> tuple[str, ...]:
-    """Return the formats asked for, each once; several may stand in one word with commas."""
-    words = [word.strip().lower() for text in given for word in text.split(",")]
-    for word in words:
-        if word not in FORMATS:
-            raise click.BadParameter(f"{word!r} is not one of {', '.join(FORMATS)}.", ctx, param)
-    return tuple(dict.fromkeys(words))
-
-
 @click.command(short_help="Measure a flute and draw its printable chart.")
 @click.argument("folder", type=FOLDER)
 @click.option(
@@ -57,7 +48,7 @@ def _formats(ctx: click.Context, param: click.Parameter, given: tuple[str, ...])
     "formats",
     multiple=True,
     default=("pdf",),
-    callback=_formats,
+    callback=formats_of(FORMATS),
     metavar="|".join(FORMATS),
     help="Kind of file; several with commas.  [default: pdf]",
 )

@@ -5,9 +5,10 @@ numbered from 1, as given. `different` and `likely` are the verdicts of `flutepr
 is said where a difference is within the uncertainty.
 """
 
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Iterable, Iterator
 from textwrap import wrap
 
+from fluteprobe.cli.columns import aligned
 from fluteprobe.cli.screen import WIDTH
 from fluteprobe.compare.values import (
     Comparison,
@@ -44,7 +45,7 @@ def _heading(comparison: Comparison) -> list[str]:
     elif comparison.temperature_c is not None:
         parts.append(f"air {comparison.temperature_c:g} °C")
     facts = [[f"{k}", flute.label, *_facts(flute)] for k, flute in enumerate(comparison.flutes, start=1)]
-    lines = [line[:WIDTH].rstrip() for line in _aligned(facts, numbers={0})]
+    lines = [line[:WIDTH].rstrip() for line in aligned(facts, numbers={0})]
     if len(lines) > MOST_NAMED + 1:
         lines = [*lines[:MOST_NAMED], f"… and {len(lines) - MOST_NAMED} more, in the order they were given"]
     return [" · ".join(parts), "", *lines]
@@ -70,7 +71,7 @@ def _table(comparison: Comparison) -> Line:
     table = [[*first, *titles], *([*name, *line] for name, line in zip(named, lines, strict=True))]
     words = {"fingering", "note", ""}
     return [
-        *_aligned(table, numbers={k for k, title in enumerate(table[0]) if title not in words}),
+        *aligned(table, numbers={k for k, title in enumerate(table[0]) if title not in words}),
         "",
         *_explained(comparison),
     ]
@@ -295,19 +296,6 @@ def _shortened(lines: Iterable[str]) -> list[str]:
     if len(lines) <= MOST_LISTED + 1:
         return lines
     return [*lines[:MOST_LISTED], f"  … and {len(lines) - MOST_LISTED} more, in comparison.json"]
-
-
-def _aligned(lines: Sequence[Line], *, numbers: set[int]) -> list[str]:
-    """Return lines of cells with column under column, those of numbers to the right."""
-    widths = [max(len(line[k]) for line in lines) for k in range(len(lines[0]))]
-    return [
-        "  ".join(
-            cell.rjust(width) if k in numbers else cell.ljust(width)
-            for k, (cell, width) in enumerate(zip(line, widths, strict=True))
-            if width
-        ).rstrip()
-        for line in lines
-    ]
 
 
 def _note(note: str) -> str:

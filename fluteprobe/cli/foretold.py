@@ -7,6 +7,7 @@ import textwrap
 from collections.abc import Iterable, Mapping, Sequence
 from statistics import median
 
+from fluteprobe.cli.columns import aligned
 from fluteprobe.cli.screen import WIDTH
 from fluteprobe.flute.fingering import Fingering
 from fluteprobe.flute.sensitivity import CHANGE_MM, Measure, Sensitivity
@@ -85,7 +86,7 @@ def _foretold_table(predictions: Iterable[Prediction]) -> list[str]:
         )
         for each in predictions
     ]
-    return _aligned([titles, *rows], numbers={1, 3, 4})
+    return _indented(aligned([titles, *rows], numbers={1, 3, 4}))
 
 
 def _played_lines(predictions: Sequence[Prediction]) -> list[str]:
@@ -104,7 +105,7 @@ def _played_lines(predictions: Sequence[Prediction]) -> list[str]:
     middle = median(abs(cents) for cents in off)
     return [
         "Foretold from the rest, and played",
-        *_aligned([titles, *rows], numbers={1, 2, 3, 4}),
+        *_indented(aligned([titles, *rows], numbers={1, 2, 3, 4})),
         f"half of them within {middle:.1f} cents",
     ]
 
@@ -131,7 +132,7 @@ def _fit_lines(fit: FitWords) -> list[str]:
     ]  # fmt: skip
     return [
         "The tube that fits: an estimate, exact only where flute.toml gives dimensions",
-        *_aligned(rows, numbers=set()),
+        *_indented(aligned(rows)),
         *_wrapped(
             f"fitted to {fit.tones} tones and {fit.breath_resonances} breath resonances; a tone lies "
             f"{fit.misfit_cents:.0f} cents from what the others foretell"
@@ -183,7 +184,7 @@ def _maker_lines(changes: Sequence[Sensitivity]) -> list[str]:
     ]
     return [
         "For the maker: estimates in cents, for a small change of one hole",
-        *_aligned([*titles, *rows], numbers={0}),
+        *_indented(aligned([*titles, *rows], numbers={0})),
         *_wrapped(
             "holes are counted from the mouth; "
             f"what moves by less than {_LEAST_CHANGE_CENTS:g} cents is left out"
@@ -207,16 +208,8 @@ def _changes(registers: Mapping[int, Sensitivity], key: str) -> Iterable[str]:
 # --- words -------------------------------------------------------------------------------------------
 
 
-def _aligned(lines: Sequence[Line], *, numbers: set[int]) -> list[str]:
-    """Return lines column under column, those of `numbers` to the right; nothing is cut."""
-    widths = [max(len(line[k]) for line in lines) for k in range(len(lines[0]))]
-    return [
-        "  " + "  ".join(
-            cell.rjust(width) if k in numbers else cell.ljust(width)
-            for k, (cell, width) in enumerate(zip(line, widths, strict=True))
-        ).rstrip()
-        for line in lines
-    ]  # fmt: skip
+def _indented(lines: Sequence[str]) -> list[str]:
+    return [f"  {line}" for line in lines]
 
 
 def _wrapped(text: str) -> list[str]:

@@ -1,6 +1,6 @@
 """Arguments and options that several commands share."""
 
-from collections.abc import Callable
+from collections.abc import Callable, Collection
 from pathlib import Path
 from typing import Any, TypeVar
 
@@ -47,3 +47,18 @@ def paper_option(what: str) -> Callable[[Command], Command]:
 def reports_folder(session: Path, out: Path | None) -> Path:
     """Return where a session's files go: what was asked for, or reports/ under the current folder."""
     return out if out is not None else Path("reports", session.resolve().name or "flute")
+
+
+def formats_of(
+    known: Collection[str],
+) -> Callable[[click.Context, click.Parameter, tuple[str, ...]], tuple[str, ...]]:
+    """Return what reads `--format`: each format once; several may stand in one word with commas."""
+
+    def read(ctx: click.Context, param: click.Parameter, given: tuple[str, ...]) -> tuple[str, ...]:
+        words = [word.strip().lower() for text in given for word in text.split(",")]
+        for word in words:
+            if word not in known:
+                raise click.BadParameter(f"{word!r} is not one of {', '.join(known)}.", ctx, param)
+        return tuple(dict.fromkeys(words))
+
+    return read

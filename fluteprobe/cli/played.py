@@ -8,6 +8,7 @@ from collections.abc import Iterator, Sequence
 from itertools import groupby
 from textwrap import wrap
 
+from fluteprobe.cli.columns import aligned
 from fluteprobe.cli.screen import WIDTH
 from fluteprobe.flute.scales import Scale, tonic_name
 from fluteprobe.repertoire.keyboard import Key
@@ -79,7 +80,7 @@ def _keys(fits: Sequence[ScaleFit], *, show_all: bool) -> list[str]:
     ]
     if not moving:
         table = [[*row[:2], *row[3:]] for row in table]
-    return _aligned(table)
+    return _columns(table)
 
 
 def _run(fit: ScaleFit) -> str:
@@ -122,7 +123,7 @@ def _notes(matches: Sequence[Match]) -> list[str]:
             table.append([*row, "–", "", "", ""])
         else:
             table.append([*row, _off(best), *_played(best), _others(match)])
-    return _aligned(table)
+    return _columns(table)
 
 
 def _played(way: Way) -> tuple[str, str]:
@@ -172,7 +173,7 @@ def _transpositions(fits: Sequence[TuneFit]) -> list[str]:
     told = (
         "surely, perhaps: share of the time; off: cents, root mean square; fingers: moved from note to note"
     )
-    return [*_aligned(table), "", *wrap(f"{told}; short: notes that cannot be played", WIDTH)]
+    return [*_columns(table), "", *wrap(f"{told}; short: notes that cannot be played", WIDTH)]
 
 
 def _fit_row(fit: TuneFit) -> list[str]:
@@ -218,7 +219,7 @@ def keys_told(flute: FluteFacts, keys: Sequence[Key], a4_hz: float) -> str:
     table = [["key", "note", "cents", "Hz", "fingering", "register", "passed over"]]
     table += [_key_row(key) for key in keys]
     counted = f"{len(keys)} key{'' if len(keys) == 1 else 's'} of 128 tuned"
-    return "\n".join([f"{printable(flute.name)[:40]} · A4 = {a4_hz:g} Hz · {counted}", "", *_aligned(table)])
+    return "\n".join([f"{printable(flute.name)[:40]} · A4 = {a4_hz:g} Hz · {counted}", "", *_columns(table)])
 
 
 def _key_row(key: Key) -> list[str]:
@@ -253,14 +254,6 @@ def _signed(cents: float) -> str:
     return f"{round(cents, 1) + 0.0:+.1f}".replace("-", "−")
 
 
-def _aligned(table: Sequence[Sequence[str]]) -> list[str]:
-    """Return rows as lines, column under column, numbers to the right."""
-    widths = [max(len(row[k]) for row in table) for k in range(len(table[0]))]
-    right = [title in _NUMBERS for title in table[0]]
-    return [
-        "  ".join(
-            cell.rjust(width) if is_right else cell.ljust(width)
-            for cell, width, is_right in zip(row, widths, right, strict=True)
-        ).rstrip()
-        for row in table
-    ]
+def _columns(table: Sequence[Sequence[str]]) -> list[str]:
+    """Return rows as lines, the columns whose titles say so to the right."""
+    return aligned(table, {k for k, title in enumerate(table[0]) if title in _NUMBERS})

@@ -16,6 +16,7 @@ from typing import Any
 
 import click
 
+from fluteprobe.cli.columns import aligned
 from fluteprobe.session import FluteFacts, Problem, Sitting, printable
 from fluteprobe.survey import Entry, Reading, Survey
 
@@ -264,15 +265,9 @@ def _is_undecided(reading: Reading) -> bool:
 
 
 def _aligned(titles: Mapping[str, str], rows: Sequence[Row]) -> list[str]:
-    """Return the titles and rows as lines, column under column, numbers to the right; nothing is cut."""
-    table = [titles, *({key: row.get(key, "") for key in titles} for row in rows)]
-    widths = {key: max(len(row[key]) for row in table) for key in titles}
-    return [
-        "  ".join(
-            row[key].rjust(widths[key]) if key in _NUMBERS else row[key].ljust(widths[key]) for key in titles
-        ).rstrip()
-        for row in table
-    ]
+    """Return the titles and rows as lines, numbers to the right."""
+    table = [[row.get(key, "") for key in titles] for row in (titles, *rows)]
+    return aligned(table, {k for k, key in enumerate(titles) if key in _NUMBERS})
 
 
 def _span(reading: Reading) -> str:

@@ -6,22 +6,13 @@ from typing import TYPE_CHECKING
 
 import click
 
-from fluteprobe.cli.options import FOLDER, json_option, out_option
+from fluteprobe.cli.options import FOLDER, formats_of, json_option, out_option
 
 if TYPE_CHECKING:
     from fluteprobe.repertoire.keyboard import Address, Key
     from fluteprobe.survey import Survey
 
 FORMATS = {"syx": "tuning.syx", "mid": "tuning.mid", "musicxml": "scale.musicxml"}
-
-
-def _formats(ctx: click.Context, param: click.Parameter, given: tuple[str, ...]) -> tuple[str, ...]:
-    """Return the formats asked for, each once; several may stand in one word with commas."""
-    words = [word.strip().lower() for text in given for word in text.split(",")]
-    for word in words:
-        if word not in FORMATS:
-            raise click.BadParameter(f"{word!r} is not one of {', '.join(FORMATS)}.", ctx, param)
-    return tuple(dict.fromkeys(words))
 
 
 @click.command(short_help="Write a flute's tuning for a keyboard.")
@@ -31,7 +22,7 @@ def _formats(ctx: click.Context, param: click.Parameter, given: tuple[str, ...])
     "formats",
     multiple=True,
     default=tuple(FORMATS),
-    callback=_formats,
+    callback=formats_of(FORMATS),
     metavar="|".join(FORMATS),
     help="Kind of file; several with commas.  [default: all three]",
 )
